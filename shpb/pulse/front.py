@@ -1,0 +1,88 @@
+"""Find the first front in a trace, roughly, before anything else is known about the shot."""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+
+from shpb.arrays import FloatArray
+from shpb.errors import InputError
+
+_SHARE_OF_PEAK = 0.10  # a front is a lasting excursion beyond a tenth of the trace's peak
+_SIGNAL_TO_NOISE = 8.0
+
+
+class UnusableShotError(InputError):
+    """The record cannot be reduced as it stands: a channel is dead, swapped or inverted, or cut short.
+
+    ``check`` names the check that found it, as the findings of a reduced shot do.
+    """
+
+    def __init__(self, what: str, *, where: str = "", mend: str = "", check: str = "record") -> None:
+        super().__init__(what, where=where, mend=mend)
+        self.check = check
+
+    def __reduce__(self) -> tuple[object, ...]:
+        return _rebuild, (self.what, self.where, self.mend, self.check)
+
+
+def _rebuild(what: str, where: str, mend: str, check: str) -> UnusableShotError:
+    return UnusableShotError(what, where=where, mend=mend, check=check)
+
+
+class Front(NamedTuple):
+    """Where a trace first leaves its zero for good."""
+
+    index: int  # first sample beyond a tenth of the peak
+    sign: int  # +1 or -1
+    peak: float  # largest magnitude of the smoothed trace
+    noise: float  # standard deviation of one sample, from the trace's differences
+
+
+def moving_mean(values: FloatArray, width: int) -> FloatArray:
+    """Centred mean over ``width`` samples (made odd); the ends average what there is."""
+    half = max(width // 2, 0)
+    if half == 0:
+        return values.copy()
+    total = np.concatenate(([0.0], np.cumsum(values)))
+    index = np.arange(values.size)
+    low, high = np.maximum(index - half, 0), np.minimum(index + half + 1, values.size)
+    mean: FloatArray = (total[high] - total[low]) / (high - low)
+    return mean
+
+
+def white_noise(values: FloatArray) -> float:
+    """Standard deviation of white noise on a slowly varying trace, from second differences.
+
+    x[i] - 2 x[i+1] + x[i+2] has variance 6 sigma^2; the median of its magnitude (0.6745 standard
+    deviations for a normal law) is deaf to the few samples of a front.
+    """
+    second = np.abs(values[2:] - 2 * values[1:-1] + values[:-2])
+    if second.size == 0:
+        return 0.0
+    middle = second.size // 2
+    return float(np.partition(second, middle)[middle] / (0.6745 * np.sqrt(6.0)))
+
+
+def first_front(strain: FloatArray, sample_interval_s: float, smoothing_s: float) -> Front | None:
+    """First lasting excursion of a trace, or None where it holds no signal.
+
+    Parameters
+    ----------
+    strain : float array, shape (samples,)
+        The trace, its first samples near zero.
+    sample_interval_s : float
+        Spacing [s].
+    smoothing_s : float
+        Length of the running mean that keeps single spikes out [s].
+    """
+    width = max(int(smoothing_s / sample_interval_s), 1)
+    smooth = moving_mean(strain, width)
+    magnitude = np.abs(smooth)
+    peak = float(magnitude.max())
+    noise = white_noise(strain[: max(strain.size // 50, 64)])
+    if peak <= _SIGNAL_TO_NOISE * noise / np.sqrt(width) or peak == 0.0:
+        return None
+    index = int(np.argmax(magnitude > _SHARE_OF_PEAK * peak))
+    return Front(index, 1 if smooth[index] > 0 else -1, peak, noise)

@@ -1,0 +1,91 @@
+"""Volts to strain at the two gauge stations: the one place where the sign of the wiring is applied."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from shpb.arrays import FloatArray, frozen
+from shpb.pulse.bridge import strain_from_voltage
+from shpb.record.record import Record
+from shpb.rig.bar import Bar
+from shpb.rig.gauge import Gauge, TestKind
+from shpb.rig.rig import Rig
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class StationStrain:
+    """Strain at one gauge station over the whole record, positive under the loading pulse.
+
+    Attributes
+    ----------
+    axial : float array, shape (samples,)
+        Mean strain of the station's channels [1]; only a constant zero is removed yet.
+    bending : float array or None
+        Half the difference of the two sides [1], where each side has its own channel.
+    voltage_v : float array, shape (channels of the station, samples)
+        The voltages as acquired.
+    """
+
+    axial: FloatArray
+    bending: FloatArray | None
+    voltage_v: FloatArray
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class GaugeStrain:
+    """Strain at both stations on the record's clock."""
+
+    incident: StationStrain
+    transmitted: StationStrain
+    sample_interval_s: float
+    start_s: float
+
+    @property
+    def samples(self) -> int:
+        """Number of samples."""
+        return int(self.incident.axial.size)
+
+    def index(self, time_s: float) -> int:
+        """Sample at or after a time on the record's clock, kept inside the record."""
+        return int(np.clip(np.ceil((time_s - self.start_s) / self.sample_interval_s), 0, self.samples))
+
+    def time(self, index: int) -> float:
+        """Time of a sample on the record's clock [s]."""
+        return self.start_s + index * self.sample_interval_s
+
+
+def gauge_strain(record: Record, rig: Rig, kind: TestKind) -> GaugeStrain:
+    """Convert the record of a shot to strain at both stations.
+
+    Raises
+    ------
+    InputError
+        If a channel named in the rig file is not in the record, or holds a NaN.
+    """
+    return GaugeStrain(
+        _station(record, rig.incident_gauge, rig.incident_bar, kind),
+        _station(record, rig.transmitted_gauge, rig.transmitted_bar, kind),
+        record.sample_interval_s,
+        record.start_s,
+    )
+
+
+def _station(record: Record, gauge: Gauge, bar: Bar, kind: TestKind) -> StationStrain:
+    voltages = [record.channel(channel) for channel in gauge.channels]
+    # strain_from_voltage gives tension positive: turn it once to loading positive.
+    sign = 1.0 if kind is TestKind.TENSION else -1.0
+    sides = [
+        sign * strain_from_voltage(voltage - _first_zero(voltage), gauge, bar.poisson_ratio)
+        for voltage in voltages
+    ]
+    axial = sides[0] if len(sides) == 1 else 0.5 * (sides[0] + sides[1])
+    bending = None if len(sides) == 1 else frozen(0.5 * (sides[0] - sides[1]))
+    return StationStrain(frozen(axial), bending, np.stack(voltages))
+
+
+def _first_zero(voltage_v: FloatArray) -> float:
+    """Level before the shot: median of the first fiftieth of the record. The zero line comes later;
+    the bridge's non-linearity only needs the zero to within a per cent or so of the signal."""
+    return float(np.median(voltage_v[: max(voltage_v.size // 50, 16)]))

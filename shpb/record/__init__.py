@@ -1,0 +1,1 @@
+"""Raw records in: one small reader per format, chosen by content, not by name alone."""

@@ -1,0 +1,85 @@
+"""The whole chain of one shot, readable top to bottom on one page."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from shpb.pulse.pulses import Pulses, find_pulses
+from shpb.pulse.strain import GaugeStrain, gauge_strain
+from shpb.record.record import Record
+from shpb.response.response import Response, specimen_response
+from shpb.rig.rig import Rig
+from shpb.rig.sheet import ShotSheet
+from shpb.settings import DEFAULT, Settings
+from shpb.trust.evidence import Evidence
+from shpb.trust.finding import Finding, Verdict, verdict_of
+from shpb.trust.judge import judge
+from shpb.wave.faces import FacePulses, carry_to_faces
+
+
+@dataclass(frozen=True, slots=True, eq=False, kw_only=True)
+class ShotResult:
+    """One reduced shot: what went in, every stage on the way, and what can be said of it."""
+
+    record: Record
+    rig: Rig
+    sheet: ShotSheet
+    settings: Settings
+    strain: GaugeStrain
+    pulses: Pulses
+    faces: FacePulses
+    response: Response
+    findings: tuple[Finding, ...]
+
+    @property
+    def verdict(self) -> Verdict:
+        """Whether the shot counts; about data only."""
+        return verdict_of(self.findings)
+
+
+def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings = DEFAULT) -> ShotResult:
+    """Reduce one shot: voltages to strain, pulses, faces, response, findings.
+
+    Parameters
+    ----------
+    record : Record
+        Voltages as acquired.
+    rig : Rig
+        What stands in the lab.
+    sheet : ShotSheet
+        What was tested.
+    settings : Settings
+        Every choice of the reduction, used exactly as given.
+
+    Raises
+    ------
+    UnusableShotError
+        If the record cannot be reduced at all; the message says why and what to do.
+    InputError
+        If record, rig and sheet do not fit together.
+    """
+    strain = gauge_strain(record, rig, sheet.kind)
+    pulses = find_pulses(strain, rig, sheet.specimen, settings)
+    faces = carry_to_faces(pulses, rig, sheet.specimen, settings)
+    response = specimen_response(faces, pulses, rig, sheet, settings)
+    evidence = Evidence(
+        record=record,
+        rig=rig,
+        sheet=sheet,
+        settings=settings,
+        strain=strain,
+        pulses=pulses,
+        faces=faces,
+        response=response,
+    )
+    return ShotResult(
+        record=record,
+        rig=rig,
+        sheet=sheet,
+        settings=settings,
+        strain=strain,
+        pulses=pulses,
+        faces=faces,
+        response=response,
+        findings=judge(evidence),
+    )

@@ -1,0 +1,129 @@
+"""One-, two- and three-wave analysis with each bar's own values.
+
+With load-positive strains at the faces (I, R in the incident bar i, T in the transmitted bar t):
+
+    F_in = E_i A_i (I + R)      F_out = E_t A_t T
+    v_in = c_i (I - R)          v_out = c_t T
+
+    stress_1w = F_out/A_s                    rate_1w = (-2 c_i R + F_out (1/Z_i - 1/Z_t))/L
+    stress_2w = F_in/A_s                     rate_2w = (2 c_i I - F_out (1/Z_i + 1/Z_t))/L
+    stress_3w = (F_in + F_out)/(2 A_s)       rate_3w = (v_in - v_out)/L
+
+The one- and two-wave rates put F_in = F_out to do without I or without R; for equal bars they are the
+familiar -2 c R/L and 2 c (I - T)/L. Stress and rate are engineering values.
+
+References
+----------
+H. Kolsky, Proc. Phys. Soc. B 62 (1949) 676-700; U. S. Lindholm, J. Mech. Phys. Solids 12 (1964)
+317-335; G. T. Gray III, ASM Handbook 8 (2000) 462-476; W. Chen, B. Song, Split Hopkinson (Kolsky)
+Bar, Springer 2011.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import NamedTuple
+
+import numpy as np
+
+from shpb.arrays import FloatArray
+from shpb.rig.gauge import TestKind
+from shpb.rig.rig import Rig
+from shpb.rig.sheet import Specimen
+from shpb.wave.faces import FacePulses
+
+
+class FaceMotion(NamedTuple):
+    """Force [N] and velocity [m/s] at both faces, shape (samples,) each."""
+
+    force_in_n: FloatArray
+    force_out_n: FloatArray
+    velocity_in_m_s: FloatArray
+    velocity_out_m_s: FloatArray
+
+
+@dataclass(frozen=True, slots=True, eq=False, kw_only=True)
+class Curve:
+    """Engineering and true response by one analysis, shape (samples,) each.
+
+    ``strain`` and ``stress_pa`` are engineering values, positive under load; true values hold at
+    constant volume and uniform deformation.
+    """
+
+    strain_rate_per_s: FloatArray
+    strain: FloatArray
+    stress_pa: FloatArray
+    true_strain_rate_per_s: FloatArray
+    true_strain: FloatArray
+    true_stress_pa: FloatArray
+
+
+def face_motion(faces: FacePulses, rig: Rig) -> FaceMotion:
+    """Force and velocity at both specimen faces."""
+    bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
+    incident, reflected, transmitted = faces.incident, faces.reflected, faces.transmitted
+    return FaceMotion(
+        bar_i.force_per_strain_n * (incident.force_strain + reflected.force_strain),
+        bar_t.force_per_strain_n * transmitted.force_strain,
+        bar_i.wave_speed_m_s * (incident.velocity_strain - reflected.velocity_strain),
+        bar_t.wave_speed_m_s * transmitted.velocity_strain,
+    )
+
+
+def one_wave(
+    faces: FacePulses, motion: FaceMotion, rig: Rig, specimen: Specimen, kind: TestKind
+) -> Curve:
+    """Back-face stress; rate from the reflected pulse, equilibrium assumed."""
+    bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
+    velocity = -2 * bar_i.wave_speed_m_s * faces.reflected.velocity_strain
+    mismatch = 1 / bar_i.impedance_n_s_m - 1 / bar_t.impedance_n_s_m
+    if mismatch:
+        velocity = velocity + motion.force_out_n * mismatch
+    return curve_of(faces, velocity, motion.force_out_n, specimen, kind)
+
+
+def two_wave(
+    faces: FacePulses, motion: FaceMotion, rig: Rig, specimen: Specimen, kind: TestKind
+) -> Curve:
+    """Front-face stress; rate from incident and transmitted pulse, equilibrium assumed."""
+    bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
+    compliance = 1 / bar_i.impedance_n_s_m + 1 / bar_t.impedance_n_s_m
+    velocity = 2 * bar_i.wave_speed_m_s * faces.incident.velocity_strain - compliance * motion.force_out_n
+    return curve_of(faces, velocity, motion.force_in_n, specimen, kind)
+
+
+def three_wave(faces: FacePulses, motion: FaceMotion, specimen: Specimen, kind: TestKind) -> Curve:
+    """Mean stress of both faces; rate from both face velocities, nothing assumed."""
+    velocity = motion.velocity_in_m_s - motion.velocity_out_m_s
+    return curve_of(faces, velocity, 0.5 * (motion.force_in_n + motion.force_out_n), specimen, kind)
+
+
+def curve_of(
+    faces: FacePulses, closing_velocity_m_s: FloatArray, force_n: FloatArray, specimen: Specimen, kind: TestKind
+) -> Curve:
+    """Engineering and true curve from the closing velocity of the faces and a force.
+
+    True values: compression e_t = -ln(1 - e), s_t = s (1 - e); tension e_t = ln(1 + e), s_t = s (1 + e).
+    """
+    rate = closing_velocity_m_s / specimen.length_m
+    strain = integrated(rate, faces.interval_s)
+    stress = force_n / specimen.area_m2
+    sign = 1.0 if kind is TestKind.TENSION else -1.0
+    # Where noise or a second loading would carry compression past the whole length, nothing is true.
+    stretch = np.maximum(1.0 + sign * strain, 1e-3)
+    return Curve(
+        strain_rate_per_s=rate,
+        strain=strain,
+        stress_pa=stress,
+        true_strain_rate_per_s=rate / stretch,
+        true_strain=sign * np.log(stretch),
+        true_stress_pa=stress * stretch,
+    )
+
+
+def integrated(values: FloatArray, interval_s: float) -> FloatArray:
+    """Running integral by the trapezoidal rule, zero at the first sample."""
+    total = np.cumsum(values)
+    total -= 0.5 * (values + values[0])
+    total *= interval_s
+    return total

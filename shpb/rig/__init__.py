@@ -1,0 +1,1 @@
+"""What stands in the lab: bars, gauges, striker, specimen, and the files that describe them."""

@@ -1,0 +1,95 @@
+"""How a shot is reduced: every choice in one frozen value, stored with the result."""
+
+from __future__ import annotations
+
+import dataclasses
+from dataclasses import dataclass
+from enum import StrEnum
+
+from shpb.errors import InputError
+
+
+class Dispersion(StrEnum):
+    """What is done about dispersion between gauge and specimen."""
+
+    NONE = "none"  # rigid time shift at c0
+    PHASE = "phase"  # Pochhammer-Chree first mode, phase only
+    FULL = "full"  # phase, and surface strain to mean force and velocity
+
+
+class Alignment(StrEnum):
+    """Where the pulses start on the common clock."""
+
+    PHYSICAL = "physical"  # travel times from distances and wave speed alone
+    FEET = "feet"  # reflected and transmitted feet laid on the incident foot
+
+
+class Analysis(StrEnum):
+    """Which curve is put forward as the result; the others stand beside it."""
+
+    ONE_WAVE = "one-wave"
+    THREE_WAVE = "three-wave"
+
+
+Span = tuple[float, float]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Settings:
+    """Choices of the reduction; the defaults serve a metal specimen on metal bars.
+
+    Times of windows and feet are on the record's own clock [s]; None leaves them to the program.
+    """
+
+    dispersion: Dispersion = Dispersion.PHASE
+    alignment: Alignment = Alignment.PHYSICAL
+    # Cut-off of the one low-pass for all pulses, as f a/c0 of the thicker bar. Beyond 0.25 the
+    # first mode's surface strain fades and changes sign (Davies 1948), so nothing there is force.
+    cutoff_fa_c0: float = 0.234
+    cutoff_hz: float | None = None  # overrides cutoff_fa_c0
+    incident_window_s: Span | None = None
+    reflected_window_s: Span | None = None
+    transmitted_window_s: Span | None = None
+    incident_foot_s: float | None = None
+    reflected_foot_s: float | None = None
+    transmitted_foot_s: float | None = None
+    analysis: Analysis = Analysis.ONE_WAVE  # the curve put forward; all are stored
+    # Limits of the checks (common practice unless the check's table names a source).
+    equilibrium_limit: float = 0.05
+    equilibrium_late_strain: float = 0.03
+    # Relative error that each pulse has on its own (gauge linearity, bending, rest of dispersion): what
+    # keeps F_in, a difference of two large pulses, from being better known. Common practice: 0.5 %.
+    pulse_error: float = 0.005
+    rate_variation_limit: float = 0.10
+    overlap_limit: float = 0.02  # tail of the incident pulse under the reflected one, share of its peak
+    misalignment_limit_s: float = 3e-6
+    striker_limit: float = 0.05  # impulse of the incident pulse against striker momentum
+    bar_yield_limit: float = 0.9  # greatest bar stress by yield strength
+    noise_limit: float = 0.02  # noise of a pulse after the low-pass, share of its peak
+    least_codes: int = 64  # digitiser steps that a pulse must span
+    final_length_limit: float = 0.02  # strain from the bars less strain from the micrometer
+    work_limit: float = 0.05  # work at the faces against work in the specimen
+    flow_strains: tuple[float, ...] = (0.02, 0.05, 0.10, 0.15, 0.20)
+
+    def __post_init__(self) -> None:
+        if not 0.02 <= self.cutoff_fa_c0 <= 1.0:
+            raise InputError(
+                f"cut-off f a/c0 is {self.cutoff_fa_c0:g}",
+                where="settings.cutoff_fa_c0",
+                mend="Give 0.02 to 1.0; 0.23 is usual",
+            )
+        for name in ("incident_window_s", "reflected_window_s", "transmitted_window_s"):
+            span = getattr(self, name)
+            if span is not None and not span[0] < span[1]:
+                raise InputError(
+                    f"window is {span[0]:g} to {span[1]:g} s",
+                    where=f"settings.{name}",
+                    mend="Give the start before the end",
+                )
+
+    def replaced(self, **changes: object) -> Settings:
+        """Return a copy with the given fields changed."""
+        return dataclasses.replace(self, **changes)  # type: ignore[arg-type]
+
+
+DEFAULT = Settings()

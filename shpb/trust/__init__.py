@@ -1,0 +1,1 @@
+"""Whether the numbers can be trusted: checks, findings and the verdict."""

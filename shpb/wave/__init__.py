@@ -1,0 +1,1 @@
+"""How a pulse travels from a gauge station to a specimen face."""

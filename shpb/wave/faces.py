@@ -1,0 +1,178 @@
+"""The three pulses at the specimen faces, on one clock whose zero is the arrival of the loading front."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from shpb.arrays import FloatArray, frozen
+from shpb.errors import InputError
+from shpb.pulse.foot import Foot, pick_foot
+from shpb.pulse.pulses import Pulse, Pulses
+from shpb.rig.rig import Rig
+from shpb.rig.sheet import Specimen
+from shpb.settings import Alignment, Settings
+from shpb.wave.propagation import CarriedPulse, Grid, LowPass, carry_pulse
+
+# The common clock begins this long before the front, in a/c0 of the incident bar.
+_BEFORE_RADII = 12.0
+_SMOOTHING_RADII = 0.5
+_PICK_RADII = 60.0  # feet are sought this long after the front
+
+
+@dataclass(frozen=True, slots=True, eq=False, kw_only=True)
+class FacePulses:
+    """Pulses at the specimen faces.
+
+    Attributes
+    ----------
+    time_s : float array, shape (samples,)
+        Time since the loading front reached the incident face [s].
+    record_time_of_zero_s : float
+        Where time zero lies on the record's own clock [s].
+    incident, reflected, transmitted : CarriedPulse
+        Strains [1], shape (samples,) each, loading-positive.
+    low_pass : LowPass
+        The one filter of all three.
+    reflected_misalignment_s, transmitted_misalignment_s : float or None
+        Foot of that pulse less where geometry puts it, before any tuning [s].
+    u_misalignment_s : float
+        Standard uncertainty of the two from the pickers' scatter [s].
+    reflected_shift_s, transmitted_shift_s : float
+        The tuned part: what was added to the physical delay [s]; zero in physical time.
+    untuned : FacePulses or None
+        The same without the tuned part, where there is one.
+    """
+
+    time_s: FloatArray
+    interval_s: float
+    record_time_of_zero_s: float
+    incident: CarriedPulse
+    reflected: CarriedPulse
+    transmitted: CarriedPulse
+    low_pass: LowPass
+    reflected_misalignment_s: float | None
+    transmitted_misalignment_s: float | None
+    u_misalignment_s: float
+    reflected_shift_s: float = 0.0
+    transmitted_shift_s: float = 0.0
+    untuned: FacePulses | None = None
+
+    def index(self, time_s: float) -> int:
+        """Sample at or after a time since the front, kept on the grid."""
+        return int(np.clip(np.ceil((time_s - self.time_s[0]) / self.interval_s), 0, self.time_s.size))
+
+
+def low_pass_of(rig: Rig, settings: Settings) -> LowPass:
+    """The one low-pass of a rig: from the bar with the lower c0/a, or as the settings state it."""
+    if settings.cutoff_hz is not None:
+        return LowPass(settings.cutoff_hz)
+    slower = min(bar.wave_speed_m_s / bar.radius_m for bar in (rig.incident_bar, rig.transmitted_bar))
+    return LowPass(settings.cutoff_fa_c0 * slower)
+
+
+def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Settings) -> FacePulses:
+    """Carry the pulses to the specimen faces: incident forward, reflected and transmitted back.
+
+    All three pass the same zero-phase low-pass and the same dispersion step, to the same place, before
+    any sum or difference is formed (Gorham 1983; Lifshitz & Leber 1994).
+    """
+    low_pass = low_pass_of(rig, settings)
+    x_i, x_t = rig.incident_gauge.to_specimen_m, rig.transmitted_gauge.to_specimen_m
+    bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
+    grid = _common_grid(pulses, rig, settings)
+
+    def carried(pulse: Pulse, shift_s: float = 0.0) -> CarriedPulse:
+        bar, distance = {
+            "incident": (bar_i, x_i),
+            "reflected": (bar_i, -x_i),
+            "transmitted": (bar_t, -x_t),
+        }[pulse.name]
+        return carry_pulse(
+            pulse.strain, pulse.start_s, grid, distance, bar, low_pass, settings.dispersion, shift_s
+        )
+
+    incident, reflected, transmitted = (carried(pulse) for pulse in pulses)
+    feet = _feet_at_faces(pulses, (incident, reflected, transmitted), grid, rig)
+    zero = feet[0].time_s if feet[0] is not None else pulses.arrivals.incident_s + x_i / bar_i.wave_speed_m_s
+    off_r = None if feet[1] is None else feet[1].time_s - zero
+    off_t = None if feet[2] is None else feet[2].time_s - zero - (specimen.transit_time_s or 0.0)
+    u_off = float(np.sqrt(sum(foot.u_time_s**2 for foot in feet if foot is not None)))
+    physical = FacePulses(
+        time_s=frozen(grid.time_s - zero),
+        interval_s=grid.interval_s,
+        record_time_of_zero_s=zero,
+        incident=incident,
+        reflected=reflected,
+        transmitted=transmitted,
+        low_pass=low_pass,
+        reflected_misalignment_s=off_r,
+        transmitted_misalignment_s=off_t,
+        u_misalignment_s=u_off,
+    )
+    if settings.alignment is Alignment.PHYSICAL:
+        return physical
+    shift_r = -(off_r or 0.0)
+    shift_t = -(off_t + (specimen.transit_time_s or 0.0)) if off_t is not None else 0.0
+    return FacePulses(
+        time_s=physical.time_s,
+        interval_s=grid.interval_s,
+        record_time_of_zero_s=zero,
+        incident=incident,
+        reflected=carried(pulses.reflected, shift_r),
+        transmitted=carried(pulses.transmitted, shift_t),
+        low_pass=low_pass,
+        reflected_misalignment_s=off_r,
+        transmitted_misalignment_s=off_t,
+        u_misalignment_s=u_off,
+        reflected_shift_s=shift_r,
+        transmitted_shift_s=shift_t,
+        untuned=physical,
+    )
+
+
+def _common_grid(pulses: Pulses, rig: Rig, settings: Settings) -> Grid:
+    """From a little before the front to where the first of the three windows ends, at the faces."""
+    travel_i = rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
+    travel_t = rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s
+    front = pulses.arrivals.incident_s + travel_i
+    start = front - _BEFORE_RADII * rig.incident_bar.radius_m / rig.incident_bar.wave_speed_m_s
+    stop = min(
+        pulses.incident.window_s[1] + travel_i,
+        pulses.reflected.window_s[1] - travel_i,
+        pulses.transmitted.window_s[1] - travel_t,
+    )
+    samples = int((stop - start) / pulses.sample_interval_s)
+    if samples < 32 or stop <= front:
+        raise InputError(
+            f"the three windows have only {max(stop - front, 0) * 1e6:.1f} us in common at the specimen",
+            where="pulse windows",
+            mend="Widen the windows in the shot sheet, lengthen the record, or check gauge distances",
+        )
+    return Grid(start, pulses.sample_interval_s, samples)
+
+
+def _feet_at_faces(
+    pulses: Pulses, carried: tuple[CarriedPulse, CarriedPulse, CarriedPulse], grid: Grid, rig: Rig
+) -> tuple[Foot | None, ...]:
+    """Pick all three feet at the faces, with the same picker, where dispersion no longer rounds them."""
+    unit = rig.incident_bar.radius_m / rig.incident_bar.wave_speed_m_s
+    stop = int((_BEFORE_RADII + _PICK_RADII) * unit / grid.interval_s)
+    feet = []
+    for pulse, at_face in zip(pulses, carried, strict=True):
+        sign = pulse.foot.sign if pulse.foot is not None else None
+        # The noise left after the low-pass is that of a running mean of half its period.
+        feet.append(
+            pick_foot(
+                at_face.strain[:stop],
+                grid.start_s,
+                grid.interval_s,
+                pulse.noise,
+                _SMOOTHING_RADII * unit,
+                sign,
+            )
+            if pulse.foot is not None
+            else None
+        )
+    return tuple(feet)
