@@ -1,0 +1,312 @@
+"""One HDF5 file a shot: written whole or not at all, read back, reduced again.
+
+Layout and names: :mod:`shpb.store.layout`. Groups that hold curves carry the NeXus NXdata attributes
+(``NX_class``, ``signal``, ``axes``, ``units``, ``long_name``), so any general HDF5 viewer plots them.
+"""
+
+from __future__ import annotations
+
+import datetime
+import json
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from shpb.arrays import FloatArray
+from shpb.errors import StoreError
+from shpb.record.record import Record, Source
+from shpb.reduction import ShotResult, reduce
+from shpb.rig.rig import Rig
+from shpb.rig.sheet import ShotSheet
+from shpb.settings import Settings
+from shpb.store import layout
+from shpb.store.atomic import whole_file
+from shpb.store.plain import from_plain, to_plain
+from shpb.trust.finding import Finding
+from shpb.version import VERSION
+
+if TYPE_CHECKING:
+    import h5py
+
+_COMPRESSED = {"compression": "gzip", "compression_opts": 1, "shuffle": True, "fletcher32": True}
+
+
+@dataclass(frozen=True, slots=True, eq=False, kw_only=True)
+class StoredShot:
+    """A shot as read back from its file.
+
+    ``arrays`` maps a path such as ``"response/stress_3w"`` to its values, ``attributes`` a path such as
+    ``"response"`` to the attributes of that group ("/" for the file).
+    """
+
+    path: Path
+    record: Record
+    rig: Rig
+    sheet: ShotSheet
+    settings: Settings
+    findings: tuple[Finding, ...]
+    arrays: Mapping[str, FloatArray]
+    units: Mapping[str, str]
+    attributes: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
+
+    @property
+    def verdict(self) -> str:
+        """accept, restrict or reject, as it was stored."""
+        return str(self.attributes["/"]["verdict"])
+
+    def __getitem__(self, path: str) -> FloatArray:
+        """Values at a path; the message of the error lists what there is."""
+        try:
+            return self.arrays[path]
+        except KeyError:
+            raise StoreError(
+                f"there is no {path!r}", where=str(self.path), mend=f"There are {', '.join(sorted(self.arrays))}"
+            ) from None
+
+    def reduce_again(self, settings: Settings | None = None) -> ShotResult:
+        """Reduce the stored record again, with the stored settings or others."""
+        return reduce(self.record, self.rig, self.sheet, settings or self.settings)
+
+
+# --- out ---------------------------------------------------------------------------------------
+
+
+def save_shot(result: ShotResult, path: Path | str, *, replace_other: bool = False) -> Path:
+    """Write a shot to its HDF5 file, whole or not at all.
+
+    Parameters
+    ----------
+    result : ShotResult
+        The reduced shot.
+    path : Path
+        File to write. What stands there is replaced only if it holds the same shot.
+    replace_other : bool
+        Replace it whatever it holds.
+
+    Raises
+    ------
+    StoreError
+        If another shot or a foreign file stands there, or the disk refuses.
+    """
+    import h5py
+
+    target = Path(path)
+    if target.exists() and not replace_other:
+        _require_same_shot(target, result.sheet.shot_id)
+    with whole_file(target) as part, h5py.File(part, "w", libver=("earliest", "v110")) as file:
+        _write(file, result)
+    return target
+
+
+def _require_same_shot(target: Path, shot_id: str) -> None:
+    import h5py
+
+    try:
+        with h5py.File(target, "r", locking="best-effort") as file:
+            holds = (file.attrs.get("format"), file.attrs.get("shot_id"))
+    except OSError:
+        holds = (None, None)
+    if holds != (layout.FORMAT, shot_id):
+        what = f"holds shot {holds[1]}" if holds[0] == layout.FORMAT else "is not a shot file of this program"
+        raise StoreError(
+            f"the file {what}; shot {shot_id} is not written over it",
+            where=str(target),
+            mend="Choose another name or folder for the results",
+        )
+
+
+def _write(file: h5py.File, result: ShotResult) -> None:
+    file.attrs.update(
+        {
+            "format": layout.FORMAT,
+            "format_version": layout.FORMAT_VERSION,
+            "program_version": VERSION,
+            "created_utc": datetime.datetime.now(datetime.UTC).isoformat(timespec="seconds"),
+            "shot_id": result.sheet.shot_id,
+            "verdict": result.verdict.value,
+            "NX_class": "NXroot",
+            "default": "response",
+        }
+    )
+    _write_record(file, result.record)
+    _write_inputs(file, result)
+    _write_pulses(file, result)
+    wave = _write_fields(file, "wave", (*layout.WAVE, *layout.spread_of_amplitude(result)), result, "incident")
+    _write_attributes(wave, layout.WAVE_ATTRIBUTES, result)
+    response = _write_fields(file, "response", layout.RESPONSE, result, "true_stress", axis="true_strain")
+    _write_attributes(response, layout.RESPONSE_ATTRIBUTES, result)
+    table = response.create_dataset("flow_stress", data=layout.flow_table(result))
+    table.attrs["columns"] = "strain, true stress [Pa], true strain rate [1/s]"
+    trust = _write_fields(file, "trust", layout.TRUST, result, "u_equilibrium_ratio")
+    trust["findings"] = json.dumps([to_plain(finding) for finding in result.findings])
+
+
+def _write_record(file: h5py.File, record: Record) -> None:
+    group = file.create_group("record")
+    chunk = (1, min(record.samples, 1 << 16))
+    voltage = group.create_dataset("voltage", data=record.voltage_v, chunks=chunk, **_COMPRESSED)
+    voltage.attrs.update({"units": "V", "long_name": "Voltage as acquired"})
+    group.attrs.update(
+        {
+            "channels": list(record.channels),
+            "sample_interval": record.sample_interval_s,
+            "trigger_offset": record.start_s,
+            "file_name": [source.name for source in record.sources],
+            "sha256": [source.sha256 for source in record.sources],
+        }
+    )
+    group["sources"] = json.dumps([to_plain(source) for source in record.sources])
+    group["remarks"] = json.dumps(list(record.remarks))
+
+
+def _write_inputs(file: h5py.File, result: ShotResult) -> None:
+    group = file.create_group("rig")
+    # The files word for word for people; the values as used, every bit of them, for the program.
+    group["rig_file"] = result.rig.text
+    group["shot_sheet"] = result.sheet.text
+    for name, value in (("rig", result.rig), ("sheet", result.sheet), ("settings", result.settings)):
+        group[f"{name}_as_used"] = json.dumps(to_plain(value))
+
+
+def _write_pulses(file: h5py.File, result: ShotResult) -> None:
+    parent = file.create_group("pulse")
+    interval = result.pulses.sample_interval_s
+    for pulse in result.pulses:
+        group = parent.create_group(pulse.name)
+        time = group.create_dataset("time", data=pulse.start_s + interval * np.arange(pulse.strain.size))
+        time.attrs.update({"units": "s", "long_name": "Time on the record's clock"})
+        strain = group.create_dataset("strain", data=pulse.strain)
+        strain.attrs.update({"units": "", "long_name": f"{pulse.name.capitalize()} strain at the gauge"})
+        group.attrs.update(_nxdata("strain", "time"))
+        group.attrs.update(
+            {
+                "window": pulse.window_s,
+                "automatic_window": pulse.automatic_window_s,
+                "set_by_hand": pulse.set_by_hand,
+                "noise": pulse.noise,
+                "zero_level": pulse.zero.level,
+                "zero_slope": pulse.zero.slope / interval,
+                "zero_time": result.strain.start_s + interval * pulse.zero.centre,
+            }
+        )
+        for name, foot in (("foot", pulse.foot), ("automatic_foot", pulse.automatic_foot)):
+            if foot is not None:
+                group.attrs.update({name: foot.time_s, f"u_{name}": foot.u_time_s})
+
+
+def _write_fields(
+    file: h5py.File, name: str, fields: Iterable[layout.Field], result: ShotResult, signal: str, axis: str = "time"
+) -> h5py.Group:
+    group = file.create_group(name)
+    for entry in fields:
+        dataset = group.create_dataset(entry.name, data=entry.of(result))
+        dataset.attrs["units"] = entry.units
+        dataset.attrs["long_name"] = entry.label
+    group.attrs.update(_nxdata(signal, axis))
+    return group
+
+
+def _nxdata(signal: str, axis: str) -> dict[str, object]:
+    return {"NX_class": "NXdata", "signal": signal, "axes": [axis]}
+
+
+def _write_attributes(group: h5py.Group, attributes: Iterable[layout.Attribute], result: ShotResult) -> None:
+    for name, of in attributes:
+        value = of(result)
+        if value is not None:
+            group.attrs[name] = value
+
+
+# --- in ----------------------------------------------------------------------------------------
+
+
+def load(path: Path | str) -> StoredShot:
+    """Read a shot back from its HDF5 file.
+
+    Raises
+    ------
+    StoreError
+        If it is no shot file, is damaged, or was written by a later version of the format.
+    """
+    import h5py
+
+    source = Path(path)
+    try:
+        with h5py.File(source, "r", locking="best-effort") as file:
+            _require_readable(file, source)
+            return _read(file, source)
+    except FileNotFoundError:
+        raise StoreError("there is no such file", where=str(source), mend="Check the name") from None
+    except (OSError, KeyError, ValueError, TypeError, RuntimeError) as error:
+        raise StoreError(
+            f"cannot be read as a shot file ({error})",
+            where=str(source),
+            mend="It may be damaged: reduce the raw record again",
+        ) from error
+
+
+def _require_readable(file: h5py.File, path: Path) -> None:
+    if file.attrs.get("format") != layout.FORMAT:
+        raise StoreError(
+            "is an HDF5 file, but not a shot of this program", where=str(path), mend="Give a file that `shpb reduce` wrote"
+        )
+    version = int(file.attrs["format_version"])
+    if version > layout.FORMAT_VERSION:
+        raise StoreError(
+            f"has format version {version}; this program reads up to {layout.FORMAT_VERSION}",
+            where=str(path),
+            mend="Update the program",
+        )
+
+
+def _read(file: h5py.File, path: Path) -> StoredShot:
+    import h5py
+
+    arrays: dict[str, FloatArray] = {}
+    units: dict[str, str] = {}
+    attributes: dict[str, dict[str, Any]] = {"/": _plain_attributes(file)}
+
+    def visit(name: str, item: object) -> None:
+        if isinstance(item, h5py.Group):
+            attributes[name] = _plain_attributes(item)
+        elif isinstance(item, h5py.Dataset) and item.dtype.kind == "f" and name != "record/voltage":
+            arrays[name] = item[()]
+            units[name] = str(item.attrs.get("units", ""))
+
+    file.visititems(visit)
+    inputs = {name: json.loads(_text(file[f"rig/{name}_as_used"])) for name in ("rig", "sheet", "settings")}
+    return StoredShot(
+        path=path,
+        record=_read_record(file),
+        rig=from_plain(Rig, inputs["rig"]),
+        sheet=from_plain(ShotSheet, inputs["sheet"]),
+        settings=from_plain(Settings, inputs["settings"]),
+        findings=tuple(from_plain(Finding, item) for item in json.loads(_text(file["trust/findings"]))),
+        arrays=arrays,
+        units=units,
+        attributes=attributes,
+    )
+
+
+def _read_record(file: h5py.File) -> Record:
+    group = file["record"]
+    return Record(
+        voltage_v=group["voltage"][()],
+        sample_interval_s=float(group.attrs["sample_interval"]),
+        start_s=float(group.attrs["trigger_offset"]),
+        channels=tuple(str(name) for name in group.attrs["channels"]),
+        sources=tuple(from_plain(Source, item) for item in json.loads(_text(group["sources"]))),
+        remarks=tuple(json.loads(_text(group["remarks"]))),
+    )
+
+
+def _text(dataset: h5py.Dataset) -> str:
+    value = dataset[()]
+    return value.decode("utf-8") if isinstance(value, bytes) else str(value)
+
+
+def _plain_attributes(item: h5py.Group) -> dict[str, Any]:
+    return {name: value.tolist() if isinstance(value, np.ndarray | np.generic) else value for name, value in item.attrs.items()}

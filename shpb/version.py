@@ -1,0 +1,3 @@
+"""The version of the program, in one place that loads nothing."""
+
+VERSION = "0.1.0"
