@@ -95,27 +95,32 @@ def save_shot(result: ShotResult, path: Path | str, *, replace_other: bool = Fal
 
     target = Path(path)
     if target.exists() and not replace_other:
-        _require_same_shot(target, result.sheet.shot_id)
+        _require_same_shot(target, result)
     with whole_file(target) as part, h5py.File(part, "w", libver=("earliest", "v110")) as file:
         _write(file, result)
     return target
 
 
-def _require_same_shot(target: Path, shot_id: str) -> None:
+def _require_same_shot(target: Path, result: ShotResult) -> None:
+    """The same shot has the same id and came from the same record."""
     import h5py
 
+    shot_id, hashes = result.sheet.shot_id, [source.sha256 for source in result.record.sources]
+    what = "is not a shot file of this program"
     try:
         with h5py.File(target, "r", locking="best-effort") as file:
-            holds = (file.attrs.get("format"), file.attrs.get("shot_id"))
-    except OSError:
-        holds = (None, None)
-    if holds != (layout.FORMAT, shot_id):
-        what = f"holds shot {holds[1]}" if holds[0] == layout.FORMAT else "is not a shot file of this program"
-        raise StoreError(
-            f"the file {what}; shot {shot_id} is not written over it",
-            where=str(target),
-            mend="Choose another name or folder for the results",
-        )
+            if file.attrs.get("format") == layout.FORMAT:
+                held, held_hashes = file.attrs.get("shot_id"), list(file["record"].attrs["sha256"])
+                if held == shot_id and held_hashes == hashes:
+                    return
+                what = f"holds shot {held}" + (" from another record" if held == shot_id else "")
+    except (OSError, KeyError, RuntimeError):
+        what = "cannot be read as a shot file"
+    raise StoreError(
+        f"the file {what}; shot {shot_id} is not written over it",
+        where=str(target),
+        mend="Choose another folder for the results, or move that file away",
+    )
 
 
 def _write(file: h5py.File, result: ShotResult) -> None:

@@ -1,0 +1,153 @@
+"""From what the user names to a list of shots, and the list through worker processes."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import ProcessPoolExecutor, as_completed
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TypeVar
+
+from shpb.errors import InputError
+from shpb.rig.rig import Rig
+from shpb.rig.sheet import ShotSheet
+
+T = TypeVar("T")
+R = TypeVar("R")
+
+
+@dataclass(frozen=True, slots=True)
+class Task:
+    """One shot to reduce: its sheet, its rig, and the file that named it."""
+
+    sheet: ShotSheet
+    rig: Rig
+    named_in: Path
+
+
+def gather(sources: Sequence[Path], rig_file: Path | None) -> list[Task]:
+    """Read sheets and lists, and the rig file of each shot; every mistake of every file at once.
+
+    Parameters
+    ----------
+    sources : sequence of Path
+        Shot sheets (.toml), shot lists (.csv), or folders of shot sheets.
+    rig_file : Path or None
+        Rig file for shots whose sheet names none.
+
+    Raises
+    ------
+    InputError
+        If a file holds mistakes, a shot has no rig, or two shots share an id.
+    """
+    from shpb.rig.sheet_file import check_sheet_fits_rig
+
+    tasks: list[Task] = []
+    rigs: dict[Path, Rig] = {}
+    errors: list[InputError] = []
+    for source, sheet in _sheets(sources, errors):
+        try:
+            task = Task(sheet, _rig_of(sheet, source, rig_file, rigs), source)
+            check_sheet_fits_rig(sheet, task.rig)
+        except InputError as error:
+            errors.append(error)
+        else:
+            tasks.append(task)
+    _require_different_ids(tasks, errors)
+    if errors:
+        raise _together(errors)
+    if not tasks:
+        raise InputError("there is no shot to reduce", where=", ".join(map(str, sources)), mend="Name a shot sheet")
+    return tasks
+
+
+def _sheets(sources: Sequence[Path], errors: list[InputError]) -> Iterator[tuple[Path, ShotSheet]]:
+    from shpb.rig.sheet_file import read_sheet
+    from shpb.rig.shot_list import read_shot_list
+
+    for source in sources:
+        try:
+            if source.is_dir():
+                for path in sorted(source.glob("*.toml")):
+                    yield path, read_sheet(path)
+            elif source.suffix.lower() == ".toml":
+                yield source, read_sheet(source)
+            else:
+                for sheet in read_shot_list(source):
+                    yield source, sheet
+        except InputError as error:
+            errors.append(error)
+
+
+def _rig_of(sheet: ShotSheet, source: Path, rig_file: Path | None, rigs: dict[Path, Rig]) -> Rig:
+    from shpb.rig.rig_file import read_rig
+
+    path = sheet.rig_file or rig_file
+    if path is None:
+        raise InputError(
+            f"shot {sheet.shot_id} names no rig file", where=str(source), mend="Add rig = \"...\" or give --rig FILE"
+        )
+    if path not in rigs:
+        rigs[path] = read_rig(path)
+    return rigs[path]
+
+
+def _require_different_ids(tasks: Sequence[Task], errors: list[InputError]) -> None:
+    seen: dict[str, Path] = {}
+    for task in tasks:
+        other = seen.setdefault(task.sheet.shot_id, task.named_in)
+        if other is not task.named_in or sum(t.sheet.shot_id == task.sheet.shot_id for t in tasks) > 1:
+            errors.append(
+                InputError(
+                    f"shot id {task.sheet.shot_id} is used twice (also in {other.name})",
+                    where=str(task.named_in),
+                    mend="Give every shot an id of its own",
+                )
+            )
+            return
+
+
+def _together(errors: Sequence[InputError]) -> InputError:
+    if len(errors) == 1:
+        return errors[0]
+    unique = list(dict.fromkeys(str(error) for error in errors))
+    return InputError("\n".join(unique))
+
+
+def in_parallel(
+    function: Callable[[T], R], items: Sequence[T], workers: int, done: Callable[[int], None]
+) -> Iterator[tuple[int, R]]:
+    """Yield (index, result) as they come; one worker stays in this process.
+
+    ``function`` must not raise: it returns what went wrong as part of its result, so that one bad shot
+    never stops the rest.
+    """
+    workers = min(workers, len(items))
+    if workers <= 1:
+        for index, item in enumerate(items):
+            yield index, function(item)
+            done(index + 1)
+        return
+    # Few items a parcel keeps both workers busy to the end; many spare the traffic between processes.
+    size = max(1, min(16, len(items) // (4 * workers)))
+    parcels = [range(start, min(start + size, len(items))) for start in range(0, len(items), size)]
+    with ProcessPoolExecutor(workers) as pool:
+        futures = {pool.submit(_several, function, [items[i] for i in parcel]): parcel for parcel in parcels}
+        finished = 0
+        for future in as_completed(futures):
+            for index, result in zip(futures[future], future.result(), strict=True):
+                yield index, result
+            finished += len(futures[future])
+            done(finished)
+
+
+def _several(function: Callable[[T], R], items: list[T]) -> list[R]:
+    return [function(item) for item in items]
+
+
+def usual_workers() -> int:
+    """Processors this process may use."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1

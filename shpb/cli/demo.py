@@ -1,0 +1,46 @@
+"""``shpb demo``: a complete working folder of an invented campaign, written and reduced."""
+
+from __future__ import annotations
+
+import argparse
+from pathlib import Path
+
+NAME = "demo"
+HELP = "write a demo campaign of an invented lab and reduce it"
+DESCRIPTION = """\
+Write a complete working folder of an invented lab (rig files, records in several formats, shot
+sheets, a shot list, quasi-static curves) and reduce every shot. Good shots and bad: out of
+equilibrium, clipped, overlapping, swapped channels, a loose gauge, a bar that yields."""
+EXAMPLE = """\
+example:
+  shpb demo first-campaign
+"""
+
+
+def add_arguments(verb: argparse.ArgumentParser) -> None:
+    """Declare the arguments."""
+    verb.add_argument("folder", type=Path, metavar="FOLDER", help="new or empty folder")
+    verb.add_argument("--write-only", action="store_true", help="write the folder, reduce nothing")
+    verb.add_argument("--json", action="store_true", help="print JSON for other programs")
+
+
+def run(options: argparse.Namespace) -> int:
+    """Write the campaign, then reduce it as ``shpb reduce`` would."""
+    import sys
+
+    from shpb.cli.batch import Task, gather
+    from shpb.cli.reduce import Outputs, reduce_all
+    from shpb.cli.status import DONE, REJECTED
+    from shpb.demo.campaign import write_demo
+    from shpb.view.text import printable
+
+    campaign = write_demo(options.folder)
+    print(f"demo campaign written to {printable(campaign.folder)}", file=sys.stderr)
+    if options.write_only:
+        return DONE
+    tasks: list[Task] = gather(campaign.to_reduce, rig_file=None)
+    status = reduce_all(
+        tasks, Outputs(folder=campaign.folder / "results", figure="png"), as_json=options.json, full=False
+    )
+    # Rejected shots are part of the demo: it is done when all is as planned.
+    return DONE if status == REJECTED else status

@@ -1,0 +1,82 @@
+"""Entry point: one verb, its arguments, an exit status that scripts can trust.
+
+0 done, 1 failed, 2 bad input or usage, 3 done but some shot is rejected.
+"""
+
+from __future__ import annotations
+
+import argparse
+import contextlib
+import os
+import sys
+from collections.abc import Sequence
+
+from shpb.cli import demo, forms, record, reduce
+from shpb.cli.status import BAD_INPUT, FAILED
+from shpb.errors import InputError, ShpbError
+from shpb.version import VERSION
+
+_VERBS = (reduce, record, forms, demo)
+
+_EPILOG = """\
+A verdict speaks about data, never about safety: do not go near the rig because
+this program has finished. Local rules and licensed practice come first.
+
+exit status: 0 done, 1 failed, 2 bad input or usage, 3 done, a shot is rejected
+"""
+
+
+def parser() -> argparse.ArgumentParser:
+    """Return the parser of the whole command line."""
+    top = argparse.ArgumentParser(
+        prog="shpb",
+        description="Reduce split Hopkinson pressure bar shots: from voltage records to stress, strain, "
+        "strain rate, a force-equilibrium check and a verdict.",
+        epilog=_EPILOG,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    top.add_argument("--version", action="version", version=f"shpb {VERSION}")
+    verbs = top.add_subparsers(title="verbs", metavar="VERB", required=True)
+    for module in _VERBS:
+        verb = verbs.add_parser(
+            module.NAME,
+            help=module.HELP,
+            description=module.DESCRIPTION,
+            epilog=module.EXAMPLE,
+            formatter_class=argparse.RawDescriptionHelpFormatter,
+        )
+        module.add_arguments(verb)
+        verb.set_defaults(run=module.run, json=False)
+    return top
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one verb and return the exit status."""
+    for stream in (sys.stdout, sys.stderr):
+        # A console of few characters must not stop the program over a name it cannot show.
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="replace")
+    options = parser().parse_args(arguments)
+    try:
+        return int(options.run(options))
+    except ShpbError as error:
+        _say(error, as_json=getattr(options, "json", False))
+        return BAD_INPUT if isinstance(error, InputError) else FAILED
+    except BrokenPipeError:
+        # The reader of the pipe has left (head, less): nothing is wrong, and nothing more to say.
+        with contextlib.suppress(OSError):
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 0
+    except KeyboardInterrupt:
+        print("stopped; what was finished is stored whole", file=sys.stderr)
+        return FAILED
+
+
+def _say(error: ShpbError, *, as_json: bool) -> None:
+    from shpb.view.text import printable
+
+    if as_json:
+        from shpb.view.summary import error_json, json_text
+
+        print(json_text(error_json(error)))
+    print("\n".join(printable(line) for line in f"shpb: {error}".splitlines()), file=sys.stderr)

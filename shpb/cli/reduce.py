@@ -1,0 +1,232 @@
+"""``shpb reduce``: one shot, several, or a whole shot list."""
+
+from __future__ import annotations
+
+import argparse
+import hashlib
+import re
+import sys
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from shpb.cli.batch import Task
+    from shpb.view.listing import ListRow
+
+NAME = "reduce"
+HELP = "reduce shots: verdict, curves, HDF5 file and figure"
+DESCRIPTION = """\
+Reduce shots: voltages to stress, strain and strain rate, with a force-equilibrium check and a
+verdict. Name a shot sheet (.toml), several, a folder of them, or a shot list (.csv). Each shot
+becomes one HDF5 file and one figure in the results folder; nothing else is ever overwritten."""
+EXAMPLE = """\
+examples:
+  shpb reduce shots/s014.toml
+  shpb reduce shots.csv --rig calibration/rig.toml --workers 2
+  shpb reduce shots/s014.toml --full --csv --figure pdf
+
+exit status: 0 done, 1 failed, 2 bad input or usage, 3 done, a shot is rejected
+"""
+
+_FIGURES = ("png", "pdf", "svg", "none")
+
+
+def add_arguments(verb: argparse.ArgumentParser) -> None:
+    """Declare the arguments."""
+    verb.add_argument("shots", nargs="+", type=Path, metavar="SHOT", help="shot sheet, shot list or folder of sheets")
+    verb.add_argument("--rig", type=Path, metavar="FILE", help="rig file for shots whose sheet names none")
+    verb.add_argument(
+        "--results", type=Path, metavar="FOLDER", help="where results go (default: results/ beside the sheet or list)"
+    )
+    verb.add_argument("--figure", choices=_FIGURES, default="png", help="kind of figure (default png)")
+    verb.add_argument("--csv", action="store_true", help="write the curves as CSV too")
+    verb.add_argument("--full", action="store_true", help="show every check, not only those that say something")
+    verb.add_argument("--json", action="store_true", help="print JSON for other programs")
+    verb.add_argument("--workers", type=int, metavar="N", help="processes for several shots (default: one a core)")
+    choices = verb.add_argument_group("choices of the reduction (else rig file, shot sheet, defaults)")
+    choices.add_argument("--dispersion", metavar="WHICH", help="none, phase or full (phase and amplitude)")
+    choices.add_argument("--alignment", metavar="WHICH", help="physical or feet")
+    choices.add_argument("--analysis", metavar="WHICH", help="curve put forward: one-wave or three-wave")
+    choices.add_argument("--cutoff-khz", type=float, metavar="KHZ", help="cut-off of the low-pass of all pulses")
+
+
+def run(options: argparse.Namespace) -> int:
+    """Reduce what was named."""
+    from shpb.cli.batch import gather, usual_workers
+
+    tasks = gather(options.shots, options.rig)
+    folder = options.results or (_folder_of(options.shots[0]) / "results")
+    outputs = Outputs(folder=folder, figure=options.figure, csv=options.csv, choices=_choices(options))
+    workers = usual_workers() if options.workers is None else options.workers
+    return reduce_all(tasks, outputs, as_json=options.json, full=options.full, workers=workers)
+
+
+def _folder_of(source: Path) -> Path:
+    return source if source.is_dir() else source.parent
+
+
+def _choices(options: argparse.Namespace) -> dict[str, object]:
+    given = {
+        "dispersion": options.dispersion,
+        "alignment": options.alignment,
+        "analysis": options.analysis,
+        "cutoff_kHz": options.cutoff_khz,
+    }
+    return {name: value for name, value in given.items() if value is not None}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Outputs:
+    """What is written for each shot, and where."""
+
+    folder: Path
+    figure: str = "png"
+    csv: bool = False
+    choices: Mapping[str, object] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Done:
+    """What comes back from a worker for one shot: small, and never an exception."""
+
+    row: ListRow
+    text: str
+    json: dict[str, Any]
+    files: tuple[str, ...] = ()
+    error: str = ""  # why nothing could be stored, else empty
+    bad_input: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class _Work:
+    """Reduce one shot and write its files; picklable, so that a worker process can do it."""
+
+    outputs: Outputs
+    full: bool
+    figure_later: bool
+
+    def __call__(self, task: Task) -> Done:
+        from shpb.errors import InputError, ShpbError
+        from shpb.view.listing import list_row_of_error
+        from shpb.view.summary import error_json
+
+        try:
+            return self.reduced(task)
+        except ShpbError as error:
+            return Done(
+                row=list_row_of_error(task.sheet.shot_id, error),
+                text="",
+                json={"shot_id": task.sheet.shot_id, **error_json(error)},
+                error=str(error),
+                bad_input=isinstance(error, InputError),
+            )
+
+    def reduced(self, task: Task) -> Done:
+        from shpb.record.read import read_record
+        from shpb.reduction import reduce
+        from shpb.rig.overrides import hints_for, settings_for, settings_from
+        from shpb.store.shot_file import save_shot
+        from shpb.view.listing import list_row
+        from shpb.view.summary import shot_json
+        from shpb.view.terminal import shot_text
+
+        settings = settings_from(self.outputs.choices, settings_for(task.rig, task.sheet))
+        record = read_record(task.sheet.record_files, hints_for(task.rig, task.sheet))
+        result = reduce(record, task.rig, task.sheet, settings)
+        stem = file_stem(task.sheet.shot_id)
+        files = [save_shot(result, self.outputs.folder / f"{stem}.h5")]
+        if self.outputs.csv:
+            from shpb.store.curves_csv import export_csv
+
+            files.append(export_csv(result, self.outputs.folder / f"{stem}.csv"))
+        done = Done(
+            row=list_row(result),
+            text=shot_text(result, full=self.full),
+            json=shot_json(result),
+            files=tuple(map(str, files)),
+        )
+        if self.figure_later:
+            # One shot at the bench: the verdict is on the screen before the figure is drawn.
+            print(done.text, flush=True)
+        if self.outputs.figure != "none":
+            from shpb.view.figure import save_figure
+
+            files.append(save_figure(result, self.outputs.folder / f"{stem}.{self.outputs.figure}"))
+        return Done(row=done.row, text=done.text, json=done.json, files=tuple(map(str, files)))
+
+
+def file_stem(shot_id: str) -> str:
+    """A file name for a shot id: harmless on every system, and different for different ids."""
+    safe = re.sub(r"[^A-Za-z0-9._-]", "_", shot_id).strip(".") or "shot"
+    if safe == shot_id and len(safe) <= 100:
+        return safe
+    return f"{safe[:80]}-{hashlib.sha256(shot_id.encode()).hexdigest()[:8]}"
+
+
+def reduce_all(
+    tasks: Sequence[Task], outputs: Outputs, *, as_json: bool, full: bool, workers: int = 1
+) -> int:
+    """Reduce every task, print verdicts first, and return the exit status."""
+    from shpb.cli.batch import in_parallel
+    from shpb.cli.progress import progress
+
+    one = len(tasks) == 1
+    work = _Work(outputs, full, figure_later=one and not as_json)
+    found: dict[int, Done] = {}
+    with progress(len(tasks), "reducing shots") as step:
+        for index, done in in_parallel(work, tasks, workers, step if not one else lambda _: None):
+            found[index] = done
+    finished = [found[index] for index in range(len(tasks))]
+    if as_json:
+        _print_json(finished)
+    elif one:
+        _print_one(finished[0])
+    else:
+        _print_several(finished, outputs, full=full)
+    return _status(finished)
+
+
+def _print_json(finished: Sequence[Done]) -> None:
+    from shpb.view.summary import SCHEMA_VERSION, json_text
+
+    shots = [{**done.json, "files": list(done.files)} for done in finished]
+    print(json_text({"schema_version": SCHEMA_VERSION, "shots": shots}))
+
+
+def _print_one(done: Done) -> None:
+    from shpb.view.text import printable
+
+    if done.error:
+        print("\n".join(printable(line) for line in f"shpb: {done.error}".splitlines()), file=sys.stderr)
+        return
+    for name in done.files:
+        print(f"written: {printable(name)}")
+
+
+def _print_several(finished: Sequence[Done], outputs: Outputs, *, full: bool) -> None:
+    from shpb.view.listing import list_text
+    from shpb.view.text import printable
+
+    if full:
+        for done in finished:
+            if done.text:
+                print(done.text, end="\n\n")
+    print(list_text([done.row for done in finished]))
+    errors = [done.error for done in finished if done.error]
+    for error in errors:
+        print("\n".join(printable(line) for line in f"shpb: {error}".splitlines()), file=sys.stderr)
+    print(f"written to {printable(outputs.folder)}")
+
+
+def _status(finished: Sequence[Done]) -> int:
+    from shpb.cli.status import BAD_INPUT, DONE, FAILED, REJECTED
+
+    if any(done.error and not done.bad_input for done in finished):
+        return FAILED
+    if len(finished) == 1 and finished[0].error and finished[0].row.verdict != "reject":
+        return BAD_INPUT
+    if any(done.row.verdict in ("reject", "failed") for done in finished):
+        return REJECTED
+    return DONE

@@ -1,0 +1,105 @@
+"""What a rig file and a shot sheet change about the reduction: settings and hints, merged in order."""
+
+from __future__ import annotations
+
+import dataclasses
+from collections.abc import Mapping
+
+from shpb.errors import InputError
+from shpb.rig.key import PLAIN, Table
+from shpb.rig.mistakes import Collector, nearest
+from shpb.rig.rig import RecordHints, Rig
+from shpb.rig.setting_keys import SETTING_KEYS
+from shpb.rig.sheet import ShotSheet
+from shpb.rig.tables import Values
+from shpb.rig.values import Unreadable, value_in_si
+from shpb.settings import DEFAULT, Settings
+
+
+def overrides_in(values: Values, seen: Collector) -> dict[str, object]:
+    """Return the fields of Settings that a [settings] table states, in SI, each one checked by itself."""
+    overrides: dict[str, object] = {}
+    for key in SETTING_KEYS:
+        if key.stem not in values.given:
+            continue
+        value = values.given[key.stem]
+        try:
+            DEFAULT.replaced(**{key.field: value})
+        except InputError as error:
+            seen.add(values.key(key.stem), error.what, error.mend or "another value")
+        else:
+            overrides[key.field] = value
+    return overrides
+
+
+def settings_from(overrides: Mapping[str, object], base: Settings = DEFAULT) -> Settings:
+    """Return ``base`` with some fields changed.
+
+    Parameters
+    ----------
+    overrides : mapping
+        Either fields of Settings in SI, as :class:`Rig` and :class:`ShotSheet` hold them
+        (``cutoff_hz``: 120e3), or keys of a [settings] table in its units (``cutoff_kHz``: 120).
+    base : Settings
+        What holds for everything not named.
+
+    Raises
+    ------
+    FileMistakes
+        With every name that is unknown and every value that cannot be used.
+
+    Examples
+    --------
+    >>> settings_from({"cutoff_kHz": 120, "dispersion": "full"}).cutoff_hz
+    120000.0
+    """
+    seen = Collector("settings")
+    fields = {key.field: key for key in SETTING_KEYS}
+    keys = Table(name="settings", meaning="", keys=SETTING_KEYS, required=False).lookup()
+    changes: dict[str, object] = {}
+    for name, value in overrides.items():
+        if name not in fields and name not in keys:
+            guess = nearest(name, [*keys, *fields])
+            seen.add(name, "an unknown setting", "a known one", f"Did you mean {guess}?" if guess else "")
+            continue
+        # A field's name stands for the SI value; a key's name for people's unit.
+        key, unit = (fields[name], PLAIN) if name in fields else keys[name]
+        if name in fields and (value is None or key.units[0] != PLAIN):
+            key = dataclasses.replace(key, units=(*key.units, PLAIN))
+        if value is None and key.automatic:
+            changes[key.field] = None
+            continue
+        try:
+            changes[key.field] = value_in_si(value, key, unit)
+        except Unreadable as bad:
+            seen.add(name, bad.found, bad.expected, bad.mend)
+    seen.finish()
+    return base.replaced(**changes)
+
+
+def settings_for(rig: Rig, sheet: ShotSheet, base: Settings = DEFAULT) -> Settings:
+    """Return the settings of one shot: ``base``, changed by the rig file, then by the shot sheet."""
+    return settings_from(sheet.overrides, settings_from(rig.settings, base))
+
+
+def hints_for(rig: Rig, sheet: ShotSheet) -> RecordHints:
+    """Return what is known about the record: the rig file's hints, and the sheet's in their place."""
+    stated = {
+        field.name: value
+        for field in dataclasses.fields(RecordHints)
+        if (value := getattr(sheet.record, field.name)) is not None
+    }
+    return dataclasses.replace(rig.record, **stated)
+
+
+def hints_in(values: Values) -> RecordHints:
+    """Return the hints that a [record] table states."""
+    given = values.given
+    return RecordHints(
+        sample_interval_s=given.get("sample_interval"),
+        trigger_offset_s=given.get("trigger_offset"),
+        time_unit=given.get("time_unit"),
+        voltage_unit=given.get("voltage_unit"),
+        volts_per_code=given.get("volts_per_code"),
+        channel_names=given.get("channel_names"),
+    )
