@@ -104,8 +104,12 @@ def find_pulses(strain: GaugeStrain, rig: Rig, specimen: Specimen, settings: Set
     # Zero lines. The transmitted gauge is quiet until anything can have come through the bars.
     before = _quiet_or_refuse(incident_trace, index(arrivals.incident_s - lead_i), interval, "incident")
     peak_i = _peak_above(incident_trace, before, index(arrivals.incident_s), index(split))
-    pulse_end = _end_of_pulse(incident_trace, before, peak_i, index(arrivals.incident_s), index(split))
-    gap = quiet_gap(incident_trace, peak_i, pulse_end, index(split))
+    settled = _level(incident_trace, index(split), lead_i / interval)
+    pulse_end = _end_of_pulse(incident_trace, settled, before.noise, peak_i, index(arrivals.incident_s), index(split))
+    # A trace that stands at a quarter of the peak is the pulse itself, not a shifted zero.
+    gap = None
+    if abs(settled - before.level) < 0.25 * peak_i:
+        gap = quiet_gap(incident_trace, peak_i, pulse_end, index(split))
     before_t = _quiet_or_refuse(
         transmitted_trace, index(arrivals.transmitted_s - lead_t), interval, "transmitted"
     )
@@ -115,7 +119,8 @@ def find_pulses(strain: GaugeStrain, rig: Rig, specimen: Specimen, settings: Set
     zero_r = zero_i if gap is None else zero_line(gap, (before,), peak_i, interval)
     zero_t = zero_line(before_t, (), peak_t, interval)
 
-    tail = _level(incident_trace, index(split), lead_i / interval) - float(zero_i.at(index(split), index(split) + 1)[0])
+    # Against the zero of the gap where there is one: a gauge that came loose shifts zero, but leaves no tail.
+    tail = _level(incident_trace, index(split), lead_i / interval) - float(zero_r.at(index(split), index(split) + 1)[0])
 
     cut = _Cutter(strain, settings)
     incident = cut(
@@ -161,6 +166,13 @@ def _incident_front(strain: GaugeStrain, rig: Rig, settings: Settings) -> _Incid
     incident = _front_or_refuse(strain.incident, interval, smoothing, "incident")
     transmitted = first_front(strain.transmitted.axial, interval, smoothing)
     _refuse_swapped(strain, incident, transmitted, rig)
+    if incident.index * interval < 2 * _radius_time(rig.incident_bar):
+        raise UnusableShotError(
+            "the record begins on the incident pulse: there is no quiet time before it",
+            where="incident gauge",
+            mend="Set the scope to keep at least 100 us before the trigger and fire again",
+            check="pre-trigger",
+        )
     if incident.sign < 0:
         raise UnusableShotError(
             "the incident pulse comes out negative: the polarity is inverted",
@@ -172,13 +184,6 @@ def _incident_front(strain: GaugeStrain, rig: Rig, settings: Settings) -> _Incid
         return _IncidentFront(settings.incident_foot_s)
     lead = int(4 * _LEAD_RADII * _radius_time(rig.incident_bar) / interval)
     start = max(incident.index - lead, 0)
-    if incident.index * interval < 2 * _radius_time(rig.incident_bar):
-        raise UnusableShotError(
-            "the record begins on the incident pulse: there is no quiet time before it",
-            where="incident gauge",
-            mend="Set the scope to keep at least 100 us before the trigger and fire again",
-            check="pre-trigger",
-        )
     level = float(np.median(strain.incident.axial[start : max(incident.index - lead // 4, start + 8)]))
     segment = strain.incident.axial[start : incident.index + 6 * lead] - level
     foot = pick_foot(
@@ -255,10 +260,10 @@ def _peak_above(trace: FloatArray, quiet: QuietWindow, start: int, stop: int) ->
     return max(float(np.abs(values - quiet.level).max()), 1e-12)
 
 
-def _end_of_pulse(trace: FloatArray, quiet: QuietWindow, peak: float, start: int, stop: int) -> int:
-    """Last sample before ``stop`` at which the trace stands above 2 % of its peak and its noise."""
-    threshold = max(0.02 * peak, 4 * quiet.noise)
-    above = np.flatnonzero(np.abs(trace[start:stop] - quiet.level) > threshold)
+def _end_of_pulse(trace: FloatArray, settled: float, noise: float, peak: float, start: int, stop: int) -> int:
+    """Last sample before ``stop`` at which the trace stands clear of where it settles (2 % of its peak, or noise)."""
+    threshold = max(0.02 * peak, 4 * noise)
+    above = np.flatnonzero(np.abs(trace[start:stop] - settled) > threshold)
     return start + int(above[-1]) if above.size else start
 
 

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from shpb.arrays import FloatArray, frozen
+from shpb.arrays import FloatArray, frozen, require_finite
 from shpb.pulse.bridge import strain_from_voltage
 from shpb.record.record import Record
 from shpb.rig.bar import Bar
@@ -74,6 +74,12 @@ def gauge_strain(record: Record, rig: Rig, kind: TestKind) -> GaugeStrain:
 
 def _station(record: Record, gauge: Gauge, bar: Bar, kind: TestKind) -> StationStrain:
     voltages = [record.channel(channel) for channel in gauge.channels]
+    for channel, voltage in zip(gauge.channels, voltages, strict=True):
+        require_finite(
+            voltage,
+            where=f"channel {channel!r}",
+            mend="Cut the record before that sample or export it again",
+        )
     # strain_from_voltage gives tension positive: turn it once to loading positive.
     sign = 1.0 if kind is TestKind.TENSION else -1.0
     sides = [

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from shpb.pulse.zero_line import PLAUSIBLE_DRIFT_PER_S
 from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Finding, Weight
 from shpb.trust.judge import check
@@ -48,7 +49,8 @@ def zero_line(evidence: Evidence) -> Finding | None:
     peak = float(np.abs(incident.strain).max())
     shift = abs(reflected.zero.level - incident.zero.level) / peak
     elapsed = (reflected.zero.centre - incident.zero.centre) * evidence.pulses.sample_interval_s
-    limit = 0.02 + 60.0 * elapsed  # 2 % and what three times the plausible drift adds
+    # 1 %, and three times the drift that is plausible over the time between the two windows.
+    limit = 0.01 + 3 * PLAUSIBLE_DRIFT_PER_S * elapsed
     return Finding(
         check="zero line",
         weight=Weight.REJECT if shift > limit else Weight.FINE,
