@@ -17,7 +17,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from shpb.arrays import FloatArray
+from shpb.arrays import FloatArray, dot
 from shpb.pulse.front import moving_mean
 
 LOWER, UPPER = 0.10, 0.60  # shares of the first rise between which the line is fitted
@@ -132,7 +132,7 @@ def _tangent_foot(
         return None
     foot = centre - mean / slope
     residual = values - (mean + slope * (index - centre))
-    scatter = float(residual @ residual) / max(values.size - 2, 1)
+    scatter = dot(residual, residual) / max(values.size - 2, 1)
     u_foot = np.sqrt(scatter * (1 / values.size + (mean / slope) ** 2 / spread)) / slope
     return Foot(
         float(start_s + interval_s * foot),

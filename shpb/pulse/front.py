@@ -42,13 +42,19 @@ class Front(NamedTuple):
 
 def moving_mean(values: FloatArray, width: int) -> FloatArray:
     """Centred mean over ``width`` samples (made odd); the ends average what there is."""
-    half = max(width // 2, 0)
+    half = min(max(width // 2, 0), (values.size - 1) // 2)
     if half == 0:
         return values.copy()
-    total = np.concatenate(([0.0], np.cumsum(values)))
-    index = np.arange(values.size)
-    low, high = np.maximum(index - half, 0), np.minimum(index + half + 1, values.size)
-    mean: FloatArray = (total[high] - total[low]) / (high - low)
+    full = 2 * half + 1
+    total = np.empty(values.size + 1)
+    total[0] = 0.0
+    np.cumsum(values, out=total[1:])
+    mean = np.empty(values.size)
+    np.subtract(total[full:], total[:-full], out=mean[half : values.size - half])
+    mean[half : values.size - half] /= full
+    counts = np.arange(half + 1, full)
+    mean[:half] = total[half + 1 : full] / counts
+    mean[values.size - half :] = ((total[-1] - total[values.size - full + 1 : values.size - half]) / counts[::-1])
     return mean
 
 

@@ -14,7 +14,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from shpb.arrays import FloatArray
+from shpb.arrays import FloatArray, dot
 
 # Plausible drift of a zero line [share of the peak per second]: 2 % a millisecond, one standard deviation.
 PLAUSIBLE_DRIFT_PER_S = 20.0
@@ -68,9 +68,9 @@ def quiet_window(trace: FloatArray, start: int, stop: int) -> QuietWindow | None
     centre = 0.5 * (start + stop - 1)
     offset = np.arange(start, stop) - centre
     level = float(values.mean())
-    slope = float(offset @ (values - level) / (offset @ offset))
+    slope = dot(offset, values - level) / dot(offset, offset)
     residual = values - level - slope * offset
-    noise = float(np.sqrt(residual @ residual / (samples - 2)))
+    noise = float(np.sqrt(dot(residual, residual) / (samples - 2)))
     return QuietWindow(start, stop, centre, level, slope, noise)
 
 

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from shpb.arrays import FloatArray
+from shpb.arrays import FloatArray, dot
 
 _YIELD_FIT = (0.03, 0.08)  # true strain between which the back-extrapolated line is fitted
 
@@ -74,7 +74,7 @@ def back_extrapolated_yield_pa(
         return None
     x, y = strain[inside], stress[inside]
     centre = x.mean()
-    slope = float((x - centre) @ y / ((x - centre) @ (x - centre)))
+    slope = dot(x - centre, y) / dot(x - centre, x - centre)
     intercept = float(y.mean()) - slope * float(centre)
     if slope >= modulus_pa:
         return None

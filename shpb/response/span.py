@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from shpb.arrays import FloatArray
+from shpb.arrays import FloatArray, dot
 
 # Common practice: a point counts only while the rate stands above a fifth of its mean.
 END_OF_LOADING = 0.20
@@ -53,7 +53,7 @@ def rate_summary(rate_per_s: FloatArray, true_rate_per_s: FloatArray, span: tupl
     rate = rate_per_s[span[0] : span[1]]
     mean = float(rate.mean())
     offset = np.linspace(-0.5, 0.5, rate.size)
-    trend = float(offset @ rate / (offset @ offset)) if rate.size > 1 else 0.0
+    trend = dot(offset, rate) / dot(offset, offset) if rate.size > 1 else 0.0
     scale = abs(mean) if mean else 1.0
     return RateSummary(
         mean_per_s=mean,
