@@ -28,7 +28,7 @@ def run(options: argparse.Namespace) -> int:
     """Write the campaign, then reduce it as ``shpb reduce`` would."""
     import sys
 
-    from shpb.cli.batch import Task, gather
+    from shpb.cli.batch import Task, gather, usual_workers
     from shpb.cli.reduce import Outputs, reduce_all
     from shpb.cli.status import DONE, REJECTED
     from shpb.demo.campaign import write_demo
@@ -38,9 +38,10 @@ def run(options: argparse.Namespace) -> int:
     print(f"demo campaign written to {printable(campaign.folder)}", file=sys.stderr)
     if options.write_only:
         return DONE
-    tasks: list[Task] = gather(campaign.to_reduce, rig_file=None)
+    sheets = [shot.sheet for shot in campaign.shots if shot.sheet is not None]
+    tasks: list[Task] = gather([*sheets, campaign.shot_list], rig_file=None)
     status = reduce_all(
-        tasks, Outputs(folder=campaign.folder / "results", figure="png"), as_json=options.json, full=False
+        tasks, Outputs(folder=campaign.folder / "results", figure="png"), as_json=options.json, full=False, workers=usual_workers()
     )
     # Rejected shots are part of the demo: it is done when all is as planned.
     return DONE if status == REJECTED else status

@@ -22,6 +22,7 @@ from shpb.pulse.front import moving_mean
 
 LOWER, UPPER = 0.10, 0.60  # shares of the first rise between which the line is fitted
 _SHOULDER = 0.25  # the first rise ends where its slope falls below this share of its steepest
+_LIFT = 0.10  # share of the peak that the first front lifts the trace by, at least
 _LEAST_SIGNAL_TO_NOISE = 5.0
 _LEAST_POINTS = 4
 
@@ -67,7 +68,7 @@ def pick_foot(
     width = max(int(round(smoothing_s / interval_s)) | 1, 3)
     if strain.size < 4 * width:
         return None
-    for _ in range(4):
+    for _ in range(6):
         smooth = moving_mean(moving_mean(strain, width), width)
         if sign is None:
             sign = 1 if smooth[np.argmax(np.abs(smooth))] > 0 else -1
@@ -98,16 +99,22 @@ def _first_rise(smooth: FloatArray, noise: float, width: int) -> _Rise | None:
     # Slope noise of a twice running mean: second difference over the width of white noise.
     if np.sqrt(2.0) * noise / width**1.5 > 0.12 * greatest:
         return None
-    # The first front, not a steeper one after it: the first run of slopes above half the greatest
-    # that also lifts the trace clear of zero.
-    steep = np.flatnonzero((slope >= 0.5 * greatest) & (smooth[: slope.size] > 0.05 * peak))
-    first = int(steep[0])
-    after = slope[first:]
-    local_end = int(np.argmax(after < 0.5 * greatest)) if (after < 0.5 * greatest).any() else after.size
-    steepest = first + int(np.argmax(after[: max(local_end, 1)]))
+    steepest = _steepest_of_first_front(smooth, slope, greatest, peak)
     gentle = np.flatnonzero(slope[steepest:] < _SHOULDER * slope[steepest])
     shoulder = steepest + int(gentle[0]) if gentle.size else slope.size - 1
     return _Rise(steepest, float(smooth[shoulder]))
+
+
+def _steepest_of_first_front(smooth: FloatArray, slope: FloatArray, greatest: float, peak: float) -> int:
+    """Steepest sample of the first front: the first steep run that lifts the trace by a good part of its peak.
+
+    A steeper step may follow (a shaped pulse, a staircase); noise makes short steep runs that lift nothing.
+    """
+    edges = np.flatnonzero(np.diff(np.concatenate(([0], (slope >= 0.4 * greatest).astype(np.int8), [0]))))
+    for start, stop in zip(edges[::2], edges[1::2], strict=True):
+        if smooth[min(stop, smooth.size - 1)] - smooth[start] >= _LIFT * peak:
+            return int(start + np.argmax(slope[start:stop]))
+    return int(np.argmax(slope))
 
 
 def _tangent_foot(

@@ -34,7 +34,7 @@ def _rebuild(what: str, where: str, mend: str, check: str) -> UnusableShotError:
 class Front(NamedTuple):
     """Where a trace first leaves its zero for good."""
 
-    index: int  # first sample beyond a tenth of the peak
+    index: int  # first sample beyond a tenth of the peak, and clear of the noise
     sign: int  # +1 or -1
     peak: float  # largest magnitude of the smoothed trace
     noise: float  # standard deviation of one sample, from the trace's differences
@@ -90,5 +90,7 @@ def first_front(strain: FloatArray, sample_interval_s: float, smoothing_s: float
     noise = white_noise(strain[: max(strain.size // 50, 64)])
     if peak <= _SIGNAL_TO_NOISE * noise / np.sqrt(width) or peak == 0.0:
         return None
-    index = int(np.argmax(magnitude > _SHARE_OF_PEAK * peak))
+    # In a noisy trace a tenth of the peak is no more than noise: six standard deviations are.
+    threshold = max(_SHARE_OF_PEAK * peak, 6.0 * noise / np.sqrt(width))
+    index = int(np.argmax(magnitude > threshold))
     return Front(index, 1 if smooth[index] > 0 else -1, peak, noise)

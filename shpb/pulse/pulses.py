@@ -9,7 +9,7 @@ import numpy as np
 from shpb.arrays import FloatArray, frozen
 from shpb.pulse.arrivals import Arrivals, geometric_arrivals
 from shpb.pulse.foot import Foot, pick_foot
-from shpb.pulse.front import Front, UnusableShotError, first_front, moving_mean, white_noise
+from shpb.pulse.front import Front, UnusableShotError, first_front
 from shpb.pulse.strain import GaugeStrain, StationStrain
 from shpb.pulse.zero_line import QuietWindow, ZeroLine, quiet_before_front, quiet_gap, zero_line
 from shpb.rig.bar import Bar
@@ -19,7 +19,7 @@ from shpb.settings import Settings, Span
 
 # A dispersed front begins a few a/c0 before its tangent foot: this much room is left before each foot.
 _LEAD_RADII = 5.0
-_SMOOTHING_RADII = 0.5  # running mean of the pickers, in a/c0
+_SMOOTHING_RADII = 0.2  # running mean of the pickers, in a/c0
 _TAPER_RADII = 4.0  # soft end of a window, in a/c0
 
 
@@ -47,6 +47,8 @@ class Pulse:
         The line that was removed.
     noise : float
         Standard deviation of one sample of strain.
+    level_at_start : float
+        Level where the window begins, share of the pulse's peak: not zero if the pulse came sooner.
     """
 
     name: str
@@ -58,6 +60,7 @@ class Pulse:
     automatic_foot: Foot | None
     zero: ZeroLine
     noise: float
+    level_at_start: float = 0.0
 
     @property
     def set_by_hand(self) -> bool:
@@ -332,6 +335,8 @@ class _Cutter:
         foot = picked
         if by_hand is not None:
             foot = Foot(by_hand, interval, picked.sign if picked else 1, picked.rise_s if picked else 0.0)
+        begin = values[: max(int(_SMOOTHING_RADII * 5 * _radius_time(bar) / interval), 4)]
+        level = float(begin.mean()) / max(float(np.abs(values).max()), 1e-12)
         values *= _taper(values.size, int(_TAPER_RADII * _radius_time(bar) / interval))
         return Pulse(
             name=name,
@@ -343,6 +348,7 @@ class _Cutter:
             automatic_foot=picked,
             zero=zero,
             noise=noise,
+            level_at_start=level,
         )
 
 
@@ -354,6 +360,3 @@ def _taper(samples: int, length: int) -> FloatArray:
     taper[:length] = ramp
     taper[samples - length :] = ramp[::-1]
     return taper
-
-
-__all__ = ["Pulse", "Pulses", "find_pulses", "moving_mean", "white_noise"]

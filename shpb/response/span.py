@@ -10,11 +10,13 @@ from shpb.arrays import FloatArray, dot
 
 # Common practice: a point counts only while the rate stands above a fifth of its mean.
 END_OF_LOADING = 0.20
+# The rate counts as steady until it finally falls below this share of its median.
+_STEADY = 0.80
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class RateSummary:
-    """Strain rate [1/s] over the steady part of a span: up to where it last stands above half its median.
+    """Strain rate [1/s] over the steady part of a span: up to where it last stands above 0.8 of its median.
 
     ``variation`` and ``slope`` are relative to the mean. The fall at the end of the pulse is left out, because
     it says nothing about how constant the rate was.
@@ -48,7 +50,7 @@ def loading_span(rate_per_s: FloatArray, time_s: FloatArray) -> tuple[int, int]:
 
 def rate_summary(rate_per_s: FloatArray, true_rate_per_s: FloatArray, span: tuple[int, int]) -> RateSummary:
     """Summarise the rate over samples ``span[0]`` to ``span[1]``."""
-    steady = np.flatnonzero(rate_per_s[span[0] : span[1]] > 0.5 * np.median(rate_per_s[span[0] : span[1]]))
+    steady = np.flatnonzero(rate_per_s[span[0] : span[1]] > _STEADY * np.median(rate_per_s[span[0] : span[1]]))
     span = (span[0], span[0] + int(steady[-1]) + 1) if steady.size else span
     rate = rate_per_s[span[0] : span[1]]
     mean = float(rate.mean())

@@ -132,11 +132,16 @@ def test_overlap() -> None:
 def test_feet_tell_a_wrong_distance(faces: FaceStrains) -> None:
     lab = rig()
     record = record_of(faces, lab, noise_v=0.002)
-    # 3 cm at 5000 m/s are 6 us at the transmitted gauge, 4 cm are 16 us to and fro at the incident one.
-    wrong = rig(transmitted_gauge=gauge("B", 0.63))
-    assert finding(reduce(record, wrong, good_sheet()), "feet").weight is Weight.NOTE
-    worse = rig(incident_gauge=gauge("A", 1.04))
-    assert finding(reduce(record, worse, good_sheet()), "feet").weight is Weight.REJECT
+    # 6 cm at 5000 m/s are 12 us at the transmitted gauge; the limit is 3 us and a quarter of a rise of 20 us.
+    wrong = rig(transmitted_gauge=gauge("B", 0.66))
+    said = finding(reduce(record, wrong, good_sheet()), "feet")
+    assert said.weight is Weight.NOTE
+    assert "transmitted foot" in said.measured
+    right = finding(reduce(record, lab, good_sheet()), "feet")
+    assert right.weight is Weight.FINE
+    # 15 cm: the pulse is there 30 us before anything is expected, and runs when its window begins.
+    worse = rig(transmitted_gauge=gauge("B", 0.75))
+    assert finding(reduce(record, worse, good_sheet()), "window start").weight is Weight.REJECT
 
 
 def test_incident_pulse_against_striker(faces: FaceStrains) -> None:
