@@ -1,0 +1,163 @@
+"""What really happened in the demo shots, on each record's own clock. For tests; never written for users."""
+
+from __future__ import annotations
+
+import math
+from collections import defaultdict
+from dataclasses import dataclass
+from functools import cache
+
+import numpy as np
+
+from shpb.arrays import FloatArray, frozen
+from shpb.demo.scenario import DemoShot, Expected, demo_shot, demo_shots
+from shpb.forward.onset import tangent_foot_s
+from shpb.forward.shot import ForwardShot, fire
+from shpb.settings import Span
+
+# All records end before this, in the forward model's time.
+_END_S = 0.80e-3
+# Largest strain of a specimen in the campaign is below 1 - _COURANT.
+_COURANT = 0.6
+# The scope triggers when the incident strain first passes this share of its peak.
+_TRIGGER_LEVEL = 0.10
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class DemoTruth:
+    """The truth of one demo shot, loading positive.
+
+    Attributes
+    ----------
+    time_s : float array, shape (samples,)
+        Time of the arrays below, on the record's own clock [s]. The grid is finer than the record's and
+        reaches beyond it on both sides.
+    record_time_of_zero_s : float
+        When the loading front, travelling at c0, reaches the incident face, on the record's clock [s].
+    record_start_s, record_interval_s : float
+        Clock of the record itself [s].
+    incident_strain, transmitted_strain : float array
+        Surface strain at the two gauges without noise and without the faults of bridge or scope [1].
+    force_in_n, force_out_n, velocity_in_m_s, velocity_out_m_s : float array
+        At the two bar faces.
+    eng_strain, eng_strain_rate_per_s, eng_stress_pa, true_strain, true_stress_pa, temperature_k : float array
+        Of the specimen, means over its length.
+    arrivals_s : dict
+        Geometric arrivals at c0 on the record's clock [s]; names in :func:`shpb.forward.shot.arrivals`.
+    feet_s : dict
+        Onset of the pulses at their gauges ("incident", "reflected", "transmitted") on the record's
+        clock [s]: the straight line through the noise-free rise from 10 to 50 % of the height that the
+        pulse reaches within 30 us of its geometric arrival, carried on to zero
+        (:func:`shpb.forward.onset.tangent_foot_s`). The reflected one is left out where it lies
+        on the incident pulse.
+    loading_end_s : float
+        When the first loading of the specimen is over, on the record's clock [s].
+    length_after_m : float
+        Length after the first loading alone, as a momentum trap leaves it [m].
+    """
+
+    shot: DemoShot
+    time_s: FloatArray
+    record_time_of_zero_s: float
+    record_start_s: float
+    record_interval_s: float
+    incident_strain: FloatArray
+    transmitted_strain: FloatArray
+    force_in_n: FloatArray
+    force_out_n: FloatArray
+    velocity_in_m_s: FloatArray
+    velocity_out_m_s: FloatArray
+    eng_strain: FloatArray
+    eng_strain_rate_per_s: FloatArray
+    eng_stress_pa: FloatArray
+    true_strain: FloatArray
+    true_stress_pa: FloatArray
+    temperature_k: FloatArray
+    arrivals_s: dict[str, float]
+    feet_s: dict[str, float]
+    loading_end_s: float
+    length_after_m: float
+
+
+def demo_truth(shot_id: str) -> DemoTruth:
+    """Return the truth of one demo shot.
+
+    The first call runs the forward model for the whole campaign (about a second).
+
+    Raises
+    ------
+    InputError
+        If there is no such shot.
+    """
+    return campaign_truth()[demo_shot(shot_id).shot_id]
+
+
+@cache
+def campaign_truth() -> dict[str, DemoTruth]:
+    """Return the truth of every demo shot by its id."""
+    groups: dict[int, list[DemoShot]] = defaultdict(list)
+    for shot in demo_shots():
+        groups[shot.elements].append(shot)
+    found = {}
+    for elements, shots in groups.items():
+        fired = fire([shot.plan for shot in shots], _END_S, elements=elements, courant=_COURANT)
+        found.update({shot.shot_id: _truth(shot, one) for shot, one in zip(shots, fired, strict=True)})
+    return {shot.shot_id: found[shot.shot_id] for shot in demo_shots()}
+
+
+def _truth(shot: DemoShot, fired: ForwardShot) -> DemoTruth:
+    trigger = _trigger_s(fired, shot.interval_us * 1e-6)
+    pretrigger = shot.pretrigger_us * 1e-6
+    # Record's clock less the forward model's.
+    shift = (pretrigger if shot.clock_starts_at_zero else 0.0) - trigger
+    arrivals = {name: at + shift for name, at in fired.arrivals_s.items()}
+    return DemoTruth(
+        shot=shot,
+        time_s=frozen(fired.time_s + shift),
+        record_time_of_zero_s=shift,
+        record_start_s=0.0 if shot.clock_starts_at_zero else -pretrigger,
+        record_interval_s=shot.interval_us * 1e-6,
+        incident_strain=fired.incident_strain,
+        transmitted_strain=fired.transmitted_strain,
+        force_in_n=fired.force_in_n,
+        force_out_n=fired.force_out_n,
+        velocity_in_m_s=fired.velocity_in_m_s,
+        velocity_out_m_s=fired.velocity_out_m_s,
+        eng_strain=fired.eng_strain,
+        eng_strain_rate_per_s=fired.eng_strain_rate_per_s,
+        eng_stress_pa=fired.eng_stress_pa,
+        true_strain=fired.true_strain,
+        true_stress_pa=fired.true_stress_pa,
+        temperature_k=fired.temperature_k,
+        arrivals_s=arrivals,
+        feet_s={name: foot + shift for name, foot in _feet(shot, fired).items()},
+        loading_end_s=fired.loading_end_s + shift,
+        length_after_m=fired.length_after_m,
+    )
+
+
+def _trigger_s(fired: ForwardShot, interval_s: float) -> float:
+    """When the scope triggers: the crossing of its level, as late as the next sample of a free clock."""
+    level = _TRIGGER_LEVEL * fired.incident_strain.max()
+    crossing = float(fired.time_s[int(np.argmax(fired.incident_strain >= level))])
+    return math.ceil(crossing / interval_s) * interval_s
+
+
+def _feet(shot: DemoShot, fired: ForwardShot) -> dict[str, float]:
+    strains = {
+        "incident": fired.incident_strain,
+        "reflected": fired.incident_strain,
+        "transmitted": fired.transmitted_strain,
+    }
+    feet = {}
+    for name, strain in strains.items():
+        if name == "reflected" and shot.expected is Expected.OVERLAPPING:
+            continue
+        feet[name] = tangent_foot_s(fired.time_s, strain, _span(fired, name))
+    return feet
+
+
+def _span(fired: ForwardShot, name: str) -> Span:
+    """From before the front to the end of the pulse's first rise, before a specimen's hardening."""
+    start = fired.arrivals_s[name]
+    return start - 25e-6, start + 30e-6
