@@ -14,8 +14,8 @@ Left out: radial inertia, friction, heat flow into the bars, indentation of the 
 and yielding in tension.
 
 With the time step equal to one element's elastic transit, the scheme carries elastic waves exactly.
-Sources: R. D. Richtmyer, K. W. Morton, Difference Methods for Initial-Value Problems, 2nd ed. (1967); for
-the return to the flow stress, J. C. Simo, T. J. R. Hughes, Computational Inelasticity (1998), chapter 1.
+Sources: R. D. Richtmyer, K. W. Morton, Difference Methods for Initial-Value Problems, 2nd ed. (1967, from memory); for
+the return to the flow stress, J. C. Simo, T. J. R. Hughes, Computational Inelasticity (1998), chapter 1 (from memory).
 """
 
 from __future__ import annotations

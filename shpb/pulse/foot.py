@@ -20,7 +20,7 @@ import numpy as np
 from shpb.arrays import FloatArray, dot
 from shpb.pulse.front import moving_mean
 
-LOWER, UPPER = 0.10, 0.60  # shares of the first rise between which the line is fitted
+LOWER, UPPER = 0.10, 0.6  # shares of the first rise between which the line is fitted
 _SHOULDER = 0.25  # the first rise ends where its slope falls below this share of its steepest
 _LIFT = 0.10  # share of the peak that the first front lifts the trace by, at least
 _LEAST_SIGNAL_TO_NOISE = 5.0
