@@ -21,6 +21,11 @@ class ShpbError(Exception):
         File, line, key, channel or sample.
     mend : str
         What the user can do about it.
+
+    Examples
+    --------
+    >>> str(ShpbError("the bar is 20 m wide", where="rig.toml", mend="Write diameter_mm = 20"))
+    'rig.toml: the bar is 20 m wide. Write diameter_mm = 20'
     """
 
     def __init__(self, what: str, *, where: str = "", mend: str = "") -> None:
@@ -43,7 +48,17 @@ def _rebuild(kind: type[ShpbError], what: str, where: str, mend: str) -> ShpbErr
 
 
 class InputError(ShpbError):
-    """A file, a key, a record or an argument cannot be used as it stands."""
+    """A file, a key, a record or an argument cannot be used as it stands.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> try:
+    ...     shpb.read_rig("no-such-rig.toml")
+    ... except shpb.InputError as error:
+    ...     print(error.where)
+    no-such-rig.toml
+    """
 
 
 class IncompleteRecordError(InputError):

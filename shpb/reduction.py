@@ -19,7 +19,16 @@ from shpb.wave.faces import FacePulses, carry_to_faces
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
 class ShotResult:
-    """One reduced shot: what went in, every stage on the way, and what can be said of it."""
+    """One reduced shot: what went in, every stage on the way, and what can be said of it.
+
+    Examples
+    --------
+    >>> result.verdict.value, result.response.equilibrium.outcome.value
+    ('accept', 'reached')
+    >>> stress = result.response.curve.true_stress_pa  # on result.response.time_s
+    >>> [finding.check for finding in result.findings if finding.weight.value == "reject"]
+    []
+    """
 
     record: Record
     rig: Rig
@@ -57,6 +66,15 @@ def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings = DEFA
         If the record cannot be reduced at all; the message says why and what to do.
     InputError
         If record, rig and sheet do not fit together.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> sheet = shpb.read_sheet(folder / "records" / "W-02.toml")
+    >>> rig = shpb.read_rig(sheet.rig_file)
+    >>> result = shpb.reduce(shpb.read_record(sheet.record_files), rig, sheet)
+    >>> print(result.verdict.value, round(result.response.rate.mean_per_s, -2), "1/s")
+    accept 1500.0 1/s
     """
     strain = gauge_strain(record, rig, sheet.kind)
     pulses = find_pulses(strain, rig, sheet.specimen, settings)

@@ -39,6 +39,13 @@ class Settings:
     """Choices of the reduction; the defaults serve a metal specimen on metal bars.
 
     Times of windows and feet are on the record's own clock [s]; None leaves them to the program.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> settings = shpb.Settings(cutoff_hz=100e3)
+    >>> settings.replaced(alignment=Alignment.FEET).cutoff_hz
+    100000.0
     """
 
     dispersion: Dispersion = Dispersion.PHASE

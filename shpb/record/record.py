@@ -38,6 +38,15 @@ class Record:
         The files, with their hashes.
     remarks : tuple of str
         What the reader noticed and the user should know, in plain words.
+
+    Examples
+    --------
+    >>> import numpy as np, shpb
+    >>> record = shpb.Record(
+    ...     voltage_v=np.zeros((2, 5)), sample_interval_s=2e-7, channels=("incident", "transmitted")
+    ... )
+    >>> record.samples, record.channel("incident").size
+    (5, 5)
     """
 
     voltage_v: FloatArray
@@ -70,7 +79,8 @@ class Record:
     @property
     def time_s(self) -> FloatArray:
         """Time of every sample on the record's own clock [s], shape (samples,). A new array."""
-        return self.start_s + self.sample_interval_s * np.arange(self.samples)
+        time_s: FloatArray = self.start_s + self.sample_interval_s * np.arange(self.samples, dtype=np.float64)
+        return time_s
 
     def channel(self, which: str | int) -> FloatArray:
         """Return one channel's voltage by name or by position (1 is the first).
@@ -80,10 +90,13 @@ class Record:
         InputError
             If there is no such channel; the message lists those that there are.
         """
+        row: FloatArray
         if isinstance(which, int) and 1 <= which <= len(self.channels):
-            return self.voltage_v[which - 1]
+            row = self.voltage_v[which - 1]
+            return row
         if isinstance(which, str) and which in self.channels:
-            return self.voltage_v[self.channels.index(which)]
+            row = self.voltage_v[self.channels.index(which)]
+            return row
         listed = ", ".join(f"{i} {name!r}" for i, name in enumerate(self.channels, 1))
         raise InputError(
             f"there is no channel {which!r}; the record has {listed}",

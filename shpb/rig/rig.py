@@ -27,7 +27,17 @@ class RecordHints:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Rig:
-    """Everything that stands in the lab and does not change from shot to shot."""
+    """Everything that stands in the lab and does not change from shot to shot.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> rig = shpb.read_rig(folder / "calibration" / "bench_1.toml")
+    >>> round(rig.incident_bar.wave_speed_m_s)
+    4870
+    >>> rig.incident_bar.diameter_m.u  # standard uncertainty [m]
+    5e-06
+    """
 
     name: str
     incident_bar: Bar

@@ -40,6 +40,13 @@ def read_rig(path: str | Path) -> Rig:
         With all mistakes of the file at once.
     InputError
         If the file cannot be read or is no TOML.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> rig = shpb.read_rig(folder / "calibration" / "bench_1.toml")
+    >>> rig.incident_bar.material
+    'hardened steel'
     """
     path = Path(path)
     return rig_from_text(read_text(path, "rig file"), str(path))

@@ -60,7 +60,15 @@ class Specimen:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class ShotSheet:
-    """One shot as the operator wrote it down."""
+    """One shot as the operator wrote it down.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> sheet = shpb.read_sheet(folder / "records" / "W-02.toml")
+    >>> sheet.kind.value, round(1e3 * sheet.specimen.length_m, 2)
+    ('compression', 4.5)
+    """
 
     shot_id: str
     kind: TestKind

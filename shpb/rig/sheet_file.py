@@ -39,6 +39,12 @@ def read_sheet(path: str | Path) -> ShotSheet:
         With all mistakes of the file at once.
     InputError
         If the file cannot be read or is no TOML.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> shpb.read_sheet(folder / "records" / "W-02.toml").shot_id
+    'W-02'
     """
     path = Path(path)
     return sheet_from_text(read_text(path, "shot sheet"), str(path), path.parent)

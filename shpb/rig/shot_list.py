@@ -42,6 +42,12 @@ def read_shot_list(path: str | Path) -> tuple[ShotSheet, ...]:
         With all mistakes of all rows at once, each with line and column.
     InputError
         If the file cannot be read or has no rows.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> [sheet.shot_id for sheet in shpb.read_shot_list(folder / "shot_list.csv")][:2]
+    ['H-01', 'H-02']
     """
     path = Path(path)
     return shot_list_from_text(read_text(path, "shot list", latin_1=True), str(path), path.parent)

@@ -50,6 +50,13 @@ def export_csv(result: ShotResult, path: Path | str) -> Path:
     ------
     StoreError
         If the file cannot be written.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> path = shpb.export_csv(result, folder / "W-02.csv")
+    >>> path.read_text().splitlines()[0].split(",")[:4]
+    ['time_us', 'counts', 'true_strain', 'true_stress_MPa']
     """
     target = Path(path)
     response = result.response

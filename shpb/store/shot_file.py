@@ -90,6 +90,13 @@ def save_shot(result: ShotResult, path: Path | str, *, replace_other: bool = Fal
     ------
     StoreError
         If another shot or a foreign file stands there, or the disk refuses.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> path = shpb.save_shot(result, folder / "W-02.h5")
+    >>> path.name
+    'W-02.h5'
     """
     import h5py
 
@@ -235,6 +242,16 @@ def load(path: Path | str) -> StoredShot:
     ------
     StoreError
         If it is no shot file, is damaged, or was written by a later version of the format.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> stored = shpb.load(shpb.save_shot(result, folder / "W-02.h5"))
+    >>> stored.verdict, stored["response/stress_3w"].size == stored["response/time"].size
+    ('accept', True)
+    >>> stored.units["response/stress_3w"]
+    'Pa'
+    >>> again = stored.reduce_again()  # the same arrays, bit for bit
     """
     import h5py
 

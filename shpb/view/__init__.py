@@ -1,0 +1,1 @@
+"""Results as people read them: terminal text, a summary for machines, the one-page figure."""
