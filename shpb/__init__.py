@@ -15,7 +15,7 @@ from __future__ import annotations
 import importlib
 from typing import TYPE_CHECKING
 
-from shpb.version import VERSION as __version__
+from shpb.version import VERSION
 
 if TYPE_CHECKING:
     from shpb.errors import InputError, ShpbError
@@ -32,6 +32,8 @@ if TYPE_CHECKING:
     from shpb.store.curves_csv import export_csv
     from shpb.store.shot_file import load, save_shot
     from shpb.view.figure import save_figure
+
+__version__ = VERSION
 
 _HOME = {
     "InputError": "shpb.errors",

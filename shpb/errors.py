@@ -84,7 +84,7 @@ class Mistake:
         return f"{text}. {self.mend}" if self.mend else text
 
 
-class FileMistakes(InputError):
+class FileMistakes(InputError):  # noqa: N818 - it names what it holds
     """All mistakes found in one reading of a file, together."""
 
     def __init__(self, mistakes: Iterable[Mistake]) -> None:

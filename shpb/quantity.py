@@ -33,6 +33,7 @@ class Quantity(float):
     origin: str
 
     def __new__(cls, value: float, u: float | None = None, origin: str = "") -> Self:
+        """Keep the float, and beside it ``u`` and ``origin``."""
         self = super().__new__(cls, value)
         self.u = None if u is None else float(u)
         self.origin = origin

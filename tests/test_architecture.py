@@ -113,7 +113,9 @@ def test_reading_rig_and_sheet_loads_no_numpy() -> None:
 
 def test_reduce_without_a_figure_loads_only_what_it_needs(tmp_path: Path) -> None:
     subprocess.run(
-        [sys.executable, "-m", "shpb", "demo", str(tmp_path / "d"), "--write-only"], check=True, capture_output=True
+        [sys.executable, "-m", "shpb", "demo", str(tmp_path / "d"), "--write-only"],
+        check=True,
+        capture_output=True,
     )
     sheet = tmp_path / "d" / "records" / "W-02.toml"
     code = f"from shpb.cli.main import main\nmain(['reduce', {str(sheet)!r}, '--figure', 'none'])"

@@ -58,7 +58,9 @@ def gather(sources: Sequence[Path], rig_file: Path | None) -> list[Task]:
     if errors:
         raise _together(errors)
     if not tasks:
-        raise InputError("there is no shot to reduce", where=", ".join(map(str, sources)), mend="Name a shot sheet")
+        raise InputError(
+            "there is no shot to reduce", where=", ".join(map(str, sources)), mend="Name a shot sheet"
+        )
     return tasks
 
 
@@ -86,7 +88,9 @@ def _rig_of(sheet: ShotSheet, source: Path, rig_file: Path | None, rigs: dict[Pa
     path = sheet.rig_file or rig_file
     if path is None:
         raise InputError(
-            f"shot {sheet.shot_id} names no rig file", where=str(source), mend="Add rig = \"...\" or give --rig FILE"
+            f"shot {sheet.shot_id} names no rig file",
+            where=str(source),
+            mend='Add rig = "..." or give --rig FILE',
         )
     if path not in rigs:
         rigs[path] = read_rig(path)

@@ -8,9 +8,10 @@ from pathlib import Path
 NAME = "demo"
 HELP = "write a demo campaign of an invented lab and reduce it"
 DESCRIPTION = """\
-Write a complete working folder of an invented lab (rig files, records in several formats, shot
-sheets, a shot list, quasi-static curves) and reduce every shot. Good shots and bad: out of
-equilibrium, clipped, overlapping, swapped channels, a loose gauge, a bar that yields."""
+Write a complete working folder of an invented lab (rig files, records in
+several formats, shot sheets, a shot list, quasi-static curves) and reduce
+every shot. Good shots and bad: out of equilibrium, clipped, overlapping,
+swapped channels, a loose gauge, a bar that yields."""
 EXAMPLE = """\
 example:
   shpb demo first-campaign
@@ -41,7 +42,11 @@ def run(options: argparse.Namespace) -> int:
     sheets = [shot.sheet for shot in campaign.shots if shot.sheet is not None]
     tasks: list[Task] = gather([*sheets, campaign.shot_list], rig_file=None)
     status = reduce_all(
-        tasks, Outputs(folder=campaign.folder / "results", figure="png"), as_json=options.json, full=False, workers=usual_workers()
+        tasks,
+        Outputs(folder=campaign.folder / "results", figure="png"),
+        as_json=options.json,
+        full=False,
+        workers=usual_workers(),
     )
     # Rejected shots are part of the demo: it is done when all is as planned.
     return DONE if status == REJECTED else status

@@ -8,8 +8,8 @@ from pathlib import Path
 NAME = "forms"
 HELP = "write a rig file, a shot sheet and a shot list to fill in"
 DESCRIPTION = """\
-Write a commented rig file, shot sheet and shot list into a folder: every key with its
-unit, its meaning, an example value, and whether it may be left out."""
+Write a commented rig file, shot sheet and shot list into a folder: every key
+with its unit, its meaning, an example value, and whether it may be left out."""
 EXAMPLE = """\
 example:
   shpb forms my-lab

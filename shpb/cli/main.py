@@ -30,8 +30,8 @@ def parser() -> argparse.ArgumentParser:
     """Return the parser of the whole command line."""
     top = argparse.ArgumentParser(
         prog="shpb",
-        description="Reduce split Hopkinson pressure bar shots: from voltage records to stress, strain, "
-        "strain rate, a force-equilibrium check and a verdict.",
+        description="Reduce split Hopkinson pressure bar shots: from voltage records to stress,\n"
+        "strain, strain rate, a force-equilibrium check and a verdict.",
         epilog=_EPILOG,
         formatter_class=argparse.RawDescriptionHelpFormatter,
     )

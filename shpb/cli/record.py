@@ -8,9 +8,10 @@ from pathlib import Path
 NAME = "record"
 HELP = "say what a record file holds: channels, interval, remarks"
 DESCRIPTION = """\
-Read a record (delimited text, NPZ, NPY, HDF5, MATLAB or TDMS; one file, or one file a channel)
-and say what it holds: channels and their extremes, sample interval, trigger offset, and what
-the reader noticed. Give --rig where the file leaves something unsaid."""
+Read a record (delimited text, NPZ, NPY, HDF5, MATLAB or TDMS; one file, or
+one file a channel) and say what it holds: channels and their extremes, sample
+interval, trigger offset, and what the reader noticed. Give --rig where the
+file leaves something unsaid."""
 EXAMPLE = """\
 example:
   shpb record shots/s014.csv

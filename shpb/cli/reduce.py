@@ -18,9 +18,10 @@ if TYPE_CHECKING:
 NAME = "reduce"
 HELP = "reduce shots: verdict, curves, HDF5 file and figure"
 DESCRIPTION = """\
-Reduce shots: voltages to stress, strain and strain rate, with a force-equilibrium check and a
-verdict. Name a shot sheet (.toml), several, a folder of them, or a shot list (.csv). Each shot
-becomes one HDF5 file and one figure in the results folder; nothing else is ever overwritten."""
+Reduce shots: voltages to stress, strain and strain rate, with a check of
+force equilibrium and a verdict. Name a shot sheet (.toml), several, a folder
+of them, or a shot list (.csv). Each shot becomes one HDF5 file and one figure
+in the results folder; the results of another shot are never overwritten."""
 EXAMPLE = """\
 examples:
   shpb reduce shots/s014.toml
@@ -35,21 +36,32 @@ _FIGURES = ("png", "pdf", "svg", "none")
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
     """Declare the arguments."""
-    verb.add_argument("shots", nargs="+", type=Path, metavar="SHOT", help="shot sheet, shot list or folder of sheets")
+    verb.add_argument(
+        "shots", nargs="+", type=Path, metavar="SHOT", help="shot sheet, shot list or folder of sheets"
+    )
     verb.add_argument("--rig", type=Path, metavar="FILE", help="rig file for shots whose sheet names none")
     verb.add_argument(
-        "--results", type=Path, metavar="FOLDER", help="where results go (default: results/ beside the sheet or list)"
+        "--results",
+        type=Path,
+        metavar="FOLDER",
+        help="where results go (default: results/ beside the sheet or list)",
     )
     verb.add_argument("--figure", choices=_FIGURES, default="png", help="kind of figure (default png)")
     verb.add_argument("--csv", action="store_true", help="write the curves as CSV too")
-    verb.add_argument("--full", action="store_true", help="show every check, not only those that say something")
+    verb.add_argument(
+        "--full", action="store_true", help="show every check, not only those that say something"
+    )
     verb.add_argument("--json", action="store_true", help="print JSON for other programs")
-    verb.add_argument("--workers", type=int, metavar="N", help="processes for several shots (default: one a core)")
+    verb.add_argument(
+        "--workers", type=int, metavar="N", help="processes for several shots (default: one a core)"
+    )
     choices = verb.add_argument_group("choices of the reduction (else rig file, shot sheet, defaults)")
     choices.add_argument("--dispersion", metavar="WHICH", help="none, phase or full (phase and amplitude)")
     choices.add_argument("--alignment", metavar="WHICH", help="physical or feet")
     choices.add_argument("--analysis", metavar="WHICH", help="curve put forward: one-wave or three-wave")
-    choices.add_argument("--cutoff-khz", type=float, metavar="KHZ", help="cut-off of the low-pass of all pulses")
+    choices.add_argument(
+        "--cutoff-khz", type=float, metavar="KHZ", help="cut-off of the low-pass of all pulses"
+    )
 
 
 def run(options: argparse.Namespace) -> int:

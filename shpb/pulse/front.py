@@ -34,7 +34,7 @@ def _rebuild(what: str, where: str, mend: str, check: str) -> UnusableShotError:
 class Front(NamedTuple):
     """Where a trace first leaves its zero for good."""
 
-    index: int  # first sample beyond a tenth of the peak, and clear of the noise
+    at: int  # first sample beyond a tenth of the peak, and clear of the noise
     sign: int  # +1 or -1
     peak: float  # largest magnitude of the smoothed trace
     noise: float  # standard deviation of one sample, from the trace's differences
@@ -54,7 +54,9 @@ def moving_mean(values: FloatArray, width: int) -> FloatArray:
     mean[half : values.size - half] /= full
     counts = np.arange(half + 1, full)
     mean[:half] = total[half + 1 : full] / counts
-    mean[values.size - half :] = ((total[-1] - total[values.size - full + 1 : values.size - half]) / counts[::-1])
+    mean[values.size - half :] = (total[-1] - total[values.size - full + 1 : values.size - half]) / counts[
+        ::-1
+    ]
     return mean
 
 

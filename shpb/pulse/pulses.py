@@ -108,7 +108,9 @@ def find_pulses(strain: GaugeStrain, rig: Rig, specimen: Specimen, settings: Set
     before = _quiet_or_refuse(incident_trace, index(arrivals.incident_s - lead_i), interval, "incident")
     peak_i = _peak_above(incident_trace, before, index(arrivals.incident_s), index(split))
     settled = _level(incident_trace, index(split), lead_i / interval)
-    pulse_end = _end_of_pulse(incident_trace, settled, before.noise, peak_i, index(arrivals.incident_s), index(split))
+    pulse_end = _end_of_pulse(
+        incident_trace, settled, before.noise, peak_i, index(arrivals.incident_s), index(split)
+    )
     # A trace that stands at a quarter of the peak is the pulse itself, not a shifted zero.
     gap = None
     if abs(settled - before.level) < 0.25 * peak_i:
@@ -123,21 +125,40 @@ def find_pulses(strain: GaugeStrain, rig: Rig, specimen: Specimen, settings: Set
     zero_t = zero_line(before_t, (), peak_t, interval)
 
     # Against the zero of the gap where there is one: a gauge that came loose shifts zero, but leaves no tail.
-    tail = _level(incident_trace, index(split), lead_i / interval) - float(zero_r.at(index(split), index(split) + 1)[0])
+    tail = _level(incident_trace, index(split), lead_i / interval) - float(
+        zero_r.at(index(split), index(split) + 1)[0]
+    )
 
     cut = _Cutter(strain, settings)
     incident = cut(
-        "incident", strain.incident, zero_i, before.noise,
-        (arrivals.incident_s - 2 * lead_i, split), arrivals.incident_s, rig.incident_bar, sign=1,
+        "incident",
+        strain.incident,
+        zero_i,
+        before.noise,
+        (arrivals.incident_s - 2 * lead_i, split),
+        arrivals.incident_s,
+        rig.incident_bar,
+        sign=1,
     )
     reflected = cut(
-        "reflected", strain.incident, zero_r, before.noise,
-        (split, arrivals.second_loading_s - lead_i), arrivals.reflected_s, rig.incident_bar, sign=None,
+        "reflected",
+        strain.incident,
+        zero_r,
+        before.noise,
+        (split, arrivals.second_loading_s - lead_i),
+        arrivals.reflected_s,
+        rig.incident_bar,
+        sign=None,
     )
     transmitted = cut(
-        "transmitted", strain.transmitted, zero_t, before_t.noise,
+        "transmitted",
+        strain.transmitted,
+        zero_t,
+        before_t.noise,
         (arrivals.transmitted_s - 2 * lead_t, arrivals.end_reflection_s - lead_t),
-        arrivals.transmitted_through_specimen_s, rig.transmitted_bar, sign=None,
+        arrivals.transmitted_through_specimen_s,
+        rig.transmitted_bar,
+        sign=None,
     )
     return Pulses(
         incident=incident,
@@ -169,7 +190,7 @@ def _incident_front(strain: GaugeStrain, rig: Rig, settings: Settings) -> _Incid
     incident = _front_or_refuse(strain.incident, interval, smoothing, "incident")
     transmitted = first_front(strain.transmitted.axial, interval, smoothing)
     _refuse_swapped(strain, incident, transmitted, rig)
-    if incident.index * interval < 2 * _radius_time(rig.incident_bar):
+    if incident.at * interval < 2 * _radius_time(rig.incident_bar):
         raise UnusableShotError(
             "the record begins on the incident pulse: there is no quiet time before it",
             where="incident gauge",
@@ -186,13 +207,13 @@ def _incident_front(strain: GaugeStrain, rig: Rig, settings: Settings) -> _Incid
     if settings.incident_foot_s is not None:
         return _IncidentFront(settings.incident_foot_s)
     lead = int(4 * _LEAD_RADII * _radius_time(rig.incident_bar) / interval)
-    start = max(incident.index - lead, 0)
-    level = float(np.median(strain.incident.axial[start : max(incident.index - lead // 4, start + 8)]))
-    segment = strain.incident.axial[start : incident.index + 6 * lead] - level
+    start = max(incident.at - lead, 0)
+    level = float(np.median(strain.incident.axial[start : max(incident.at - lead // 4, start + 8)]))
+    segment = strain.incident.axial[start : incident.at + 6 * lead] - level
     foot = pick_foot(
         segment, strain.time(start), interval, incident.noise, _SMOOTHING_RADII * smoothing, sign=1
     )
-    return _IncidentFront(strain.time(incident.index) if foot is None else foot.time_s)
+    return _IncidentFront(strain.time(incident.at) if foot is None else foot.time_s)
 
 
 def _front_or_refuse(station: StationStrain, interval: float, smoothing: float, name: str) -> Front:
@@ -215,7 +236,7 @@ def _refuse_swapped(strain: GaugeStrain, incident: Front, transmitted: Front | N
         rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
         + rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s
     )
-    lag = (transmitted.index - incident.index) * interval
+    lag = (transmitted.at - incident.at) * interval
     clear = transmitted.peak > 20 * transmitted.noise
     if clear and lag < -0.5 * expected:
         raise UnusableShotError(
@@ -329,7 +350,12 @@ class _Cutter:
         values = station.axial[start:stop] - zero.at(start, stop)
         near = strain.index(arrival_s + 40 * _radius_time(bar)) - start
         picked = pick_foot(
-            values[: max(near, 16)], strain.time(start), interval, noise, _SMOOTHING_RADII * _radius_time(bar), sign
+            values[: max(near, 16)],
+            strain.time(start),
+            interval,
+            noise,
+            _SMOOTHING_RADII * _radius_time(bar),
+            sign,
         )
         by_hand = getattr(self.settings, f"{name}_foot_s")
         foot = picked

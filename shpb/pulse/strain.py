@@ -93,5 +93,6 @@ def _station(record: Record, gauge: Gauge, bar: Bar, kind: TestKind) -> StationS
 
 def _first_zero(voltage_v: FloatArray) -> float:
     """Level before the shot: median of the first fiftieth of the record. The zero line comes later;
-    the bridge's non-linearity only needs the zero to within a per cent or so of the signal."""
+    the bridge's non-linearity only needs the zero to within a per cent or so of the signal.
+    """
     return float(np.median(voltage_v[: max(voltage_v.size // 50, 16)]))

@@ -40,7 +40,7 @@ class QuietWindow(NamedTuple):
     @property
     def u_level(self) -> float:
         """Standard uncertainty of the level."""
-        return self.noise / np.sqrt(self.samples)
+        return float(self.noise / np.sqrt(self.samples))
 
 
 @dataclass(frozen=True, slots=True)
@@ -56,7 +56,8 @@ class ZeroLine:
 
     def at(self, start: int, stop: int) -> FloatArray:
         """The line at samples ``start`` to ``stop``."""
-        return self.level + self.slope * (np.arange(start, stop) - self.centre)
+        line: FloatArray = self.level + self.slope * (np.arange(float(start), float(stop)) - self.centre)
+        return line
 
 
 def quiet_window(trace: FloatArray, start: int, stop: int) -> QuietWindow | None:
@@ -66,7 +67,7 @@ def quiet_window(trace: FloatArray, start: int, stop: int) -> QuietWindow | None
         return None
     values = trace[start:stop]
     centre = 0.5 * (start + stop - 1)
-    offset = np.arange(start, stop) - centre
+    offset: FloatArray = np.arange(float(start), float(stop)) - centre
     level = float(values.mean())
     slope = dot(offset, values - level) / dot(offset, offset)
     residual = values - level - slope * offset
@@ -111,7 +112,13 @@ def zero_line(
     The slope is the least-squares slope of one line through all windows, shrunk towards zero by
     the prior on drift: slope = S_xy/(S_xx + noise^2/prior^2).
     """
-    windows = [before, *(other for other in others if other is not before)]
+    # A window that only a jump can explain (a gauge come loose) must not tilt the line.
+    steepest = 3 * PLAUSIBLE_DRIFT_PER_S * peak * interval_s
+    windows = [before]
+    for other in others:
+        allowed = steepest * abs(other.centre - before.centre) + 4 * np.hypot(other.u_level, before.u_level)
+        if abs(other.level - before.level) <= allowed:
+            windows.append(other)
     count = sum(w.samples for w in windows)
     centre = sum(w.samples * w.centre for w in windows) / count
     level = sum(w.samples * w.level for w in windows) / count

@@ -47,7 +47,11 @@ class Balance:
 
 
 def work_balance(
-    faces: FacePulses, motion: FaceMotion, curve: Curve, rig: Rig, specimen: Specimen, loading: tuple[int, int],
+    faces: FacePulses,
+    curve: Curve,
+    rig: Rig,
+    specimen: Specimen,
+    loading: tuple[int, int],
     striker_speed_m_s: float | None,
 ) -> Balance:
     """Work and impulse from the pulses; exact for any pulse (momentum and energy identities)."""

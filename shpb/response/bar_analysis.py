@@ -70,9 +70,7 @@ def face_motion(faces: FacePulses, rig: Rig) -> FaceMotion:
     )
 
 
-def one_wave(
-    faces: FacePulses, motion: FaceMotion, rig: Rig, specimen: Specimen, kind: TestKind
-) -> Curve:
+def one_wave(faces: FacePulses, motion: FaceMotion, rig: Rig, specimen: Specimen, kind: TestKind) -> Curve:
     """Back-face stress; rate from the reflected pulse, equilibrium assumed."""
     bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
     velocity = -2 * bar_i.wave_speed_m_s * faces.reflected.velocity_strain
@@ -82,9 +80,7 @@ def one_wave(
     return curve_of(faces, velocity, motion.force_out_n, specimen, kind)
 
 
-def two_wave(
-    faces: FacePulses, motion: FaceMotion, rig: Rig, specimen: Specimen, kind: TestKind
-) -> Curve:
+def two_wave(faces: FacePulses, motion: FaceMotion, rig: Rig, specimen: Specimen, kind: TestKind) -> Curve:
     """Front-face stress; rate from incident and transmitted pulse, equilibrium assumed."""
     bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
     compliance = 1 / bar_i.impedance_n_s_m + 1 / bar_t.impedance_n_s_m
@@ -99,7 +95,11 @@ def three_wave(faces: FacePulses, motion: FaceMotion, specimen: Specimen, kind: 
 
 
 def curve_of(
-    faces: FacePulses, closing_velocity_m_s: FloatArray, force_n: FloatArray, specimen: Specimen, kind: TestKind
+    faces: FacePulses,
+    closing_velocity_m_s: FloatArray,
+    force_n: FloatArray,
+    specimen: Specimen,
+    kind: TestKind,
 ) -> Curve:
     """Engineering and true curve from the closing velocity of the faces and a force.
 

@@ -23,7 +23,7 @@ from enum import StrEnum
 
 import numpy as np
 
-from shpb.arrays import FloatArray, frozen
+from shpb.arrays import BoolArray, FloatArray, frozen
 from shpb.pulse.front import moving_mean
 from shpb.pulse.pulses import Pulses
 from shpb.response.bar_analysis import FaceMotion
@@ -130,7 +130,7 @@ def judge_equilibrium(
     """Find R(t), its floor and the outcome over the loading, samples ``loading[0]`` to ``loading[1]``."""
     first, last = loading
     transit = specimen.transit_time_s
-    width = max(int(round(2 * transit / faces.interval_s)), 1) if transit else 1
+    width = max(round(2 * transit / faces.interval_s), 1) if transit else 1
     difference = motion.force_in_n - motion.force_out_n
     mean_force = 0.5 * (motion.force_in_n + motion.force_out_n)
     smooth_force = moving_mean(mean_force, width)
@@ -169,7 +169,7 @@ def judge_equilibrium(
     )
 
 
-def _first_lasting(within: FloatArray) -> int | None:
+def _first_lasting(within: BoolArray) -> int | None:
     """First sample within the limit from which at least 90 % of the rest is within it."""
     rest = np.arange(within.size, 0, -1)
     share = np.cumsum(within[::-1])[::-1] / rest

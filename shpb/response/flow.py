@@ -25,7 +25,9 @@ class FlowStress:
     rate_per_s: float | None
 
 
-def plastic_strain(true_strain: FloatArray, true_stress_pa: FloatArray, modulus_pa: float | None) -> FloatArray:
+def plastic_strain(
+    true_strain: FloatArray, true_stress_pa: FloatArray, modulus_pa: float | None
+) -> FloatArray:
     """True plastic strain e - s/E with the quasi-static modulus E; total true strain without one."""
     return true_strain if modulus_pa is None else true_strain - true_stress_pa / modulus_pa
 
@@ -41,7 +43,9 @@ def flow_stresses(
     """Flow stress and true rate at each strain, by straight lines between samples inside the span."""
     plastic = modulus_pa is not None
     if span is None:
-        return tuple(FlowStress(at_strain=e, plastic=plastic, stress_pa=None, rate_per_s=None) for e in at_strains)
+        return tuple(
+            FlowStress(at_strain=e, plastic=plastic, stress_pa=None, rate_per_s=None) for e in at_strains
+        )
     part = slice(*span)
     axis = plastic_strain(true_strain[part], true_stress_pa[part], modulus_pa)
     # Strain rises with time while loading lasts; the running maximum irons out noise.
@@ -60,7 +64,10 @@ def flow_stresses(
 
 
 def back_extrapolated_yield_pa(
-    true_strain: FloatArray, true_stress_pa: FloatArray, span: tuple[int, int] | None, modulus_pa: float | None
+    true_strain: FloatArray,
+    true_stress_pa: FloatArray,
+    span: tuple[int, int] | None,
+    modulus_pa: float | None,
 ) -> float | None:
     """Yield stress where a line through 3 to 8 % of true strain meets the quasi-static modulus line.
 

@@ -124,7 +124,7 @@ def specimen_response(
         loading=loading,
         span=span,
         rate=rate_summary(three.strain_rate_per_s, three.true_strain_rate_per_s, span or loading),
-        balance=work_balance(faces, motion, three, rig, specimen, loading, sheet.striker_speed_m_s),
+        balance=work_balance(faces, three, rig, specimen, loading, sheet.striker_speed_m_s),
         indentation_strain=frozen(indentation_strain(motion, three, rig, specimen, kind)),
         flow=flow_stresses(
             curve.true_strain, curve.true_stress_pa, curve.true_strain_rate_per_s, span, modulus,

@@ -50,7 +50,9 @@ def loading_span(rate_per_s: FloatArray, time_s: FloatArray) -> tuple[int, int]:
 
 def rate_summary(rate_per_s: FloatArray, true_rate_per_s: FloatArray, span: tuple[int, int]) -> RateSummary:
     """Summarise the rate over samples ``span[0]`` to ``span[1]``."""
-    steady = np.flatnonzero(rate_per_s[span[0] : span[1]] > _STEADY * np.median(rate_per_s[span[0] : span[1]]))
+    steady = np.flatnonzero(
+        rate_per_s[span[0] : span[1]] > _STEADY * np.median(rate_per_s[span[0] : span[1]])
+    )
     span = (span[0], span[0] + int(steady[-1]) + 1) if steady.size else span
     rate = rate_per_s[span[0] : span[1]]
     mean = float(rate.mean())

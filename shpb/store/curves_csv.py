@@ -14,7 +14,7 @@ from shpb.store.atomic import whole_file
 
 _COLUMNS: tuple[tuple[str, Callable[[ShotResult], FloatArray]], ...] = (
     ("time_us", lambda r: 1e6 * r.response.time_s),
-    ("counts", lambda r: _counts(r)),
+    ("counts", lambda r: _counts(r)),  # noqa: PLW0108 - defined below
     ("true_strain", lambda r: r.response.curve.true_strain),
     ("true_stress_MPa", lambda r: 1e-6 * r.response.curve.true_stress_pa),
     ("true_strain_rate_per_s", lambda r: r.response.curve.true_strain_rate_per_s),

@@ -29,7 +29,10 @@ RESPONSE: tuple[Field, ...] = (
     Field("force_out", "N", "Force on the transmitted face", lambda r: r.response.motion.force_out_n),
     Field("velocity_in", "m/s", "Velocity of the incident face", lambda r: r.response.motion.velocity_in_m_s),
     Field(
-        "velocity_out", "m/s", "Velocity of the transmitted face", lambda r: r.response.motion.velocity_out_m_s
+        "velocity_out",
+        "m/s",
+        "Velocity of the transmitted face",
+        lambda r: r.response.motion.velocity_out_m_s,
     ),
     Field("strain_rate_1w", "1/s", "Strain rate, one-wave", lambda r: r.response.one_wave.strain_rate_per_s),
     Field("strain_1w", "", "Engineering strain, one-wave", lambda r: r.response.one_wave.strain),
@@ -37,7 +40,9 @@ RESPONSE: tuple[Field, ...] = (
     Field("strain_rate_2w", "1/s", "Strain rate, two-wave", lambda r: r.response.two_wave.strain_rate_per_s),
     Field("strain_2w", "", "Engineering strain, two-wave", lambda r: r.response.two_wave.strain),
     Field("stress_2w", "Pa", "Engineering stress, two-wave", lambda r: r.response.two_wave.stress_pa),
-    Field("strain_rate_3w", "1/s", "Strain rate, three-wave", lambda r: r.response.three_wave.strain_rate_per_s),
+    Field(
+        "strain_rate_3w", "1/s", "Strain rate, three-wave", lambda r: r.response.three_wave.strain_rate_per_s
+    ),
     Field("strain_3w", "", "Engineering strain, three-wave", lambda r: r.response.three_wave.strain),
     Field("stress_3w", "Pa", "Engineering stress, three-wave", lambda r: r.response.three_wave.stress_pa),
     Field("true_strain_1w", "", "True strain, one-wave", lambda r: r.response.one_wave.true_strain),
@@ -60,7 +65,9 @@ WAVE: tuple[Field, ...] = (
     Field("time", "s", "Time since the front reached the incident face", lambda r: r.faces.time_s),
     Field("incident", "", "Incident strain at the incident face", lambda r: r.faces.incident.strain),
     Field("reflected", "", "Reflected strain at the incident face", lambda r: r.faces.reflected.strain),
-    Field("transmitted", "", "Transmitted strain at the transmitted face", lambda r: r.faces.transmitted.strain),
+    Field(
+        "transmitted", "", "Transmitted strain at the transmitted face", lambda r: r.faces.transmitted.strain
+    ),
 )
 
 TRUST: tuple[Field, ...] = (
@@ -153,7 +160,11 @@ def spread_of_amplitude(result: ShotResult) -> tuple[Field, ...]:
 def flow_table(result: ShotResult) -> FloatArray:
     """Flow stress at given strains, shape (points, 3): strain, stress [Pa], rate [1/s]; NaN outside the span."""
     rows = [
-        (f.at_strain, np.nan if f.stress_pa is None else f.stress_pa, np.nan if f.rate_per_s is None else f.rate_per_s)
+        (
+            f.at_strain,
+            np.nan if f.stress_pa is None else f.stress_pa,
+            np.nan if f.rate_per_s is None else f.rate_per_s,
+        )
         for f in result.response.flow
     ]
     return np.array(rows, dtype=float).reshape(-1, 3)

@@ -63,7 +63,9 @@ class StoredShot:
             return self.arrays[path]
         except KeyError:
             raise StoreError(
-                f"there is no {path!r}", where=str(self.path), mend=f"There are {', '.join(sorted(self.arrays))}"
+                f"there is no {path!r}",
+                where=str(self.path),
+                mend=f"There are {', '.join(sorted(self.arrays))}",
             ) from None
 
     def reduce_again(self, settings: Settings | None = None) -> ShotResult:
@@ -146,7 +148,9 @@ def _write(file: h5py.File, result: ShotResult) -> None:
     _write_record(file, result.record)
     _write_inputs(file, result)
     _write_pulses(file, result)
-    wave = _write_fields(file, "wave", (*layout.WAVE, *layout.spread_of_amplitude(result)), result, "incident")
+    wave = _write_fields(
+        file, "wave", (*layout.WAVE, *layout.spread_of_amplitude(result)), result, "incident"
+    )
     _write_attributes(wave, layout.WAVE_ATTRIBUTES, result)
     response = _write_fields(file, "response", layout.RESPONSE, result, "true_stress", axis="true_strain")
     _write_attributes(response, layout.RESPONSE_ATTRIBUTES, result)
@@ -210,7 +214,12 @@ def _write_pulses(file: h5py.File, result: ShotResult) -> None:
 
 
 def _write_fields(
-    file: h5py.File, name: str, fields: Iterable[layout.Field], result: ShotResult, signal: str, axis: str = "time"
+    file: h5py.File,
+    name: str,
+    fields: Iterable[layout.Field],
+    result: ShotResult,
+    signal: str,
+    axis: str = "time",
 ) -> h5py.Group:
     group = file.create_group(name)
     for entry in fields:
@@ -273,7 +282,9 @@ def load(path: Path | str) -> StoredShot:
 def _require_readable(file: h5py.File, path: Path) -> None:
     if file.attrs.get("format") != layout.FORMAT:
         raise StoreError(
-            "is an HDF5 file, but not a shot of this program", where=str(path), mend="Give a file that `shpb reduce` wrote"
+            "is an HDF5 file, but not a shot of this program",
+            where=str(path),
+            mend="Give a file that `shpb reduce` wrote",
         )
     version = int(file.attrs["format_version"])
     if version > layout.FORMAT_VERSION:
@@ -331,4 +342,7 @@ def _text(dataset: h5py.Dataset) -> str:
 
 
 def _plain_attributes(item: h5py.Group) -> dict[str, Any]:
-    return {name: value.tolist() if isinstance(value, np.ndarray | np.generic) else value for name, value in item.attrs.items()}
+    return {
+        name: value.tolist() if isinstance(value, np.ndarray | np.generic) else value
+        for name, value in item.attrs.items()
+    }

@@ -71,6 +71,12 @@ def save_figure(result: ShotResult, path: Path) -> Path:
         If the suffix is none of the three.
     StoreError
         If the file cannot be written.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> shpb.save_figure(result, folder / "W-02.svg").name
+    'W-02.svg'
     """
     path = Path(path)
     file_format = _SUFFIXES.get(path.suffix.lower())

@@ -6,8 +6,9 @@ from collections import Counter
 from collections.abc import Iterable
 from dataclasses import dataclass
 
+from shpb.pulse.front import UnusableShotError
 from shpb.reduction import ShotResult
-from shpb.trust.finding import Weight
+from shpb.trust.finding import Verdict, Weight
 from shpb.view.text import padded, printable, rounded, wrapped
 from shpb.view.wording import strain_text, telling
 
@@ -57,8 +58,9 @@ def list_row(result: ShotResult) -> ListRow:
 
 
 def list_row_of_error(shot_id: str, error: Exception) -> ListRow:
-    """The line of a shot that could not be reduced."""
-    return ListRow(shot_id=shot_id, verdict=FAILED, reasons=str(getattr(error, "what", "") or error))
+    """The line of a shot that could not be reduced: rejected where its record is at fault, else failed."""
+    verdict = Verdict.REJECT.value if isinstance(error, UnusableShotError) else FAILED
+    return ListRow(shot_id=shot_id, verdict=verdict, reasons=str(getattr(error, "what", "") or error))
 
 
 def list_text(rows: Iterable[ListRow], *, width: int = 80) -> str:

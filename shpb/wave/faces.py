@@ -81,7 +81,7 @@ def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Setti
     low_pass = low_pass_of(rig, settings)
     x_i, x_t = rig.incident_gauge.to_specimen_m, rig.transmitted_gauge.to_specimen_m
     bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
-    grid = _common_grid(pulses, rig, settings)
+    grid = _common_grid(pulses, rig)
 
     def carried(pulse: Pulse, shift_s: float = 0.0) -> CarriedPulse:
         bar, distance = {
@@ -132,7 +132,7 @@ def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Setti
     )
 
 
-def _common_grid(pulses: Pulses, rig: Rig, settings: Settings) -> Grid:
+def _common_grid(pulses: Pulses, rig: Rig) -> Grid:
     """From a little before the front to where the first of the three windows ends, at the faces."""
     travel_i = rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
     travel_t = rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s

@@ -164,7 +164,7 @@ def _psi(x: FloatArray) -> FloatArray:
 
 
 def _psi_slope(x: FloatArray, psi: FloatArray) -> FloatArray:
-    """d psi/dx, from Bessel's equation in Riccati form; its series where x is small."""
+    """D psi/dx, from Bessel's equation in Riccati form; its series where x is small."""
     near = np.abs(x) < 1e-3
     safe = np.where(near, 1.0, x)
     return np.where(near, -0.25 - x / 48, (2 * psi - x - psi**2) / (2 * safe))

@@ -77,7 +77,8 @@ class Grid(NamedTuple):
     @property
     def time_s(self) -> FloatArray:
         """Time of each sample [s]."""
-        return self.start_s + self.interval_s * np.arange(self.samples)
+        time: FloatArray = self.start_s + self.interval_s * np.arange(float(self.samples))
+        return time
 
 
 def residual_phase(frequency_hz: FloatArray, distance_m: float, bar: Bar, mode: FirstMode) -> ComplexArray:
@@ -131,7 +132,7 @@ def carry_pulse(
     whole = int(np.floor(delay))
     length = _padded_length(strain.size, distance_m, bar, low_pass, interval)
     spectrum = np.fft.rfft(strain, length)
-    frequency = np.fft.rfftfreq(length, interval)
+    frequency: FloatArray = np.fft.rfftfreq(length, interval).astype(np.float64, copy=False)
     passed = int(np.searchsorted(frequency, low_pass.stop_hz))
     frequency = frequency[:passed]
 

@@ -83,7 +83,10 @@ def shot(samples: int, interval_s: float, seed: int = 1) -> Record:
     time_s = np.arange(-40e-6, 219e-6, interval_s)
     fine = FaceStrains(
         time_s,
-        *(np.interp(time_s, coarse.time_s, x) for x in (coarse.incident, coarse.reflected, coarse.transmitted)),
+        *(
+            np.interp(time_s, coarse.time_s, x)
+            for x in (coarse.incident, coarse.reflected, coarse.transmitted)
+        ),
     )
     before = 350e-6
     return record_of(
@@ -93,7 +96,14 @@ def shot(samples: int, interval_s: float, seed: int = 1) -> Record:
 
 def write_text(path: Path, record: Record) -> None:
     table = np.column_stack([record.time_s, *record.voltage_v])
-    np.savetxt(path, table, delimiter=",", fmt=["%.9e", "%.6e", "%.6e"], header="time_s,incident_V,transmitted_V", comments="")
+    np.savetxt(
+        path,
+        table,
+        delimiter=",",
+        fmt=["%.9e", "%.6e", "%.6e"],
+        header="time_s,incident_V,transmitted_V",
+        comments="",
+    )
 
 
 def median_of(function: Callable[[], object], runs: int) -> float:
@@ -150,8 +160,21 @@ def _against_script(figure: bool) -> str:
         write_text(folder / "record.csv", shot(100_000, 1e-8))
         (folder / "rig.toml").write_text(RIG)
         (folder / "shot.toml").write_text(SHEET.format(id="b-1", record="record.csv"))
-        script = [sys.executable, str(Path(__file__).with_name("lab_script.py")), str(folder / "record.csv"), str(folder / "o.npz")]
-        ours = [sys.executable, "-m", "shpb", "reduce", str(folder / "shot.toml"), "--figure", "png" if figure else "none"]
+        script = [
+            sys.executable,
+            str(Path(__file__).with_name("lab_script.py")),
+            str(folder / "record.csv"),
+            str(folder / "o.npz"),
+        ]
+        ours = [
+            sys.executable,
+            "-m",
+            "shpb",
+            "reduce",
+            str(folder / "shot.toml"),
+            "--figure",
+            "png" if figure else "none",
+        ]
         if figure:
             script.append(str(folder / "o.png"))
         run(*ours), run(*script)

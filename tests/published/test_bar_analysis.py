@@ -9,8 +9,8 @@ import numpy as np
 import pytest
 
 from shpb.quantity import Quantity
-from shpb.response.bar_analysis import face_motion, integrated, one_wave, three_wave, two_wave
 from shpb.response.balance import face_indentation_m, work_balance
+from shpb.response.bar_analysis import face_motion, integrated, one_wave, three_wave, two_wave
 from shpb.rig.gauge import TestKind
 from shpb.rig.rig import Rig
 from shpb.settings import DEFAULT
@@ -19,7 +19,9 @@ from shpb.wave.propagation import CarriedPulse
 from tests.synthetic import copper, rig, steel_bar
 
 
-def faces_of(incident: np.ndarray, reflected: np.ndarray, transmitted: np.ndarray, interval: float) -> FacePulses:
+def faces_of(
+    incident: np.ndarray, reflected: np.ndarray, transmitted: np.ndarray, interval: float
+) -> FacePulses:
     def carried(strain: np.ndarray) -> CarriedPulse:
         return CarriedPulse(strain, strain, strain)
 
@@ -105,7 +107,7 @@ def test_work_identity_holds_for_any_pulses() -> None:
     lab = rig()
     motion = face_motion(faces, lab)
     curve = three_wave(faces, motion, copper(), TestKind.COMPRESSION)
-    balance = work_balance(faces, motion, curve, lab, copper(), (0, 4000), None)
+    balance = work_balance(faces, curve, lab, copper(), (0, 4000), None)
     power = motion.force_in_n * motion.velocity_in_m_s - motion.force_out_n * motion.velocity_out_m_s
     assert balance.work_j == pytest.approx(power.sum() * 2e-7, rel=1e-10)
     # ... = specimen work + integral of (F1 - F2)(v1 + v2)/2
@@ -120,7 +122,7 @@ def test_striker_momentum_and_energy() -> None:
     faces = faces_of(constant(2e-3, samples), constant(0.0, samples), constant(0.0, samples), 1e-7)
     motion = face_motion(faces, lab)
     curve = three_wave(faces, motion, copper(), TestKind.COMPRESSION)
-    balance = work_balance(faces, motion, curve, lab, copper(), (0, samples), 20.0)
+    balance = work_balance(faces, curve, lab, copper(), (0, samples), 20.0)
     assert motion.force_in_n[0] == pytest.approx(125.6637e3, rel=1e-6)
     assert balance.incident_impulse_n_s == pytest.approx(balance.striker_momentum_n_s, rel=1e-12)
     mass = 8000 * 0.3 * np.pi * 0.01**2

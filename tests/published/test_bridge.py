@@ -28,7 +28,9 @@ def rows(name: str) -> list[dict[str, str]]:
 
 
 BRIDGES = [
-    row for row in rows("bridge_exact_output.csv") if row["config"] in CONFIGS and float(row["eps_bending"]) == 0
+    row
+    for row in rows("bridge_exact_output.csv")
+    if row["config"] in CONFIGS and float(row["eps_bending"]) == 0
 ]
 
 
@@ -61,7 +63,9 @@ def test_full_bridge_is_linear_without_help() -> None:
     assert volts[0] == pytest.approx(5.0 * 2.0 * 1e-3, rel=1e-14)
 
 
-@pytest.mark.parametrize("row", rows("shunt_calibration.csv"), ids=lambda row: f"{row['Rg_ohm']} {row['Rc_ohm']}")
+@pytest.mark.parametrize(
+    "row", rows("shunt_calibration.csv"), ids=lambda row: f"{row['Rg_ohm']} {row['Rc_ohm']}"
+)
 def test_shunt_strain(row: dict[str, str]) -> None:
     # Published resistor values: Vishay TN-514; recorder makers' tables named in the file's header.
     found = shunt_strain(float(row["Rg_ohm"]), float(row["Rc_ohm"]), float(row["gauge_factor"]))

@@ -99,7 +99,9 @@ def test_forces_stress_and_strain_of_an_elastic_specimen(transit_s: float) -> No
         response.motion.force_out_n[counted], expected(back)[counted], atol=4e-3 * peak
     )
     stress = expected(0.5 * (front + back)) / specimen.area_m2
-    np.testing.assert_allclose(response.three_wave.stress_pa[counted], stress[counted], atol=4e-3 * stress.max())
+    np.testing.assert_allclose(
+        response.three_wave.stress_pa[counted], stress[counted], atol=4e-3 * stress.max()
+    )
 
     # Closing of the faces: v1 - v2 = c (I - R - T).
     closing = bar.wave_speed_m_s * (incident - reflected - transmitted)

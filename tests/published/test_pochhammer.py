@@ -57,7 +57,9 @@ def test_anchors() -> None:
         row = dict(zip(names, map(float, line.split(",")), strict=True))
         nu = row["nu"]
         # The surface-strain factor changes sign through its pole.
-        below, above = first_mode_at_frequency(row["pole_fa_over_c0"] + np.array([-1e-6, 1e-6]), nu).mean_strain
+        below, above = first_mode_at_frequency(
+            row["pole_fa_over_c0"] + np.array([-1e-6, 1e-6]), nu
+        ).mean_strain
         assert below > 1e4
         assert above < -1e4
         short = first_mode_at_wavelength([row["cmin_a_over_Lambda"]], nu)

@@ -54,16 +54,27 @@ def test_a_noisy_short_window_cannot_tilt_the_line() -> None:
 def test_a_tail_is_not_taken_for_zero() -> None:
     # A shaped pulse whose tail dies with 60 us: at the end of the gap 2 % of the peak still stands.
     peak_end, front = 1000, 2200
-    trace = np.where(TIME < TIME[peak_end], 1.0, np.exp(-(TIME - TIME[peak_end]) / 60e-6))
+    trace = np.where(TIME[peak_end] > TIME, 1.0, np.exp(-(TIME - TIME[peak_end]) / 60e-6))
     assert quiet_gap(trace, 1.0, peak_end, front) is None
 
 
 def test_the_quiet_part_of_a_gap_is_found() -> None:
     peak_end, front = 1000, 3000
     rng = np.random.default_rng(3)
-    trace = np.where(TIME < TIME[peak_end], 1.0, np.exp(-(TIME - TIME[peak_end]) / 25e-6))
+    trace = np.where(TIME[peak_end] > TIME, 1.0, np.exp(-(TIME - TIME[peak_end]) / 25e-6))
     trace = trace + 0.03 + rng.normal(0, 0.005, TIME.size)
     window = quiet_gap(trace, 1.0, peak_end, front)
     assert window is not None
     assert window.stop == front
     assert window.level == pytest.approx(0.03, abs=1.5e-3)
+
+
+def test_a_jump_of_the_zero_does_not_tilt_the_line() -> None:
+    # A gauge that came loose between the two windows: a tenth of the peak within 200 us is no drift.
+    rng = np.random.default_rng(4)
+    trace = rng.normal(0, 0.003, TIME.size)
+    trace[1500:] -= 0.1
+    before, gap = quiet_window(trace, 0, 1000), quiet_window(trace, 2000, 2500)
+    assert before is not None
+    assert gap is not None
+    assert abs(zero_line(gap, (before,), 1.0, DT).slope / DT) < 15  # 100 V/s would join the two

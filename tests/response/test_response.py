@@ -53,14 +53,15 @@ def test_rate_of_the_closed_form() -> None:
     theta = bar.force_per_strain_n * specimen.length_m / (2 * bar.wave_speed_m_s * specimen.area_m2 * 1e9)
     assert theta == pytest.approx(400e-6)
     time = np.arange(0.0, 100e-6 + 1e-9, 1e-7)
-    rate = 2 * 5000 / 0.005 * (2e-3 - specimen.area_m2 * 400e6 / bar.force_per_strain_n) * np.exp(-time / theta)
+    rate = (
+        2 * 5000 / 0.005 * (2e-3 - specimen.area_m2 * 400e6 / bar.force_per_strain_n) * np.exp(-time / theta)
+    )
     assert rate[0] == pytest.approx(3000.0)
     stress = 400e6 + 1e9 * theta * 3000.0 * (1 - np.exp(-time / theta))
     transmitted = stress * specimen.area_m2 / bar.force_per_strain_n
-    from tests.published.test_bar_analysis import faces_of
-
     from shpb.response.bar_analysis import face_motion, one_wave
     from shpb.rig.gauge import TestKind
+    from tests.published.test_bar_analysis import faces_of
 
     faces = faces_of(np.full_like(time, 2e-3), transmitted - 2e-3, transmitted, 1e-7)
     curve = one_wave(faces, face_motion(faces, lab), lab, specimen, TestKind.COMPRESSION)

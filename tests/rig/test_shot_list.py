@@ -1,6 +1,6 @@
 """Shot lists: what spreadsheets write, equivalence with sheets, and every refusal by line and column."""
 
-# ruff: noqa: E501  -- the table of refusals reads best with its texts unbroken
+
 
 from __future__ import annotations
 

@@ -51,7 +51,9 @@ def a_record() -> Record:
     return dataclasses.replace(record, sources=(source,), remarks=("a remark",))
 
 
-@pytest.fixture(scope="module", params=[DEFAULT, DEFAULT.replaced(dispersion=Dispersion.FULL, alignment=Alignment.FEET)])
+@pytest.fixture(
+    scope="module", params=[DEFAULT, DEFAULT.replaced(dispersion=Dispersion.FULL, alignment=Alignment.FEET)]
+)
 def result(request: pytest.FixtureRequest) -> ShotResult:
     settings: Settings = request.param
     return reduce(a_record(), a_rig(), a_sheet(), settings)
@@ -80,7 +82,7 @@ def test_a_rerun_from_the_file_gives_the_same_bits(result: ShotResult, tmp_path:
     assert set(again.arrays) == set(stored.arrays)
     for name, values in stored.arrays.items():
         np.testing.assert_array_equal(again[name], values, err_msg=name)
-    assert {k: v for k, v in again.attributes["response"].items()} == stored.attributes["response"]
+    assert again.attributes["response"] == stored.attributes["response"]
 
 
 def test_layout_is_what_any_viewer_needs(result: ShotResult, tmp_path: Path) -> None:
@@ -176,7 +178,9 @@ def test_curves_as_csv(result: ShotResult, tmp_path: Path) -> None:
     index = result.response.loading[0] + 100
     row = rows[index]
     assert float(row["time_us"]) == pytest.approx(1e6 * result.response.time_s[index], rel=1e-7)
-    assert float(row["stress_3w_MPa"]) == pytest.approx(1e-6 * result.response.three_wave.stress_pa[index], rel=1e-7)
+    assert float(row["stress_3w_MPa"]) == pytest.approx(
+        1e-6 * result.response.three_wave.stress_pa[index], rel=1e-7
+    )
     assert float(row["true_strain"]) == pytest.approx(result.response.curve.true_strain[index], rel=1e-7)
     span = result.response.span
     counted = [i for i, r in enumerate(rows) if r["counts"] == "1"]

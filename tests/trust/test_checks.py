@@ -153,7 +153,9 @@ def test_incident_pulse_against_striker(faces: FaceStrains) -> None:
     said = finding(reduce(record, wrong, good_sheet()), "incident against striker")
     assert said.weight is Weight.REJECT
     assert "0.50" in said.measured or "0.49" in said.measured
-    assert not [f for f in run(faces, shot=good_sheet(striker_speed_m_s=None)).findings if "striker" in f.check]
+    assert not [
+        f for f in run(faces, shot=good_sheet(striker_speed_m_s=None)).findings if "striker" in f.check
+    ]
 
 
 def test_bar_yield(faces: FaceStrains) -> None:
@@ -218,7 +220,9 @@ def test_reverberations_are_counted_in_transits(faces: FaceStrains) -> None:
     start = result.response.equilibrium.start
     assert start is not None
     transit = 0.005 / np.sqrt(120e9 / 8900)
-    assert result.response.equilibrium.reverberations == pytest.approx(result.response.time_s[start] / transit)
+    assert result.response.equilibrium.reverberations == pytest.approx(
+        result.response.time_s[start] / transit
+    )
     assert "transits" in finding(result, "reverberations").measured
 
 

@@ -141,9 +141,7 @@ def test_polarity_clock_and_sampling_rate_do_not_matter(factor: float, every: in
         transmitted_gauge=dataclasses.replace(shot.rig.transmitted_gauge, tension_sign=sign),
     )
     result = reduce(record, rig, shot.sheet)
-    moved = VirtualShot(
-        record, rig, shot.sheet, {**shot.truth, "time_s": shot.truth["time_s"] + offset_s}
-    )
+    moved = VirtualShot(record, rig, shot.sheet, {**shot.truth, "time_s": shot.truth["time_s"] + offset_s})
     strain = _on_truth_time(result, result.response.three_wave.true_strain, moved)
     stress = _on_truth_time(result, result.response.three_wave.true_stress_pa, moved)
     assert result.verdict is Verdict.ACCEPT

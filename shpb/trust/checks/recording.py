@@ -146,7 +146,9 @@ def record_end(evidence: Evidence) -> Finding | None:
     return Finding(
         check="record end",
         weight=Weight.NOTE if at_end else Weight.FINE,
-        measured="the windows end before the loading does" if at_end else "the loading ends inside the windows",
+        measured="the windows end before the loading does"
+        if at_end
+        else "the loading ends inside the windows",
         limit="loading inside the windows",
         source="common practice",
         action="Lengthen the record, or shorten the striker, so that the pulses die away in it.",

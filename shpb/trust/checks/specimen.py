@@ -88,10 +88,7 @@ def rate_constancy(evidence: Evidence) -> Finding | None:
 def work_balance(evidence: Evidence) -> Finding | None:
     """Work of the face forces against the work that deforms the specimen: equal in equilibrium."""
     balance = evidence.response.balance
-    if balance.work_j <= 0:
-        off = 1.0
-    else:
-        off = abs(balance.specimen_work_j / balance.work_j - 1)
+    off = 1.0 if balance.work_j <= 0 else abs(balance.specimen_work_j / balance.work_j - 1)
     limit = evidence.settings.work_limit
     return Finding(
         check="work balance",
