@@ -20,7 +20,7 @@ from shpb.settings import Settings, Span
 # A dispersed front begins a few a/c0 before its tangent foot: this much room is left before each foot.
 _LEAD_RADII = 5.0
 _SMOOTHING_RADII = 0.2  # running mean of the pickers, in a/c0
-_TAPER_RADII = 4.0  # soft end of a window, in a/c0
+TAPER_RADII = 4.0  # soft end of a window, in a/c0
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -47,7 +47,7 @@ class Pulse:
         The line that was removed.
     noise : float
         Standard deviation of one sample of strain.
-    level_at_start : float
+    level_at_start, u_level_at_start : float
         Level where the window begins, share of the pulse's peak: not zero if the pulse came sooner.
     """
 
@@ -61,6 +61,7 @@ class Pulse:
     zero: ZeroLine
     noise: float
     level_at_start: float = 0.0
+    u_level_at_start: float = 0.0
 
     @property
     def set_by_hand(self) -> bool:
@@ -362,8 +363,8 @@ class _Cutter:
         if by_hand is not None:
             foot = Foot(by_hand, interval, picked.sign if picked else 1, picked.rise_s if picked else 0.0)
         begin = values[: max(int(_SMOOTHING_RADII * 5 * _radius_time(bar) / interval), 4)]
-        level = float(begin.mean()) / max(float(np.abs(values).max()), 1e-12)
-        values *= _taper(values.size, int(_TAPER_RADII * _radius_time(bar) / interval))
+        peak = max(float(np.abs(values).max()), 1e-12)
+        values *= _taper(values.size, int(TAPER_RADII * _radius_time(bar) / interval))
         return Pulse(
             name=name,
             strain=frozen(values),
@@ -374,7 +375,8 @@ class _Cutter:
             automatic_foot=picked,
             zero=zero,
             noise=noise,
-            level_at_start=level,
+            level_at_start=float(begin.mean()) / peak,
+            u_level_at_start=noise / float(np.sqrt(begin.size)) / peak,
         )
 
 

@@ -15,6 +15,7 @@ from typing import NamedTuple
 import numpy as np
 
 from shpb.arrays import FloatArray, dot
+from shpb.pulse.front import white_noise
 
 # Plausible drift of a zero line [share of the peak per second]: 2 % a millisecond, one standard deviation.
 PLAUSIBLE_DRIFT_PER_S = 20.0
@@ -31,6 +32,12 @@ class QuietWindow(NamedTuple):
     level: float
     slope: float  # per sample
     noise: float  # standard deviation of one sample about the line
+    white: float  # the part of it that is white
+
+    @property
+    def unrest(self) -> float:
+        """Standard deviation about the line beyond white noise: zero where the window is quiet indeed."""
+        return float(np.sqrt(max(self.noise**2 - self.white**2, 0.0)))
 
     @property
     def samples(self) -> int:
@@ -53,6 +60,7 @@ class ZeroLine:
     u_level: float
     u_slope: float
     quiet: tuple[tuple[int, int], ...]  # windows it was taken from, sample ranges
+    unrest: float = 0.0  # standard deviation beyond white noise in the window next before the pulse
 
     def at(self, start: int, stop: int) -> FloatArray:
         """The line at samples ``start`` to ``stop``."""
@@ -72,7 +80,7 @@ def quiet_window(trace: FloatArray, start: int, stop: int) -> QuietWindow | None
     slope = dot(offset, values - level) / dot(offset, offset)
     residual = values - level - slope * offset
     noise = float(np.sqrt(dot(residual, residual) / (samples - 2)))
-    return QuietWindow(start, stop, centre, level, slope, noise)
+    return QuietWindow(start, stop, centre, level, slope, noise, white_noise(values))
 
 
 def quiet_before_front(trace: FloatArray, front: int, interval_s: float) -> QuietWindow | None:
@@ -136,4 +144,5 @@ def zero_line(
         u_level=before.u_level,
         u_slope=before.noise / np.sqrt(damped),
         quiet=tuple((w.start, w.stop) for w in windows),
+        unrest=before.unrest,
     )

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from shpb.arrays import FloatArray
+from shpb.pulse.pulses import Pulses
 from shpb.response.bar_analysis import Curve, FaceMotion
 from shpb.rig.bar import Bar
 from shpb.rig.gauge import TestKind
@@ -47,6 +48,7 @@ class Balance:
 
 
 def work_balance(
+    pulses: Pulses,
     faces: FacePulses,
     curve: Curve,
     rig: Rig,
@@ -66,7 +68,8 @@ def work_balance(
     transmitted = work(rig.transmitted_bar, faces.transmitted.strain)
     volume = specimen.area_m2 * specimen.length_m
     own = float((curve.stress_pa[span] * curve.strain_rate_per_s[span]).sum() * dt * volume)
-    impulse = float(rig.incident_bar.force_per_strain_n * faces.incident.strain.sum() * dt)
+    # At the gauge, over its whole window: dispersion keeps the impulse, a short record cuts the faces' clock.
+    impulse = float(rig.incident_bar.force_per_strain_n * pulses.incident.strain.sum() * dt)
     momentum = None
     if rig.striker is not None and striker_speed_m_s is not None:
         momentum = rig.striker.mass_kg * striker_speed_m_s

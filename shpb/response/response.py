@@ -98,7 +98,7 @@ def specimen_response(
     for array in (*motion, *(getattr(c, f.name) for c in curves for f in dataclasses.fields(c))):
         frozen(array)
     one, two, three = curves
-    loading = loading_span(three.strain_rate_per_s, faces.time_s)
+    loading = loading_span(three.strain_rate_per_s, faces.time_s, faces.whole)
     if loading[1] - loading[0] < 8 or motion.force_out_n[slice(*loading)].max() <= 0:
         raise InputError(
             "the pulses at the specimen faces load it nowhere",
@@ -124,7 +124,7 @@ def specimen_response(
         loading=loading,
         span=span,
         rate=rate_summary(three.strain_rate_per_s, three.true_strain_rate_per_s, span or loading),
-        balance=work_balance(faces, three, rig, specimen, loading, sheet.striker_speed_m_s),
+        balance=work_balance(pulses, faces, three, rig, specimen, loading, sheet.striker_speed_m_s),
         indentation_strain=frozen(indentation_strain(motion, three, rig, specimen, kind)),
         flow=flow_stresses(
             curve.true_strain, curve.true_stress_pa, curve.true_strain_rate_per_s, span, modulus,
@@ -146,6 +146,6 @@ def _untuned(
     physical, specimen = faces.untuned, sheet.specimen
     motion = face_motion(physical, rig)
     curve = three_wave(physical, motion, specimen, sheet.kind)
-    loading = loading_span(curve.strain_rate_per_s, physical.time_s)
+    loading = loading_span(curve.strain_rate_per_s, physical.time_s, physical.whole)
     uncertainties = force_uncertainties(pulses, physical, rig, settings)
     return judge_equilibrium(motion, uncertainties, physical, curve.true_strain, loading, specimen, settings)

@@ -31,21 +31,24 @@ class RateSummary:
     slope: float  # change along the span by a straight line
 
 
-def loading_span(rate_per_s: FloatArray, time_s: FloatArray) -> tuple[int, int]:
+def loading_span(rate_per_s: FloatArray, time_s: FloatArray, whole: int | None = None) -> tuple[int, int]:
     """First and last sample of the loading: from time zero to where the rate has fallen away.
+
+    ``whole`` is the sample up to which all pulses are whole; a short record ends the loading there.
 
     The reference is the median of the rate above half its greatest value; loading ends where the
     rate falls below a fifth of it for the first time after it has passed half of it.
     """
     first = int(np.searchsorted(time_s, 0.0))
-    rate = rate_per_s[first:]
+    stop = rate_per_s.size if whole is None else max(whole, first)
+    rate = rate_per_s[first:stop]
     if rate.size == 0 or rate.max() <= 0:
-        return first, rate_per_s.size
+        return first, stop
     high = rate > 0.5 * rate.max()
     reference = float(np.median(rate[high]))
     risen = int(np.argmax(rate > 0.5 * reference))
     fallen = np.flatnonzero(rate[risen:] < END_OF_LOADING * reference)
-    return first, first + risen + int(fallen[0]) if fallen.size else rate_per_s.size
+    return first, first + risen + int(fallen[0]) if fallen.size else stop
 
 
 def rate_summary(rate_per_s: FloatArray, true_rate_per_s: FloatArray, span: tuple[int, int]) -> RateSummary:

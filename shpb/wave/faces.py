@@ -9,7 +9,7 @@ import numpy as np
 from shpb.arrays import FloatArray, frozen
 from shpb.errors import InputError
 from shpb.pulse.foot import Foot, pick_foot
-from shpb.pulse.pulses import Pulse, Pulses
+from shpb.pulse.pulses import TAPER_RADII, Pulse, Pulses
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import Specimen
 from shpb.settings import Alignment, Settings
@@ -35,6 +35,8 @@ class FacePulses:
         Strains [1], shape (samples,) each, loading-positive.
     low_pass : LowPass
         The one filter of all three.
+    whole : int
+        Samples up to which no pulse feels the soft end of its window.
     reflected_misalignment_s, transmitted_misalignment_s : float or None
         Foot of that pulse less where geometry puts it, before any tuning [s].
     u_misalignment_s : float
@@ -55,6 +57,7 @@ class FacePulses:
     reflected_misalignment_s: float | None
     transmitted_misalignment_s: float | None
     u_misalignment_s: float
+    whole: int
     reflected_shift_s: float = 0.0
     transmitted_shift_s: float = 0.0
     untuned: FacePulses | None = None
@@ -110,6 +113,7 @@ def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Setti
         reflected_misalignment_s=off_r,
         transmitted_misalignment_s=off_t,
         u_misalignment_s=u_off,
+        whole=_whole(grid, low_pass, rig),
     )
     if settings.alignment is Alignment.PHYSICAL:
         return physical
@@ -126,6 +130,7 @@ def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Setti
         reflected_misalignment_s=off_r,
         transmitted_misalignment_s=off_t,
         u_misalignment_s=u_off,
+        whole=physical.whole,
         reflected_shift_s=shift_r,
         transmitted_shift_s=shift_t,
         untuned=physical,
@@ -151,6 +156,12 @@ def _common_grid(pulses: Pulses, rig: Rig) -> Grid:
             mend="Widen the windows in the shot sheet, lengthen the record, or check gauge distances",
         )
     return Grid(start, pulses.sample_interval_s, samples)
+
+
+def _whole(grid: Grid, low_pass: LowPass, rig: Rig) -> int:
+    """Samples up to which the taper of the windows, smeared by the low-pass, is not felt."""
+    unit = max(bar.radius_m / bar.wave_speed_m_s for bar in (rig.incident_bar, rig.transmitted_bar))
+    return max(grid.samples - int((TAPER_RADII * unit + 2.0 / low_pass.cutoff_hz) / grid.interval_s), 0)
 
 
 def _feet_at_faces(

@@ -8,6 +8,9 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from shpb.pulse.arrivals import geometric_arrivals
+from shpb.pulse.pulses import Pulse, Pulses
+from shpb.pulse.zero_line import ZeroLine
 from shpb.quantity import Quantity
 from shpb.response.balance import face_indentation_m, work_balance
 from shpb.response.bar_analysis import face_motion, integrated, one_wave, three_wave, two_wave
@@ -36,6 +39,27 @@ def faces_of(
         reflected_misalignment_s=None,
         transmitted_misalignment_s=None,
         u_misalignment_s=0.0,
+        whole=incident.size,
+    )
+
+
+def pulses_of(faces: FacePulses) -> Pulses:
+    """The same pulses at gauges that sit on the faces."""
+
+    def pulse(name: str, strain: np.ndarray) -> Pulse:
+        zero = ZeroLine(level=0.0, slope=0.0, centre=0.0, u_level=0.0, u_slope=0.0, quiet=())
+        return Pulse(
+            name=name, strain=strain, start_s=0.0, window_s=(0.0, 1.0), automatic_window_s=(0.0, 1.0), foot=None,
+            automatic_foot=None, zero=zero, noise=0.0,
+        )  # fmt: skip
+
+    return Pulses(
+        incident=pulse("incident", faces.incident.strain),
+        reflected=pulse("reflected", faces.reflected.strain),
+        transmitted=pulse("transmitted", faces.transmitted.strain),
+        arrivals=geometric_arrivals(0.0, rig(), copper()),
+        sample_interval_s=faces.interval_s,
+        tail_at_reflection=0.0,
     )
 
 
@@ -107,7 +131,7 @@ def test_work_identity_holds_for_any_pulses() -> None:
     lab = rig()
     motion = face_motion(faces, lab)
     curve = three_wave(faces, motion, copper(), TestKind.COMPRESSION)
-    balance = work_balance(faces, curve, lab, copper(), (0, 4000), None)
+    balance = work_balance(pulses_of(faces), faces, curve, lab, copper(), (0, 4000), None)
     power = motion.force_in_n * motion.velocity_in_m_s - motion.force_out_n * motion.velocity_out_m_s
     assert balance.work_j == pytest.approx(power.sum() * 2e-7, rel=1e-10)
     # ... = specimen work + integral of (F1 - F2)(v1 + v2)/2
@@ -122,7 +146,7 @@ def test_striker_momentum_and_energy() -> None:
     faces = faces_of(constant(2e-3, samples), constant(0.0, samples), constant(0.0, samples), 1e-7)
     motion = face_motion(faces, lab)
     curve = three_wave(faces, motion, copper(), TestKind.COMPRESSION)
-    balance = work_balance(faces, curve, lab, copper(), (0, samples), 20.0)
+    balance = work_balance(pulses_of(faces), faces, curve, lab, copper(), (0, samples), 20.0)
     assert motion.force_in_n[0] == pytest.approx(125.6637e3, rel=1e-6)
     assert balance.incident_impulse_n_s == pytest.approx(balance.striker_momentum_n_s, rel=1e-12)
     mass = 8000 * 0.3 * np.pi * 0.01**2

@@ -139,9 +139,15 @@ def test_feet_tell_a_wrong_distance(faces: FaceStrains) -> None:
     assert "transmitted foot" in said.measured
     right = finding(reduce(record, lab, good_sheet()), "feet")
     assert right.weight is Weight.FINE
-    # 15 cm: the pulse is there 30 us before anything is expected, and runs when its window begins.
+    # 15 cm: the pulse is there 30 us before anything is expected, and its foot in what should be quiet.
     worse = rig(transmitted_gauge=gauge("B", 0.75))
-    assert finding(reduce(record, worse, good_sheet()), "window start").weight is Weight.REJECT
+    assert finding(reduce(record, worse, good_sheet()), "quiet before pulse").weight is Weight.REJECT
+
+
+def test_a_window_that_begins_on_the_pulse(faces: FaceStrains) -> None:
+    settings = DEFAULT.replaced(transmitted_window_s=(297e-6, 500e-6))  # well into its rise
+    assert finding(run(faces, settings=settings), "window start").weight is Weight.REJECT
+    assert finding(run(faces), "window start").weight is Weight.FINE
 
 
 def test_incident_pulse_against_striker(faces: FaceStrains) -> None:

@@ -62,6 +62,26 @@ def zero_line(evidence: Evidence) -> Finding | None:
 
 
 @check
+def quiet_before_pulse(evidence: Evidence) -> Finding | None:
+    """The window that gives a pulse its zero must hold no wave: noise there must be white."""
+    worst, share = "", -1.0
+    for pulse in evidence.pulses:
+        unrest = pulse.zero.unrest / max(float(np.abs(pulse.strain).max()), 1e-12)
+        if unrest > share:
+            worst, share = pulse.name, unrest
+    limit = 0.02
+    return Finding(
+        check="quiet before pulse",
+        weight=Weight.REJECT if share > limit else Weight.FINE,
+        measured=f"the trace before the {worst} pulse moves by {100 * share:.2f} % of its peak beyond white noise",
+        limit=f"{100 * limit:.0f} %",
+        source="common practice",
+        action="A wave stands where there should be none: check gauge distances and wave speeds in the rig file, and "
+        "the cable for interference.",
+    )
+
+
+@check
 def zero_after_shot(evidence: Evidence) -> Finding | None:
     """A trace that does not come back to zero after its pulse: loose gauge, or a bar bent or yielded."""
     worst, shift = "", 0.0
@@ -121,12 +141,12 @@ def window_start(evidence: Evidence) -> Finding | None:
     """A pulse that runs already where its window begins came sooner than distances and wave speeds say."""
     worst = max(evidence.pulses, key=lambda pulse: abs(pulse.level_at_start))
     level = abs(worst.level_at_start)
-    limit = 0.05
+    limit = 0.05 + 4 * worst.u_level_at_start
     return Finding(
         check="window start",
         weight=Weight.FINE if level <= limit else Weight.REJECT,
         measured=f"the {worst.name} trace stands at {100 * level:.1f} % of its peak where its window begins",
-        limit=f"{100 * limit:.0f} %",
+        limit=f"{100 * limit:.1f} %",
         source="common practice",
         action="Check gauge distances and wave speeds in the rig file; see overlap; a window set by hand may "
         "begin too late.",

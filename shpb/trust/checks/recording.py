@@ -141,14 +141,15 @@ def sampling_rate(evidence: Evidence) -> Finding | None:
 @check
 def record_end(evidence: Evidence) -> Finding | None:
     """The record must hold the whole loading and some tail."""
-    response = evidence.response
-    at_end = response.loading[1] >= response.time_s.size - 2
+    response, faces = evidence.response, evidence.faces
+    cut = response.loading[1] >= faces.whole
+    end = 1e6 * float(response.time_s[response.loading[1] - 1])
     return Finding(
         check="record end",
-        weight=Weight.NOTE if at_end else Weight.FINE,
-        measured="the windows end before the loading does"
-        if at_end
-        else "the loading ends inside the windows",
+        weight=Weight.NOTE if cut else Weight.FINE,
+        measured=f"the loading is cut off after {end:.0f} us, where a window or the record ends"
+        if cut
+        else f"the loading ends after {end:.0f} us, inside the windows",
         limit="loading inside the windows",
         source="common practice",
         action="Lengthen the record, or shorten the striker, so that the pulses die away in it.",
