@@ -20,6 +20,7 @@ from shpb.settings import Settings, Span
 # A dispersed front begins a few a/c0 before its tangent foot: this much room is left before each foot.
 _LEAD_RADII = 5.0
 _SMOOTHING_RADII = 0.2  # running mean of the pickers, in a/c0
+_START_RADII = 1.0  # over which the level at a window's start is taken, in a/c0
 TAPER_RADII = 4.0  # soft end of a window, in a/c0
 
 
@@ -362,8 +363,9 @@ class _Cutter:
         foot = picked
         if by_hand is not None:
             foot = Foot(by_hand, interval, picked.sign if picked else 1, picked.rise_s if picked else 0.0)
-        begin = values[: max(int(_SMOOTHING_RADII * 5 * _radius_time(bar) / interval), 4)]
+        begin = values[: max(int(_START_RADII * _radius_time(bar) / interval), 4)]
         peak = max(float(np.abs(values).max()), 1e-12)
+        level, u_level = float(begin.mean()) / peak, noise / float(np.sqrt(begin.size)) / peak
         values *= _taper(values.size, int(TAPER_RADII * _radius_time(bar) / interval))
         return Pulse(
             name=name,
@@ -375,8 +377,8 @@ class _Cutter:
             automatic_foot=picked,
             zero=zero,
             noise=noise,
-            level_at_start=float(begin.mean()) / peak,
-            u_level_at_start=noise / float(np.sqrt(begin.size)) / peak,
+            level_at_start=level,
+            u_level_at_start=u_level,
         )
 
 
