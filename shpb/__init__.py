@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from shpb.record.read import read_record
     from shpb.record.record import Record
     from shpb.reduction import ShotResult, reduce
+    from shpb.rig.overrides import hints_for
     from shpb.rig.rig import Rig
     from shpb.rig.rig_file import read_rig
     from shpb.rig.sheet import ShotSheet
@@ -45,6 +46,7 @@ _HOME = {
     "ShotSheet": "shpb.rig.sheet",
     "ShpbError": "shpb.errors",
     "export_csv": "shpb.store.curves_csv",
+    "hints_for": "shpb.rig.overrides",
     "load": "shpb.store.shot_file",
     "read_record": "shpb.record.read",
     "read_rig": "shpb.rig.rig_file",
@@ -66,6 +68,7 @@ __all__ = [
     "ShpbError",
     "__version__",
     "export_csv",
+    "hints_for",
     "load",
     "read_record",
     "read_rig",

@@ -8,9 +8,10 @@ from shpb.pulse.pulses import Pulses, find_pulses
 from shpb.pulse.strain import GaugeStrain, gauge_strain
 from shpb.record.record import Record
 from shpb.response.response import Response, specimen_response
+from shpb.rig.overrides import settings_for
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
-from shpb.settings import DEFAULT, Settings
+from shpb.settings import Settings
 from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Finding, Verdict, verdict_of
 from shpb.trust.judge import judge
@@ -46,7 +47,7 @@ class ShotResult:
         return verdict_of(self.findings)
 
 
-def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings = DEFAULT) -> ShotResult:
+def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings | None = None) -> ShotResult:
     """Reduce one shot: voltages to strain, pulses, faces, response, findings.
 
     Parameters
@@ -57,8 +58,9 @@ def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings = DEFA
         What stands in the lab.
     sheet : ShotSheet
         What was tested.
-    settings : Settings
-        Every choice of the reduction, used exactly as given.
+    settings : Settings or None
+        Every choice of the reduction, used exactly as given; None takes the defaults as the rig file and
+        the shot sheet change them.
 
     Raises
     ------
@@ -72,10 +74,12 @@ def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings = DEFA
     >>> import shpb
     >>> sheet = shpb.read_sheet(folder / "records" / "W-02.toml")
     >>> rig = shpb.read_rig(sheet.rig_file)
-    >>> result = shpb.reduce(shpb.read_record(sheet.record_files), rig, sheet)
+    >>> record = shpb.read_record(sheet.record_files, shpb.hints_for(rig, sheet))
+    >>> result = shpb.reduce(record, rig, sheet)
     >>> print(result.verdict.value, round(result.response.rate.mean_per_s, -2), "1/s")
     accept 1500.0 1/s
     """
+    settings = settings_for(rig, sheet) if settings is None else settings
     strain = gauge_strain(record, rig, sheet.kind)
     pulses = find_pulses(strain, rig, sheet.specimen, settings)
     faces = carry_to_faces(pulses, rig, sheet.specimen, settings)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections import defaultdict
+from contextlib import suppress
 from dataclasses import dataclass
 from functools import cache
 
@@ -11,6 +12,7 @@ import numpy as np
 
 from shpb.arrays import FloatArray, frozen
 from shpb.demo.scenario import DemoShot, Expected, demo_shot, demo_shots
+from shpb.errors import InputError
 from shpb.forward.onset import tangent_foot_s
 from shpb.forward.shot import ForwardShot, fire
 from shpb.settings import Span
@@ -46,10 +48,10 @@ class DemoTruth:
         Geometric arrivals at c0 on the record's clock [s]; names in :func:`shpb.forward.shot.arrivals`.
     feet_s : dict
         Onset of the pulses at their gauges ("incident", "reflected", "transmitted") on the record's
-        clock [s]: the straight line through the noise-free rise from 10 to 50 % of the height that the
-        pulse reaches within 30 us of its geometric arrival, carried on to zero
-        (:func:`shpb.forward.onset.tangent_foot_s`). The reflected one is left out where it lies
-        on the incident pulse.
+        clock [s]: the straight line through the noise-free first rise from 10 to 60 % of its height, carried
+        on to zero; the first rise is over where the slope has first fallen to a quarter of its steepest
+        (:func:`shpb.forward.onset.tangent_foot_s`). Left out are the reflected pulse that lies on the
+        incident one, and a pulse whose first rise is not over 30 us after its geometric arrival.
     loading_end_s : float
         When the first loading of the specimen is over, on the record's clock [s].
     length_after_m : float
@@ -153,11 +155,12 @@ def _feet(shot: DemoShot, fired: ForwardShot) -> dict[str, float]:
     for name, strain in strains.items():
         if name == "reflected" and shot.expected is Expected.OVERLAPPING:
             continue
-        feet[name] = tangent_foot_s(fired.time_s, strain, _span(fired, name))
+        with suppress(InputError):  # a soft disc before the striker: the rise is not over within the span
+            feet[name] = tangent_foot_s(fired.time_s, strain, _span(fired, name))
     return feet
 
 
 def _span(fired: ForwardShot, name: str) -> Span:
-    """From before the front to the end of the pulse's first rise, before a specimen's hardening."""
+    """From before the front to beyond the pulse's first rise, before anything else arrives."""
     start = fired.arrivals_s[name]
     return start - 25e-6, start + 30e-6

@@ -190,7 +190,7 @@ def _incident_front(strain: GaugeStrain, rig: Rig, settings: Settings) -> _Incid
     interval = strain.sample_interval_s
     smoothing = _radius_time(rig.incident_bar)
     incident = _front_or_refuse(strain.incident, interval, smoothing, "incident")
-    transmitted = first_front(strain.transmitted.axial, interval, smoothing)
+    transmitted = _front_or_refuse(strain.transmitted, interval, smoothing, "transmitted")
     _refuse_swapped(strain, incident, transmitted, rig)
     if incident.at * interval < 2 * _radius_time(rig.incident_bar):
         raise UnusableShotError(
@@ -199,13 +199,14 @@ def _incident_front(strain: GaugeStrain, rig: Rig, settings: Settings) -> _Incid
             mend="Set the scope to keep at least 100 us before the trigger and fire again",
             check="pre-trigger",
         )
-    if incident.sign < 0:
-        raise UnusableShotError(
-            "the incident pulse comes out negative: the polarity is inverted",
-            where="incident gauge",
-            mend="Turn voltage_under_compression (or _tension) round in the rig file, or check the wiring",
-            check="polarity",
-        )
+    for name, front in (("incident", incident), ("transmitted", transmitted)):
+        if front.sign < 0:
+            raise UnusableShotError(
+                f"the {name} pulse comes out negative: the polarity is inverted",
+                where=f"{name} gauge",
+                mend="Turn voltage_under_compression (or _tension) round in the rig file, or check the wiring",
+                check="polarity",
+            )
     if settings.incident_foot_s is not None:
         return _IncidentFront(settings.incident_foot_s)
     lead = int(4 * _LEAD_RADII * _radius_time(rig.incident_bar) / interval)
@@ -230,9 +231,7 @@ def _front_or_refuse(station: StationStrain, interval: float, smoothing: float, 
     return front
 
 
-def _refuse_swapped(strain: GaugeStrain, incident: Front, transmitted: Front | None, rig: Rig) -> None:
-    if transmitted is None:
-        return
+def _refuse_swapped(strain: GaugeStrain, incident: Front, transmitted: Front, rig: Rig) -> None:
     interval = strain.sample_interval_s
     expected = (
         rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s

@@ -83,7 +83,15 @@ def settings_for(rig: Rig, sheet: ShotSheet, base: Settings = DEFAULT) -> Settin
 
 
 def hints_for(rig: Rig, sheet: ShotSheet) -> RecordHints:
-    """Return what is known about the record: the rig file's hints, and the sheet's in their place."""
+    """Return what is known about the record: the rig file's hints, and the sheet's in their place.
+
+    Examples
+    --------
+    >>> import shpb
+    >>> sheet = shpb.read_sheet(folder / "records" / "W-02.toml")
+    >>> hints = shpb.hints_for(shpb.read_rig(sheet.rig_file), sheet)
+    >>> record = shpb.read_record(sheet.record_files, hints)
+    """
     stated = {
         field.name: value
         for field in dataclasses.fields(RecordHints)

@@ -157,6 +157,18 @@ def spread_of_amplitude(result: ShotResult) -> tuple[Field, ...]:
     return tuple(fields)
 
 
+def untuned_ratio(result: ShotResult) -> tuple[Field, ...]:
+    """R(t) without the tuned part of the shifts, where there is one."""
+    untuned = result.response.untuned_equilibrium
+    if untuned is None:
+        return ()
+    return (
+        Field(
+            "equilibrium_ratio_untuned", "", "R without the tuned part of the shifts", lambda _: untuned.ratio
+        ),
+    )
+
+
 def flow_table(result: ShotResult) -> FloatArray:
     """Flow stress at given strains, shape (points, 3): strain, stress [Pa], rate [1/s]; NaN outside the span."""
     rows = [

@@ -152,7 +152,14 @@ def _write(file: h5py.File, result: ShotResult) -> None:
         file, "wave", (*layout.WAVE, *layout.spread_of_amplitude(result)), result, "incident"
     )
     _write_attributes(wave, layout.WAVE_ATTRIBUTES, result)
-    response = _write_fields(file, "response", layout.RESPONSE, result, "true_stress", axis="true_strain")
+    response = _write_fields(
+        file,
+        "response",
+        (*layout.RESPONSE, *layout.untuned_ratio(result)),
+        result,
+        "true_stress",
+        axis="true_strain",
+    )
     _write_attributes(response, layout.RESPONSE_ATTRIBUTES, result)
     table = response.create_dataset("flow_stress", data=layout.flow_table(result))
     table.attrs["columns"] = "strain, true stress [Pa], true strain rate [1/s]"

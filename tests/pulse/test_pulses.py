@@ -149,6 +149,17 @@ def test_dead_incident_channel(faces: FaceStrains, noise_v: float) -> None:
         pulses_of(altered(record, np.stack([dead, record.voltage_v[1]])))
 
 
+def test_dead_or_inverted_transmitted_channel(faces: FaceStrains) -> None:
+    record = record_of(faces, rig(), noise_v=0.002)
+    dead = np.random.default_rng(3).normal(0, 0.002, record.samples)
+    with pytest.raises(UnusableShotError, match="transmitted gauge: there is no pulse above the noise"):
+        pulses_of(altered(record, np.stack([record.voltage_v[0], dead])))
+    with pytest.raises(
+        UnusableShotError, match="transmitted gauge: the transmitted pulse comes out negative"
+    ):
+        pulses_of(altered(record, np.stack([record.voltage_v[0], -record.voltage_v[1]])))
+
+
 def test_record_that_begins_on_the_pulse(faces: FaceStrains) -> None:
     record = record_of(faces, rig(), noise_v=0.002)
     late = int(152e-6 / record.sample_interval_s)

@@ -111,6 +111,9 @@ def test_layout_is_what_any_viewer_needs(result: ShotResult, tmp_path: Path) -> 
         if result.settings.alignment is Alignment.FEET:
             assert file["wave"].attrs["reflected_shift"] == result.faces.reflected_shift_s != 0
             assert "equilibrium_mean_ratio_untuned" in file["response"].attrs
+            untuned = file["response/equilibrium_ratio_untuned"][()]
+            assert untuned.shape == file["response/equilibrium_ratio"].shape
+            assert not np.array_equal(untuned, file["response/equilibrium_ratio"][()])
 
 
 def test_the_same_shot_replaces_itself_and_nothing_else(result: ShotResult, tmp_path: Path) -> None:
