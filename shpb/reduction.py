@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from shpb.pulse.pulses import Pulses, find_pulses
+from shpb.pulse.pulse import Pulses
+from shpb.pulse.pulses import find_pulses
 from shpb.pulse.strain import GaugeStrain, gauge_strain
 from shpb.record.record import Record
 from shpb.response.response import Response, specimen_response

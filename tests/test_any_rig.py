@@ -1,7 +1,7 @@
 """Shots of rigs drawn at random: other bars, gauges, polarities, clocks and sampling rates, without a hand.
 
-Truth: the forward model (dispersive bars, specimen of elements), recorded with noise, hum, drift and 12 bits. A shot whose
-truth is in equilibrium must come out right; none may raise.
+Truth: the forward model (dispersive bars, specimen of elements), recorded with noise, hum, drift and 12 bits. A shot
+whose truth is in equilibrium must come out right; none may raise.
 """
 
 from __future__ import annotations
@@ -15,7 +15,7 @@ from shpb.forward.flow import FlowLaw
 from shpb.forward.recording import Disturbance, recorded, sampled
 from shpb.forward.shot import ForwardShot, ShotPlan, fire
 from shpb.forward.specimen import SpecimenModel
-from shpb.quantity import Quantity as Q
+from shpb.quantity import Quantity
 from shpb.record.record import Record
 from shpb.reduction import ShotResult, reduce
 from shpb.response.equilibrium import Outcome
@@ -23,6 +23,8 @@ from shpb.rig.bar import Bar, Striker
 from shpb.rig.gauge import Arrangement, Gauge, TestKind
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet, Specimen
+
+Q = Quantity
 
 # Density, bar speed, Poisson's ratio: handbook values of bar materials, from memory.
 MATERIALS = [(7830.0, 5129.0, 0.285), (8000.0, 4873.0, 0.30), (2700.0, 5051.0, 0.33), (4430.0, 5068.0, 0.342)]

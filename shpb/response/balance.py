@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from shpb.arrays import FloatArray
-from shpb.pulse.pulses import Pulses
+from shpb.pulse.pulse import Pulses
 from shpb.response.bar_analysis import Curve, FaceMotion
 from shpb.rig.bar import Bar
 from shpb.rig.gauge import TestKind

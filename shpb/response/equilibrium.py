@@ -25,7 +25,7 @@ import numpy as np
 
 from shpb.arrays import BoolArray, FloatArray, frozen
 from shpb.pulse.front import moving_mean
-from shpb.pulse.pulses import Pulses
+from shpb.pulse.pulse import Pulses
 from shpb.response.bar_analysis import FaceMotion
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import Specimen

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from shpb.arrays import FloatArray, frozen
 from shpb.errors import InputError
-from shpb.pulse.pulses import Pulses
+from shpb.pulse.pulse import Pulses
 from shpb.response.balance import Balance, indentation_strain, work_balance
 from shpb.response.bar_analysis import Curve, FaceMotion, face_motion, one_wave, three_wave, two_wave
 from shpb.response.equilibrium import Equilibrium, force_uncertainties, judge_equilibrium

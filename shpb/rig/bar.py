@@ -42,6 +42,11 @@ class Bar:
         return self.diameter_m / 2
 
     @property
+    def radius_time_s(self) -> float:
+        """a/c0 [s], the natural unit of time of the bar's dispersion."""
+        return self.radius_m / self.wave_speed_m_s
+
+    @property
     def area_m2(self) -> float:
         """Area of the section [m^2]."""
         return math.pi * self.diameter_m**2 / 4

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from shpb.pulse.pulses import Pulses
+from shpb.pulse.pulse import Pulses
 from shpb.pulse.strain import GaugeStrain
 from shpb.record.record import Record
 from shpb.response.response import Response

@@ -12,7 +12,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from shpb.errors import FileMistakes, ShpbError
-from shpb.pulse.pulses import Pulse
+from shpb.pulse.pulse import Pulse
 from shpb.record.record import Record, Source
 from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION, Equilibrium

@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from shpb.arrays import FloatArray
-from shpb.pulse.pulses import Pulse
+from shpb.pulse.pulse import Pulse
 from shpb.pulse.strain import StationStrain
 from shpb.reduction import ShotResult
 from shpb.rig.gauge import Gauge

@@ -60,7 +60,7 @@ def shot_line(result: ShotResult, longest_name: int = 60) -> str:
 def cutoff_fa_c0(result: ShotResult) -> float:
     """Cut-off of the low-pass as f a/c0 of the bar with the lower c0/a."""
     bars = (result.rig.incident_bar, result.rig.transmitted_bar)
-    return result.faces.low_pass.cutoff_hz * max(bar.radius_m / bar.wave_speed_m_s for bar in bars)
+    return result.faces.low_pass.cutoff_hz * max(bar.radius_time_s for bar in bars)
 
 
 def low_pass_words(result: ShotResult) -> str:

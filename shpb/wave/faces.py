@@ -9,7 +9,8 @@ import numpy as np
 from shpb.arrays import FloatArray, frozen
 from shpb.errors import InputError
 from shpb.pulse.foot import Foot, pick_foot
-from shpb.pulse.pulses import TAPER_RADII, Pulse, Pulses
+from shpb.pulse.pulse import Pulse, Pulses
+from shpb.pulse.pulses import TAPER_RADII
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import Specimen
 from shpb.settings import Alignment, Settings
@@ -71,7 +72,7 @@ def low_pass_of(rig: Rig, settings: Settings) -> LowPass:
     """The one low-pass of a rig: from the bar with the lower c0/a, or as the settings state it."""
     if settings.cutoff_hz is not None:
         return LowPass(settings.cutoff_hz)
-    slower = min(bar.wave_speed_m_s / bar.radius_m for bar in (rig.incident_bar, rig.transmitted_bar))
+    slower = min(1 / bar.radius_time_s for bar in (rig.incident_bar, rig.transmitted_bar))
     return LowPass(settings.cutoff_fa_c0 * slower)
 
 
@@ -142,7 +143,7 @@ def _common_grid(pulses: Pulses, rig: Rig) -> Grid:
     travel_i = rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
     travel_t = rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s
     front = pulses.arrivals.incident_s + travel_i
-    start = front - _BEFORE_RADII * rig.incident_bar.radius_m / rig.incident_bar.wave_speed_m_s
+    start = front - _BEFORE_RADII * rig.incident_bar.radius_time_s
     stop = min(
         pulses.incident.window_s[1] + travel_i,
         pulses.reflected.window_s[1] - travel_i,
@@ -160,7 +161,7 @@ def _common_grid(pulses: Pulses, rig: Rig) -> Grid:
 
 def _whole(grid: Grid, low_pass: LowPass, rig: Rig) -> int:
     """Samples up to which the taper of the windows, smeared by the low-pass, is not felt."""
-    unit = max(bar.radius_m / bar.wave_speed_m_s for bar in (rig.incident_bar, rig.transmitted_bar))
+    unit = max(bar.radius_time_s for bar in (rig.incident_bar, rig.transmitted_bar))
     return max(grid.samples - int((TAPER_RADII * unit + 2.0 / low_pass.cutoff_hz) / grid.interval_s), 0)
 
 
@@ -168,7 +169,7 @@ def _feet_at_faces(
     pulses: Pulses, carried: tuple[CarriedPulse, CarriedPulse, CarriedPulse], grid: Grid, rig: Rig
 ) -> tuple[Foot | None, ...]:
     """Pick all three feet at the faces, with the same picker, where dispersion no longer rounds them."""
-    unit = rig.incident_bar.radius_m / rig.incident_bar.wave_speed_m_s
+    unit = rig.incident_bar.radius_time_s
     stop = int((_BEFORE_RADII + _PICK_RADII) * unit / grid.interval_s)
     feet = []
     for pulse, at_face in zip(pulses, carried, strict=True):

@@ -1,6 +1,7 @@
 """The demo shots through the whole chain, against the truth of the forward model.
 
-Over the span that counts: stress within 1 %, strain within 1 %, rate within 2 % (root mean square relative to the truth's).
+Over the span that counts: stress within 1 %, strain within 1 %, rate within 2 % (root mean square by
+that of the truth).
 """
 
 from __future__ import annotations

@@ -9,7 +9,7 @@ import numpy as np
 import pytest
 
 from shpb.pulse.arrivals import geometric_arrivals
-from shpb.pulse.pulses import Pulse, Pulses
+from shpb.pulse.pulse import Pulse, Pulses
 from shpb.pulse.zero_line import ZeroLine
 from shpb.quantity import Quantity
 from shpb.response.balance import face_indentation_m, work_balance

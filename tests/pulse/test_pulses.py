@@ -10,7 +10,8 @@ import pytest
 
 from shpb.pulse.arrivals import geometric_arrivals
 from shpb.pulse.front import UnusableShotError
-from shpb.pulse.pulses import Pulses, find_pulses
+from shpb.pulse.pulse import Pulses
+from shpb.pulse.pulses import find_pulses
 from shpb.pulse.strain import gauge_strain
 from shpb.quantity import Quantity
 from shpb.record.record import Record

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from shpb.arrays import FloatArray
-from shpb.pulse.pulses import Pulse
+from shpb.pulse.pulse import Pulse
 from shpb.rig.gauge import Gauge
 from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Finding, Weight
