@@ -4,7 +4,8 @@ References
 ----------
 Impact of unequal bars: W. Johnson, Impact Strength of Materials (1972), chapter 1 (from memory). Shaper:
 S. Nemat-Nasser, J. B. Isaacs, J. E. Starrett, Proc. R. Soc. A 435 (1991) 371-391; D. J. Frew,
-M. J. Forrestal, W. Chen, Exp. Mech. 42 (2002) 93-106. The shaper's constants here are invented, not those of a published copper.
+M. J. Forrestal, W. Chen, Exp. Mech. 42 (2002) 93-106. The shaper's constants here are invented, not those of a
+published copper.
 """
 
 from __future__ import annotations

@@ -11,6 +11,7 @@ from shpb.errors import InputError
 
 _SHARE_OF_PEAK = 0.10  # a front is a lasting excursion beyond a tenth of the trace's peak
 _SIGNAL_TO_NOISE = 8.0
+_NOISE_SAMPLES = 10_000  # enough to know the noise to 1 %; fronts among them do no harm
 
 
 class UnusableShotError(InputError):
@@ -85,11 +86,11 @@ def first_front(strain: FloatArray, sample_interval_s: float, smoothing_s: float
     smoothing_s : float
         Length of the running mean that keeps single spikes out [s].
     """
-    width = max(int(smoothing_s / sample_interval_s), 1)
+    width = max(round(smoothing_s / sample_interval_s), 1)
     smooth = moving_mean(strain, width)
     magnitude = np.abs(smooth)
     peak = float(magnitude.max())
-    noise = white_noise(strain[: max(strain.size // 50, 64)])
+    noise = white_noise(strain[:_NOISE_SAMPLES])
     if peak <= _SIGNAL_TO_NOISE * noise / np.sqrt(width) or peak == 0.0:
         return None
     # In a noisy trace a tenth of the peak is no more than noise: six standard deviations are.
