@@ -1,7 +1,5 @@
 """Shot lists: what spreadsheets write, equivalence with sheets, and every refusal by line and column."""
 
-
-
 from __future__ import annotations
 
 import re
