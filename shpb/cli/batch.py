@@ -4,14 +4,16 @@ from __future__ import annotations
 
 import os
 from collections.abc import Callable, Iterator, Sequence
-from concurrent.futures import ProcessPoolExecutor, as_completed
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TypeVar
+from typing import TYPE_CHECKING, TypeVar
 
 from shpb.errors import InputError
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
+
+if TYPE_CHECKING:
+    from concurrent.futures import Executor
 
 T = TypeVar("T")
 R = TypeVar("R")
@@ -66,7 +68,6 @@ def gather(sources: Sequence[Path], rig_file: Path | None) -> list[Task]:
 
 def _sheets(sources: Sequence[Path], errors: list[InputError]) -> Iterator[tuple[Path, ShotSheet]]:
     from shpb.rig.sheet_file import read_sheet
-    from shpb.rig.shot_list import read_shot_list
 
     for source in sources:
         try:
@@ -76,6 +77,8 @@ def _sheets(sources: Sequence[Path], errors: list[InputError]) -> Iterator[tuple
             elif source.suffix.lower() == ".toml":
                 yield source, read_sheet(source)
             else:
+                from shpb.rig.shot_list import read_shot_list
+
                 for sheet in read_shot_list(source):
                     yield source, sheet
         except InputError as error:
@@ -119,13 +122,28 @@ def _together(errors: Sequence[InputError]) -> InputError:
     return InputError("\n".join(unique))
 
 
+def start_workers(count: int, prepare: Callable[[], None]) -> Executor | None:
+    """Start worker processes ahead of their work, each running ``prepare`` meanwhile; None for a single one."""
+    if count <= 1:
+        return None
+    from concurrent.futures import ProcessPoolExecutor
+
+    pool = ProcessPoolExecutor(count, initializer=prepare)
+    pool.submit(int)  # the first task starts the processes
+    return pool
+
+
 def in_parallel(
-    function: Callable[[T], R], items: Sequence[T], workers: int, done: Callable[[int], None]
+    function: Callable[[T], R],
+    items: Sequence[T],
+    workers: int,
+    done: Callable[[int], None],
+    pool: Executor | None = None,
 ) -> Iterator[tuple[int, R]]:
     """Yield (index, result) as they come; one worker stays in this process.
 
     ``function`` must not raise: it returns what went wrong as part of its result, so that one bad shot
-    never stops the rest.
+    never stops the rest. ``pool`` are workers started ahead; it is shut down at the end.
     """
     workers = min(workers, len(items))
     if workers <= 1:
@@ -133,11 +151,13 @@ def in_parallel(
             yield index, function(item)
             done(index + 1)
         return
-    # Few items a parcel keeps both workers busy to the end; many spare the traffic between processes.
+    from concurrent.futures import ProcessPoolExecutor, as_completed
+
+    # Few items a parcel keeps all workers busy to the end; many spare the traffic between processes.
     size = max(1, min(16, len(items) // (4 * workers)))
     parcels = [range(start, min(start + size, len(items))) for start in range(0, len(items), size)]
-    with ProcessPoolExecutor(workers) as pool:
-        futures = {pool.submit(_several, function, [items[i] for i in parcel]): parcel for parcel in parcels}
+    with pool or ProcessPoolExecutor(workers) as crew:
+        futures = {crew.submit(_several, function, [items[i] for i in parcel]): parcel for parcel in parcels}
         finished = 0
         for future in as_completed(futures):
             for index, result in zip(futures[future], future.result(), strict=True):

@@ -29,13 +29,21 @@ def run(options: argparse.Namespace) -> int:
     """Write the campaign, then reduce it as ``shpb reduce`` would."""
     import sys
 
-    from shpb.cli.batch import Task, gather, usual_workers
-    from shpb.cli.reduce import Outputs, reduce_all
+    from shpb.cli.batch import Task, gather, start_workers, usual_workers
+    from shpb.cli.reduce import Outputs, load_what_workers_need, reduce_all
     from shpb.cli.status import DONE, REJECTED
     from shpb.demo.campaign import write_demo
     from shpb.view.text import printable
 
-    campaign = write_demo(options.folder)
+    workers = usual_workers()
+    # While the records are computed the workers load what they need.
+    pool = None if options.write_only else start_workers(workers, load_what_workers_need)
+    try:
+        campaign = write_demo(options.folder)
+    except BaseException:
+        if pool is not None:
+            pool.shutdown(wait=False, cancel_futures=True)
+        raise
     print(f"demo campaign written to {printable(campaign.folder)}", file=sys.stderr)
     if options.write_only:
         return DONE
@@ -46,7 +54,8 @@ def run(options: argparse.Namespace) -> int:
         Outputs(folder=campaign.folder / "results", figure="png"),
         as_json=options.json,
         full=False,
-        workers=usual_workers(),
+        workers=workers,
+        pool=pool,
     )
     # Rejected shots are part of the demo: it is done when all is as planned.
     return DONE if status == REJECTED else status

@@ -12,6 +12,8 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from concurrent.futures import Executor
+
     from shpb.cli.batch import Task
     from shpb.view.listing import ListRow
 
@@ -177,8 +179,26 @@ def file_stem(shot_id: str) -> str:
     return f"{safe[:80]}-{hashlib.sha256(shot_id.encode()).hexdigest()[:8]}"
 
 
+def load_what_workers_need() -> None:
+    """Import what reducing and drawing a shot needs, so that the first shot need not wait for it."""
+    import shpb.record.read
+    import shpb.reduction
+    import shpb.rig.overrides
+    import shpb.store.shot_file
+    import shpb.view.terminal  # noqa: F401
+    from shpb.view.figure import load_drawing
+
+    load_drawing()
+
+
 def reduce_all(
-    tasks: Sequence[Task], outputs: Outputs, *, as_json: bool, full: bool, workers: int = 1
+    tasks: Sequence[Task],
+    outputs: Outputs,
+    *,
+    as_json: bool,
+    full: bool,
+    workers: int = 1,
+    pool: Executor | None = None,
 ) -> int:
     """Reduce every task, print verdicts first, and return the exit status."""
     from shpb.cli.batch import in_parallel
@@ -188,7 +208,7 @@ def reduce_all(
     work = _Work(outputs, full, figure_later=one and not as_json)
     found: dict[int, Done] = {}
     with progress(len(tasks), "reducing shots") as step:
-        for index, done in in_parallel(work, tasks, workers, step if not one else lambda _: None):
+        for index, done in in_parallel(work, tasks, workers, step if not one else _silent, pool):
             found[index] = done
     finished = [found[index] for index in range(len(tasks))]
     if as_json:
@@ -198,6 +218,10 @@ def reduce_all(
     else:
         _print_several(finished, outputs, full=full)
     return _status(finished)
+
+
+def _silent(done: int) -> None:
+    """Show no progress."""
 
 
 def _print_json(finished: Sequence[Done]) -> None:

@@ -102,6 +102,14 @@ def save_figure(result: ShotResult, path: Path) -> Path:
     return path
 
 
+def load_drawing() -> None:
+    """Load all that a first figure would have to wait for."""
+    import matplotlib.backends.backend_agg
+    import matplotlib.figure  # noqa: F401
+
+    _style()
+
+
 def _style() -> AbstractContextManager[None]:
     """Matplotlib's own defaults with ours on top, whatever the user's style; its back end is left alone."""
     import matplotlib
