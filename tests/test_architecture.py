@@ -15,12 +15,13 @@ PACKAGE = Path(shpb.__file__).parent
 MODULES = sorted(path for path in PACKAGE.rglob("*.py"))
 
 # What each folder may import, besides itself and the ground.
-GROUND = {"errors", "quantity", "arrays", "version"}
+GROUND = {"errors", "quantity", "arrays", "version", "whole_file"}
 ALLOWED: dict[str, set[str]] = {
     "errors": set(),
     "quantity": set(),
     "version": set(),
     "arrays": set(),
+    "whole_file": set(),
     "settings": set(),
     "rig": {"settings"},
     "record": {"rig"},

@@ -10,7 +10,7 @@ import numpy as np
 
 from shpb.arrays import FloatArray
 from shpb.reduction import ShotResult
-from shpb.store.atomic import whole_file
+from shpb.whole_file import whole_file
 
 _COLUMNS: tuple[tuple[str, Callable[[ShotResult], FloatArray]], ...] = (
     ("time_us", lambda r: 1e6 * r.response.time_s),

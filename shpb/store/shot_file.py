@@ -23,10 +23,10 @@ from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 from shpb.settings import Settings
 from shpb.store import layout
-from shpb.store.atomic import whole_file
 from shpb.store.plain import from_plain, to_plain
 from shpb.trust.finding import Finding
 from shpb.version import VERSION
+from shpb.whole_file import whole_file
 
 if TYPE_CHECKING:
     import h5py

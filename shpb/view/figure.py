@@ -7,12 +7,11 @@ figure of its own, without any interactive state of matplotlib, whose back end s
 from __future__ import annotations
 
 import io
-import os
 from contextlib import AbstractContextManager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from shpb.errors import InputError, StoreError
+from shpb.errors import InputError
 from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION
 from shpb.trust.finding import Verdict
@@ -22,6 +21,7 @@ from shpb.view.ink import BODY, INK, RC, SMALL
 from shpb.view.page import HEIGHT, WIDTH, Page
 from shpb.view.text import rounded
 from shpb.view.wording import formulas, processing_words, telling, verdict_sentence
+from shpb.whole_file import whole_file
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -98,7 +98,8 @@ def save_figure(result: ShotResult, path: Path) -> Path:
     content = io.BytesIO()
     with _style():
         figure.savefig(content, format=file_format, dpi=DPI, **options)
-    _write(path, content.getvalue())
+    with whole_file(path) as part:
+        part.write_bytes(content.getvalue())
     return path
 
 
@@ -117,20 +118,6 @@ def _style() -> AbstractContextManager[None]:
     own = ("backend", "interactive", "toolbar")
     style: dict[Any, Any] = {k: v for k, v in matplotlib.rcParamsDefault.items() if not k.startswith(own)}
     return matplotlib.rc_context(style | RC)
-
-
-def _write(path: Path, content: bytes) -> None:
-    temporary = path.with_name(f".{path.name}.{os.getpid()}.part")
-    try:
-        temporary.write_bytes(content)
-        os.replace(temporary, path)
-    except OSError as error:
-        temporary.unlink(missing_ok=True)
-        raise StoreError(
-            f"the figure could not be written ({error.strerror or error})",
-            where=str(path),
-            mend="Check that the folder exists and has room, and that no other program holds the file open",
-        ) from error
 
 
 # --- what stands where -----------------------------------------------------------------------------

@@ -168,7 +168,7 @@ def test_a_full_disk_leaves_the_earlier_result(
             raise OSError(28, "No space left on device")
 
         with monkeypatch.context() as patch:
-            patch.setattr(f"shpb.store.atomic.os.{name}", refuse)
+            patch.setattr(f"shpb.whole_file.os.{name}", refuse)
             with pytest.raises(StoreError, match="No space left on device"):
                 save_shot(result, path)
         assert path.read_bytes() == before

@@ -299,9 +299,13 @@ def test_another_suffix_is_refused(shots: dict[str, ShotResult], tmp_path: Path,
     assert not list(tmp_path.iterdir())
 
 
-def test_a_missing_folder_is_an_error_in_words(shots: dict[str, ShotResult], tmp_path: Path) -> None:
-    with pytest.raises(StoreError, match="Check that the folder exists"):
-        save_figure(shots["good"], tmp_path / "none" / "a.png")
+def test_a_folder_is_made_and_a_file_in_its_place_is_an_error_in_words(
+    shots: dict[str, ShotResult], tmp_path: Path
+) -> None:
+    assert save_figure(shots["good"], tmp_path / "none" / "a.png").exists()
+    (tmp_path / "file").write_text("in the way")
+    with pytest.raises(StoreError, match="Check free space and permission of the folder"):
+        save_figure(shots["good"], tmp_path / "file" / "a.png")
 
 
 def test_a_failure_leaves_the_old_figure_and_nothing_else(
