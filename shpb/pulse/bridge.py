@@ -14,7 +14,7 @@ from __future__ import annotations
 
 from typing import NamedTuple
 
-from shpb.arrays import FloatArray, require_finite
+from shpb.arrays import FloatArray
 from shpb.rig.gauge import Arrangement, Gauge
 
 
@@ -69,19 +69,18 @@ def strain_from_voltage(voltage_v: FloatArray, gauge: Gauge, poisson_ratio: floa
     float array
         Strain [1]. A new array; the input is not changed.
 
-    Raises
-    ------
-    InputError
-        If ``voltage_v`` holds a NaN or infinity.
+    Where a voltage is NaN or infinite, so is the strain: :func:`shpb.pulse.strain.gauge_strain` looks first.
     """
-    require_finite(voltage_v, where="voltage_v", mend="Cut the record before that sample or export it again")
     form = bridge_form(gauge.arrangement, poisson_ratio)
-    ratio = voltage_v * (gauge.tension_sign / (gauge.excitation_v * gauge.gain))
+    strain = voltage_v * (gauge.tension_sign / (gauge.excitation_v * gauge.gain))  # r, worked on in place
     factor = form.n / gauge.effective_gauge_factor
     if gauge.linear_amplifier or form.m == 0:
-        ratio *= factor / form.B
-        return ratio
-    strain: FloatArray = factor * ratio / (form.B - form.m * ratio)
+        strain *= factor / form.B
+        return strain
+    below = strain * -form.m
+    below += form.B
+    strain *= factor
+    strain /= below
     return strain
 
 

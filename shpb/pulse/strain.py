@@ -82,10 +82,11 @@ def _station(record: Record, gauge: Gauge, bar: Bar, kind: TestKind) -> StationS
         )
     # strain_from_voltage gives tension positive: turn it once to loading positive.
     sign = 1.0 if kind is TestKind.TENSION else -1.0
-    sides = [
-        sign * strain_from_voltage(voltage - _first_zero(voltage), gauge, bar.poisson_ratio)
-        for voltage in voltages
-    ]
+    sides = []
+    for voltage in voltages:
+        side = strain_from_voltage(voltage - _first_zero(voltage), gauge, bar.poisson_ratio)
+        side *= sign
+        sides.append(side)
     axial = sides[0] if len(sides) == 1 else 0.5 * (sides[0] + sides[1])
     bending = None if len(sides) == 1 else frozen(0.5 * (sides[0] - sides[1]))
     return StationStrain(frozen(axial), bending, np.stack(voltages))

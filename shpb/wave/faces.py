@@ -14,7 +14,7 @@ from shpb.pulse.pulses import TAPER_RADII
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import Specimen
 from shpb.settings import Alignment, Settings
-from shpb.wave.propagation import CarriedPulse, Grid, LowPass, carry_pulse
+from shpb.wave.propagation import BarTransfer, CarriedPulse, Grid, LowPass, bar_transfer, padded_length
 
 # The common clock begins this long before the front, in a/c0 of the incident bar.
 _BEFORE_RADII = 12.0
@@ -84,18 +84,15 @@ def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Setti
     """
     low_pass = low_pass_of(rig, settings)
     x_i, x_t = rig.incident_gauge.to_specimen_m, rig.transmitted_gauge.to_specimen_m
-    bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
+    bar_i = rig.incident_bar
     grid = _common_grid(pulses, rig)
 
+    distances = {"incident": x_i, "reflected": -x_i, "transmitted": -x_t}
+    transfers = _transfers(pulses, distances, rig, grid, low_pass, settings)
+
     def carried(pulse: Pulse, shift_s: float = 0.0) -> CarriedPulse:
-        bar, distance = {
-            "incident": (bar_i, x_i),
-            "reflected": (bar_i, -x_i),
-            "transmitted": (bar_t, -x_t),
-        }[pulse.name]
-        return carry_pulse(
-            pulse.strain, pulse.start_s, grid, distance, bar, low_pass, settings.dispersion, shift_s
-        )
+        transfer = transfers[pulse.name]
+        return transfer.carry(pulse.strain, pulse.start_s, grid, distances[pulse.name], shift_s)
 
     incident, reflected, transmitted = (carried(pulse) for pulse in pulses)
     feet = _feet_at_faces(pulses, (incident, reflected, transmitted), grid, rig)
@@ -136,6 +133,25 @@ def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Setti
         transmitted_shift_s=shift_t,
         untuned=physical,
     )
+
+
+def _transfers(
+    pulses: Pulses, distances: dict[str, float], rig: Rig, grid: Grid, low_pass: LowPass, settings: Settings
+) -> dict[str, BarTransfer]:
+    """What the bars do to each pulse; one FFT length for all, so that equal bars are solved once."""
+    bars = {"incident": rig.incident_bar, "reflected": rig.incident_bar, "transmitted": rig.transmitted_bar}
+    length = max(
+        padded_length(pulse.strain.size, distances[pulse.name], bars[pulse.name], low_pass, grid.interval_s)
+        for pulse in pulses
+    )
+    solved: dict[tuple[float, float, float], BarTransfer] = {}
+    transfers = {}
+    for name, bar in bars.items():
+        kind = (float(bar.radius_m), float(bar.wave_speed_m_s), float(bar.poisson_ratio))
+        if kind not in solved:
+            solved[kind] = bar_transfer(bar, grid.interval_s, length, low_pass, settings.dispersion)
+        transfers[name] = solved[kind]
+    return transfers
 
 
 def _common_grid(pulses: Pulses, rig: Rig) -> Grid:

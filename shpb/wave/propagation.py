@@ -19,7 +19,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from shpb.arrays import ComplexArray, FloatArray
+from shpb.arrays import FloatArray
 from shpb.rig.bar import Bar
 from shpb.settings import Dispersion
 from shpb.wave.pochhammer import FirstMode, first_mode_at_frequency
@@ -81,14 +81,60 @@ class Grid(NamedTuple):
         return time
 
 
-def residual_phase(frequency_hz: FloatArray, distance_m: float, bar: Bar, mode: FirstMode) -> ComplexArray:
-    """exp(-i w x (1/c - 1/c0)): what dispersion adds to a rigid shift over ``distance_m``.
+@dataclass(frozen=True, slots=True, eq=False)
+class BarTransfer:
+    """What one bar does to the spectrum of a pulse, for one FFT length: made once, used for every pulse in it.
 
-    ``distance_m`` is positive along the travel of the pulse, negative back to where it came from.
+    Arrays are over the frequencies that pass the low-pass, shape (bins,).
     """
-    slowness = (1.0 / mode.phase_speed - 1.0) / bar.wave_speed_m_s
-    phase: ComplexArray = np.exp(-2j * np.pi * frequency_hz * distance_m * slowness)
-    return phase
+
+    bar: Bar
+    interval_s: float
+    length: int  # of the FFT
+    low_pass: LowPass
+    frequency_hz: FloatArray
+    slowness_s_m: FloatArray  # 1/c - 1/c0: what dispersion adds to a rigid shift
+    force_factor: FloatArray | None  # surface strain to F/(E A); None without amplitude correction
+    velocity_factor: FloatArray | None  # surface strain to v/c0
+
+    def carry(
+        self, strain: FloatArray, start_s: float, grid: Grid, distance_m: float, shift_s: float = 0.0
+    ) -> CarriedPulse:
+        """Carry one windowed pulse; arguments as in :func:`carry_pulse`."""
+        delay = start_s + distance_m / self.bar.wave_speed_m_s + shift_s - grid.start_s
+        whole = int(np.floor(delay / self.interval_s))
+        rest = delay - whole * self.interval_s
+        spectrum = np.fft.rfft(strain, self.length)
+        phase = -2j * np.pi * self.frequency_hz * (rest + distance_m * self.slowness_s_m)
+        passed = spectrum[: self.frequency_hz.size] * (self.low_pass.gain(self.frequency_hz) * np.exp(phase))
+
+        def on_grid(factor: FloatArray | None) -> FloatArray:
+            carried = np.zeros_like(spectrum)
+            carried[: passed.size] = passed if factor is None else passed * factor
+            circular = np.fft.irfft(carried, self.length)
+            return _placed(circular, whole, self.low_pass, self.interval_s, grid.samples)
+
+        surface = on_grid(None)
+        return CarriedPulse(
+            surface,
+            surface if self.force_factor is None else on_grid(self.force_factor),
+            surface if self.velocity_factor is None else on_grid(self.velocity_factor),
+        )
+
+
+def bar_transfer(
+    bar: Bar, interval_s: float, length: int, low_pass: LowPass, dispersion: Dispersion
+) -> BarTransfer:
+    """Solve the first mode of a bar at the frequencies of an FFT that pass the low-pass."""
+    frequency: FloatArray = np.fft.rfftfreq(length, interval_s).astype(np.float64, copy=False)
+    frequency = frequency[: int(np.searchsorted(frequency, low_pass.stop_hz))]
+    slowness, force, velocity = np.zeros_like(frequency), None, None
+    if dispersion is not Dispersion.NONE:
+        mode = first_mode_at_frequency(frequency * bar.radius_time_s, bar.poisson_ratio)
+        slowness = (1.0 / mode.phase_speed - 1.0) / bar.wave_speed_m_s
+        if dispersion is Dispersion.FULL:
+            force, velocity = capped_factor(mode, mode.stress), capped_factor(mode, mode.velocity)
+    return BarTransfer(bar, interval_s, length, low_pass, frequency, slowness, force, velocity)
 
 
 def carry_pulse(
@@ -127,36 +173,9 @@ def carry_pulse(
     CarriedPulse
         Each array of shape (grid.samples,).
     """
-    interval = grid.interval_s
-    delay = (start_s + distance_m / bar.wave_speed_m_s + shift_s - grid.start_s) / interval
-    whole = int(np.floor(delay))
-    length = _padded_length(strain.size, distance_m, bar, low_pass, interval)
-    spectrum = np.fft.rfft(strain, length)
-    frequency: FloatArray = np.fft.rfftfreq(length, interval).astype(np.float64, copy=False)
-    passed = int(np.searchsorted(frequency, low_pass.stop_hz))
-    frequency = frequency[:passed]
-
-    transfer: ComplexArray = low_pass.gain(frequency) * np.exp(
-        -2j * np.pi * frequency * (delay - whole) * interval
-    )
-    force = velocity = None
-    if dispersion is not Dispersion.NONE:
-        mode = first_mode_at_frequency(frequency * bar.radius_m / bar.wave_speed_m_s, bar.poisson_ratio)
-        transfer *= residual_phase(frequency, distance_m, bar, mode)
-        if dispersion is Dispersion.FULL:
-            force, velocity = capped_factor(mode, mode.stress), capped_factor(mode, mode.velocity)
-
-    def on_grid(factor: FloatArray | None) -> FloatArray:
-        carried = np.zeros_like(spectrum)
-        carried[:passed] = spectrum[:passed] * (transfer if factor is None else transfer * factor)
-        return _placed(np.fft.irfft(carried, length), whole, low_pass, interval, grid.samples)
-
-    surface = on_grid(None)
-    return CarriedPulse(
-        surface,
-        surface if force is None else on_grid(force),
-        surface if velocity is None else on_grid(velocity),
-    )
+    length = padded_length(strain.size, distance_m, bar, low_pass, grid.interval_s)
+    transfer = bar_transfer(bar, grid.interval_s, length, low_pass, dispersion)
+    return transfer.carry(strain, start_s, grid, distance_m, shift_s)
 
 
 def capped_factor(mode: FirstMode, factor: FloatArray) -> FloatArray:
@@ -167,11 +186,11 @@ def capped_factor(mode: FirstMode, factor: FloatArray) -> FloatArray:
     return 1.0 + np.where(share > 0, factor - 1.0, 0.0) * share
 
 
-def _padded_length(samples: int, distance_m: float, bar: Bar, low_pass: LowPass, interval_s: float) -> int:
-    """Window and the longest residual delay and ringing that may stand on either side of it."""
-    # The slowest group of the first mode travels at 0.37 c0 (METALS: 0.38 at nu = 0.3), so its
-    # residual delay is below 1.7 x/c0.
-    residual = 1.7 * abs(distance_m) / bar.wave_speed_m_s
+def padded_length(samples: int, distance_m: float, bar: Bar, low_pass: LowPass, interval_s: float) -> int:
+    """Window and the longest residual delay and ringing that may stand on either side of it, for a fast FFT."""
+    # The slowest group of the first mode: above 0.36 c0 from nu = 0.25 on, above 0.14 c0 for any (solver).
+    slowest = 0.36 if bar.poisson_ratio >= 0.25 else 0.14
+    residual = (1 / slowest - 1) * abs(distance_m) / bar.wave_speed_m_s
     extra = int(np.ceil((residual + 2 * low_pass.settling_s) / interval_s))
     return fast_length(samples + extra)
 
