@@ -12,7 +12,7 @@ from shpb.record.record import Record
 from shpb.reduction import ShotResult, reduce
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
-from shpb.settings import DEFAULT, Settings
+from shpb.settings import DEFAULT, Alignment, Settings
 from shpb.trust.finding import Finding, Verdict, Weight, verdict_of
 from shpb.trust.judge import all_checks, check_name
 from tests.synthetic import FaceStrains, copper, gauge, record_of, rig, sheet, steel_bar, uniform_plastic_shot
@@ -142,6 +142,18 @@ def test_feet_tell_a_wrong_distance(faces: FaceStrains) -> None:
     # 15 cm: the pulse is there 30 us before anything is expected, and its foot in what should be quiet.
     worse = rig(transmitted_gauge=gauge("B", 0.75))
     assert finding(reduce(record, worse, good_sheet()), "quiet before pulse").weight is Weight.REJECT
+
+
+def test_feet_moved_further_than_physics_leaves_open(faces: FaceStrains) -> None:
+    settings = DEFAULT.replaced(alignment=Alignment.FEET)
+    lab = rig()
+    assert "tuned shift" not in {f.check for f in run(faces).findings}
+    record = record_of(faces, lab, noise_v=0.002)
+    # 6 cm too far: 12 us of tuning hide it from R(t), not from this check (transit 1.4 us).
+    wrong = rig(transmitted_gauge=gauge("B", 0.66))
+    said = finding(reduce(record, wrong, good_sheet(), settings), "tuned shift")
+    assert said.weight is Weight.REJECT
+    assert "without it" in said.measured
 
 
 def test_a_window_that_begins_on_the_pulse(faces: FaceStrains) -> None:

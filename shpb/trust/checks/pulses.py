@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from shpb.pulse.zero_line import PLAUSIBLE_DRIFT_PER_S
+from shpb.settings import Alignment
 from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Finding, Weight
 from shpb.trust.judge import check
@@ -134,6 +135,28 @@ def feet(evidence: Evidence) -> Finding | None:
         limit=f"{limit * 1e6:.1f} us, reject beyond {3 * limit * 1e6:.1f} us",
         source="settings misalignment_limit_s and a quarter of the incident rise; common practice",
         action="Measure gauge distances and wave speed again; look for a gap between specimen and bars.",
+    )
+
+
+@check
+def tuned_shift(evidence: Evidence) -> Finding | None:
+    """Feet laid on each other: allowed only by what physics leaves open (tuning on equilibrium is circular)."""
+    faces, sheet = evidence.faces, evidence.sheet
+    if evidence.settings.alignment is not Alignment.FEET:
+        return None
+    transit = sheet.specimen.transit_time_s or 0.0
+    # The transmitted foot may be moved by the specimen's transit besides what the picker cannot tell.
+    open_s = transit + faces.interval_s + 2 * faces.u_misalignment_s
+    moved = max(abs(faces.reflected_shift_s), abs(faces.transmitted_shift_s))
+    untuned = evidence.response.untuned_equilibrium
+    beside = "" if untuned is None else f"; R {100 * untuned.mean_ratio:.1f} % without it"
+    return Finding(
+        check="tuned shift",
+        weight=Weight.FINE if moved <= open_s else Weight.REJECT if moved > 2 * open_s else Weight.NOTE,
+        measured=f"feet moved by up to {1e6 * moved:.2f} us{beside}",
+        limit=f"{1e6 * open_s:.2f} us: transit, one sample and the picker's scatter; reject beyond twice that",
+        source="physical uncertainty of the travel times; common practice",
+        action="Use travel times (alignment physical); measure gauge distances and wave speed instead of tuning.",
     )
 
 
