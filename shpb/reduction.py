@@ -13,6 +13,7 @@ from shpb.rig.overrides import settings_for
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 from shpb.settings import Settings
+from shpb.trust.budget import Budget, uncertainty_budget
 from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Finding, Verdict, verdict_of
 from shpb.trust.judge import judge
@@ -40,6 +41,7 @@ class ShotResult:
     pulses: Pulses
     faces: FacePulses
     response: Response
+    budget: Budget
     findings: tuple[Finding, ...]
 
     @property
@@ -104,5 +106,6 @@ def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings | None
         pulses=pulses,
         faces=faces,
         response=response,
+        budget=uncertainty_budget(evidence),
         findings=judge(evidence),
     )

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from shpb.pulse.bridge import bridge_output
-from shpb.quantity import Quantity
+from shpb.quantity import Quantity, as_quantity
 from shpb.record.record import Record
 from shpb.rig.bar import Bar, Striker
 from shpb.rig.gauge import Arrangement, Gauge, TestKind
@@ -37,7 +37,7 @@ def steel_bar(**changes: object) -> Bar:
 
 def gauge(channel: str, to_specimen_m: float, **changes: object) -> Gauge:
     values: dict[str, object] = {
-        "to_specimen_m": Q(to_specimen_m),
+        "to_specimen_m": as_quantity(to_specimen_m),
         "channels": (channel,),
         "gauge_factor": Q(2.1),
         "excitation_v": Q(5.0),

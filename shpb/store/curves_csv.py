@@ -17,6 +17,8 @@ _COLUMNS: tuple[tuple[str, Callable[[ShotResult], FloatArray]], ...] = (
     ("counts", lambda r: _counts(r)),  # noqa: PLW0108 - defined below
     ("true_strain", lambda r: r.response.curve.true_strain),
     ("true_stress_MPa", lambda r: 1e-6 * r.response.curve.true_stress_pa),
+    ("u_true_strain", lambda r: r.budget.u_true_strain),
+    ("u_true_stress_MPa", lambda r: 1e-6 * r.budget.u_true_stress_pa),
     ("true_strain_rate_per_s", lambda r: r.response.curve.true_strain_rate_per_s),
     ("strain_1w", lambda r: r.response.one_wave.strain),
     ("stress_1w_MPa", lambda r: 1e-6 * r.response.one_wave.stress_pa),

@@ -73,7 +73,28 @@ WAVE: tuple[Field, ...] = (
 TRUST: tuple[Field, ...] = (
     Field("time", "s", "Time since the front reached the incident face", lambda r: r.response.time_s),
     Field("u_equilibrium_ratio", "", "Measurement floor of R", lambda r: r.response.equilibrium.floor),
+    Field("u_true_strain", "", "Standard uncertainty of true strain", lambda r: r.budget.u_true_strain),
+    Field("u_true_stress", "Pa", "Standard uncertainty of true stress", lambda r: r.budget.u_true_stress_pa),
 )
+
+_UNITS = {"stress": "Pa", "strain": "", "strain_rate": "1/s"}
+
+
+def budget_fields(result: ShotResult) -> tuple[Field, ...]:
+    """Standard uncertainty of each analysis, whole and the part that all shots of the rig share."""
+
+    def field(prefix: str, label: str, name: str, array: FloatArray) -> Field:
+        what, wave = name.rsplit("_", 1)
+        words = f"{label} of {what.replace('_', ' ')}, {'one' if wave == '1w' else 'three'}-wave"
+        return Field(f"{prefix}_{name}", _UNITS[what], words, lambda _: array)
+
+    budget = result.budget
+    whole = [field("u", "Standard uncertainty", *item) for item in budget.u.items()]
+    shared = [
+        field("u_shared", "Shared part of the standard uncertainty", *item)
+        for item in budget.u_shared.items()
+    ]
+    return (*whole, *shared)
 
 
 class Attribute(NamedTuple):

@@ -163,7 +163,10 @@ def _write(file: h5py.File, result: ShotResult) -> None:
     _write_attributes(response, layout.RESPONSE_ATTRIBUTES, result)
     table = response.create_dataset("flow_stress", data=layout.flow_table(result))
     table.attrs["columns"] = "strain, true stress [Pa], true strain rate [1/s]"
-    trust = _write_fields(file, "trust", layout.TRUST, result, "u_equilibrium_ratio")
+    trust = _write_fields(
+        file, "trust", (*layout.TRUST, *layout.budget_fields(result)), result, "u_true_stress"
+    )
+    trust["budget"] = json.dumps([to_plain(line) for line in result.budget.contributions])
     trust["findings"] = json.dumps([to_plain(finding) for finding in result.findings])
 
 

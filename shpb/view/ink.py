@@ -16,6 +16,7 @@ from shpb.arrays import FloatArray
 INK = "#1a1a1a"  # text, frames
 FAINT = "#8c8c8c"  # what does not count, ticks of lesser weight
 SHADE = "#eeebe4"  # windows, the span that counts
+BAND = "#c3cde6"  # uncertainty about a curve
 DARK = "#15255c"  # CIE lightness about 17
 MIDDLE = "#b0400c"  # about 42
 LIGHT = "#3f95cc"  # about 59

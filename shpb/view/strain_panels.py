@@ -9,7 +9,7 @@ import numpy as np
 from shpb.arrays import FloatArray
 from shpb.reduction import ShotResult
 from shpb.settings import Analysis
-from shpb.view.ink import DARK, DASHES, DOTS, FAINT, INK, MIDDLE, SMALL, Line, Scale, envelope, scale
+from shpb.view.ink import BAND, DARK, DASHES, DOTS, FAINT, INK, MIDDLE, SMALL, Line, Scale, envelope, scale
 from shpb.view.page import frame
 
 if TYPE_CHECKING:
@@ -45,6 +45,7 @@ def draw_curve(axes: Axes, result: ShotResult) -> None:
     part = _drawn(result)
     curves = (response.one_wave, response.three_wave)
     stresses = [(curve.true_strain, curve.true_stress_pa * 1e-6) for curve in curves]
+    _draw_band(axes, result)
     _draw_counting(axes, result, stresses)
     highest = max(float(stress[part].max()) for _, stress in stresses)
     lowest = min(0.0, *(float(stress[part].min()) for _, stress in stresses))
@@ -56,6 +57,18 @@ def draw_curve(axes: Axes, result: ShotResult) -> None:
                   bbox={"facecolor": "white", "edgecolor": INK, "linewidth": 0.7, "pad": 4})  # fmt: skip
     frame(axes, strain_scale(result), scale(lowest - 0.03 * room, highest + 0.06 * room, 6), "",
            "true stress (MPa)")  # fmt: skip
+
+
+def _draw_band(axes: Axes, result: ShotResult) -> None:
+    """Expanded uncertainty of the curve put forward, k = 2, where it counts."""
+    response = result.response
+    if response.span is None:
+        return
+    index = np.arange(*response.span)[:: max((response.span[1] - response.span[0]) // 200, 1)]
+    curve, u = response.curve, 2e-6 * result.budget.u_true_stress_pa[index]
+    strain, stress = np.maximum.accumulate(curve.true_strain[index]), 1e-6 * curve.true_stress_pa[index]
+    axes.fill_between(strain, stress - u, stress + u, color=BAND, linewidth=0, zorder=0.5)
+    axes.text(0.05, 0.94, "band: stress, k = 2", fontsize=SMALL, parse_math=False, transform=axes.transAxes)
 
 
 def draw_rate(axes: Axes, result: ShotResult) -> None:

@@ -16,6 +16,7 @@ from shpb.pulse.pulse import Pulse
 from shpb.record.record import Record, Source
 from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION, Equilibrium
+from shpb.trust.budget import OUTPUTS, flow_stress_uncertainty_pa
 from shpb.version import VERSION
 from shpb.view.wording import cutoff_fa_c0, formulas, verdict_sentence
 
@@ -54,6 +55,7 @@ def shot_json(result: ShotResult) -> Json:
             "sheet": sheet.source,
         },
         "counts": _span(result),
+        "uncertainty": _uncertainty(result),
         "strain_rate": _rate(result),
         "equilibrium": _equilibrium(response.equilibrium),
         "equilibrium_without_tuning": None
@@ -155,6 +157,34 @@ def _span(result: ShotResult) -> Json | None:
         "to_true_strain": response.strain_span[1],
         "from_time_s": response.time_s[start],
         "to_time_s": response.time_s[stop - 1],
+    }
+
+
+def _uncertainty(result: ShotResult) -> Json:
+    """Standard uncertainties at the middle of what counts, of flow stresses, and the ranked budget."""
+    span = result.response.span or result.response.loading
+    middle, budget = (span[0] + span[1]) // 2, result.budget
+    unit = {"stress": "_pa", "strain": "", "strain_rate": "_per_s"}
+
+    def at_middle(values: Mapping[str, Any]) -> Json:
+        named = ((name.rsplit("_", 1), array) for name, array in values.items())
+        return {f"u_{what}_{wave}{unit[what]}": float(array[middle]) for (what, wave), array in named}
+
+    return {
+        "at_mid_span": at_middle(budget.u),
+        "shared_by_all_shots_at_mid_span": at_middle(budget.u_shared),
+        "u_flow_stress_pa": list(flow_stress_uncertainty_pa(budget, result.response)),
+        "budget": [
+            {
+                "source": line.source,
+                "shared": line.shared,
+                "assumed": line.assumed,
+                "share_of_variance": {
+                    f"of_{name}": share for name, share in zip(OUTPUTS, line.share, strict=True)
+                },
+            }
+            for line in budget.contributions
+        ],
     }
 
 

@@ -9,7 +9,8 @@ from __future__ import annotations
 from shpb.record.record import Record
 from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION, Equilibrium, Outcome
-from shpb.settings import Alignment
+from shpb.settings import Alignment, Analysis
+from shpb.trust.budget import OUTPUTS, flow_stress_uncertainty_pa
 from shpb.trust.finding import Finding, Weight
 from shpb.view.listing import ListRow, list_row, list_row_of_error, list_text
 from shpb.view.summary import error_json, json_text, record_json, shot_json
@@ -125,6 +126,7 @@ def _numbers(result: ShotResult, width: int) -> list[str]:
         say("", f"without the moved feet: {equilibrium_words(untuned)}")
     say("", R_DEFINITION + "; the floor is the least R that these gauges can see")
     lines += _flow_lines(result, width)
+    lines += _budget_lines(result, width)
     modulus = result.sheet.specimen.young_modulus_pa
     yield_pa = result.response.yield_back_extrapolated_pa
     if yield_pa is not None and modulus is not None:
@@ -168,12 +170,44 @@ def _flow_lines(result: ShotResult, width: int) -> list[str]:
         strains = ", ".join(f"{point.at_strain:g}" for point in flow)
         return wrapped(f"none at {strains} of {strain_kind(result)}: not in what counts", width, label)
     lines = wrapped(f"{result.response.analysis.value}, true, at {strain_kind(result)}", width, label)
-    for point in flow:
+    for point, u in zip(flow, flow_stress_uncertainty_pa(result.budget, result.response), strict=True):
         value = "not in what counts"
-        if point.stress_pa is not None:
-            value = f"{rounded(point.stress_pa / 1e6):>6} MPa at {rounded(point.rate_per_s):>5} /s true"
+        if point.stress_pa is not None and u is not None:
+            value = (
+                f"{rounded(point.stress_pa / 1e6):>6} MPa, u {rounded(u / 1e6, 2)} MPa, "
+                f"at {rounded(point.rate_per_s):>5} /s true"
+            )
         lines.append(f"{'':<{_LABEL}}{point.at_strain:<7g}{value}")
     return lines
+
+
+def _budget_lines(result: ShotResult, width: int) -> list[str]:
+    """Standard uncertainties at the middle of what counts, and what they come from."""
+    response, budget = result.response, result.budget
+    wave = "1w" if response.analysis is Analysis.ONE_WAVE else "3w"
+    span = response.span or response.loading
+    middle = (span[0] + span[1]) // 2
+    curve = response.curve
+    said = []
+    for word, name, values in (
+        ("stress", f"stress_{wave}", curve.stress_pa),
+        ("strain", f"strain_{wave}", curve.strain),
+        ("rate", f"strain_rate_{wave}", curve.strain_rate_per_s),
+    ):
+        share = budget.u[name][middle] / max(abs(float(values[middle])), 1e-300)
+        said.append(f"{word} {100 * share:.1f} %")
+    lines = wrapped(
+        f"standard, at mid-span: {', '.join(said)} (engineering, {response.analysis.value})",
+        width,
+        "Uncertainty".ljust(_LABEL),
+    )
+    column = OUTPUTS.index(f"stress_{wave}")
+    greatest = sorted(budget.contributions, key=lambda line: -line.share[column])[:3]
+    shares = ", ".join(
+        f"{line.source} {100 * line.share[column]:.0f} %{' (assumed)' if line.assumed else ''}"
+        for line in greatest
+    )
+    return lines + wrapped(f"of the variance of stress: {shares}", width, " " * _LABEL)
 
 
 def _balance_lines(result: ShotResult, width: int) -> list[str]:

@@ -11,6 +11,7 @@ import pytest
 from shpb.errors import FileMistakes, InputError, Mistake
 from shpb.pulse.front import UnusableShotError
 from shpb.reduction import ShotResult
+from shpb.trust.budget import OUTPUTS
 from shpb.view.summary import SCHEMA_VERSION, error_json, json_text, record_json, shot_json
 
 
@@ -73,7 +74,8 @@ def test_keys_with_a_dimension_carry_its_unit(shots: dict[str, ShotResult]) -> N
     bare = {
         "schema_version", "limit", "mean_ratio", "floor", "true_strain_at_start", "share_within", "nrms",
         "impulse_ratio", "reverberations", "variation", "slope", "from_true_strain", "to_true_strain",
-        "at_strain", "indentation_strain", "noise_strain", "low_pass_cutoff_fa_c0",
+        "at_strain", "indentation_strain", "noise_strain", "low_pass_cutoff_fa_c0", "u_strain_1w", "u_strain_3w",
+        *(f"of_{name}" for name in OUTPUTS),
     }  # fmt: skip
 
     def numbers(value: object, key: str = "") -> None:

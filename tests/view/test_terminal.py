@@ -53,7 +53,9 @@ def test_flow_stresses_are_those_of_the_specimen(
     shots: dict[str, ShotResult], flow_stress_pa: Callable[..., float], which: str
 ) -> None:
     result = shots[which]
-    lines = re.findall(r"^ +(0\.\d+) +(\d+) MPa at +(\d+) /s true$", shot_text(result), re.MULTILINE)
+    lines = re.findall(
+        r"^ +(0\.\d+) +(\d+) MPa, u [\d.]+ MPa, at +(\d+) /s true$", shot_text(result), re.MULTILINE
+    )
     assert [float(strain) for strain, _, _ in lines] == [0.02, 0.05, 0.1, 0.15, 0.2]
     for strain, stress, _ in lines:
         expected = flow_stress_pa(float(strain), result.sheet.kind) / 1e6

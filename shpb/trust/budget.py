@@ -1,0 +1,355 @@
+"""Uncertainty of one shot's curves: what every source would change, pulse by pulse, carried to stress, strain and rate.
+
+A source acts on a whole trace: one gauge factor scales two pulses at once, a wave speed shifts them against each other
+and scales force and velocity. So each source gives one curve of change in every output, and correlations are carried by
+adding changes before squaring, never sample by sample. White noise alone is independent from sample to sample.
+
+References
+----------
+JCGM 100:2008 (GUM), 5.1.2: law of propagation of uncertainty, first order. The sensitivities are the derivatives of the
+formulas in :mod:`shpb.response.bar_analysis`, written out.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass, field
+from typing import NamedTuple
+
+import numpy as np
+
+from shpb.arrays import FloatArray, dot, frozen
+from shpb.response.bar_analysis import integrated
+from shpb.response.response import Response
+from shpb.rig.bar import Bar
+from shpb.rig.gauge import Gauge, TestKind
+from shpb.settings import Analysis
+from shpb.trust.evidence import Evidence
+
+OUTPUTS = ("stress_1w", "strain_rate_1w", "strain_1w", "stress_3w", "strain_rate_3w", "strain_3w")
+
+# Where nobody has stated an uncertainty (common practice; relative standard uncertainties).
+ASSUMED = {
+    "gauge factor": 0.005,
+    "excitation": 0.001,
+    "gain": 0.002,
+    "density": 0.002,
+    "wave speed": 0.002,
+    "bar diameter": 0.0005,
+    "specimen diameter": 0.001,
+    "specimen length": 0.002,
+    "gauge distance": 0.001,
+}
+
+
+class _Change(NamedTuple):
+    """What one standard uncertainty of a source changes: strains at the faces, and scales of the formulas."""
+
+    incident: FloatArray | float = 0.0
+    reflected: FloatArray | float = 0.0
+    transmitted: FloatArray | float = 0.0
+    force_in: float = 0.0  # relative
+    force_out: float = 0.0
+    velocity_in: float = 0.0
+    velocity_out: float = 0.0
+    area: float = 0.0
+    length: float = 0.0
+
+
+class _Source(NamedTuple):
+    name: str
+    shared: bool  # by all shots of the rig, or this shot's own
+    assumed: bool  # nobody has stated it
+    change: _Change
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Contribution:
+    """One line of the budget, at the middle of what counts.
+
+    ``share`` is the share of the variance of each output, in the order of ``OUTPUTS``.
+    """
+
+    source: str
+    shared: bool
+    assumed: bool
+    share: tuple[float, ...]
+
+
+@dataclass(frozen=True, slots=True, eq=False, kw_only=True)
+class Budget:
+    """Standard uncertainties on the time axis of the response.
+
+    Attributes
+    ----------
+    u : dict of str to float array, shape (samples,)
+        Standard uncertainty of each of ``OUTPUTS`` [Pa], [1/s] or [1].
+    u_shared : dict of str to float array
+        The part that all shots of the rig share (wave speed, density, bar diameters, gauges).
+    u_true_strain, u_true_stress_pa : float array
+        Of the curve put forward.
+    contributions : tuple of Contribution
+        Ranked by their greatest share.
+    """
+
+    u: dict[str, FloatArray]
+    u_shared: dict[str, FloatArray]
+    u_true_strain: FloatArray
+    u_true_stress_pa: FloatArray
+    contributions: tuple[Contribution, ...] = field(default=())
+
+
+def uncertainty_budget(evidence: Evidence) -> Budget:
+    """Propagate every stated (or assumed) uncertainty to the curves, first order.
+
+    The cost is a fraction of the reduction: no transform is done again.
+    """
+    total = {name: np.zeros(evidence.response.time_s.size) for name in OUTPUTS}
+    shared = {name: np.zeros(evidence.response.time_s.size) for name in OUTPUTS}
+    span = evidence.response.span or evidence.response.loading
+    middle = (span[0] + span[1]) // 2
+    lines: list[tuple[_Source, list[float]]] = []
+    for source in _sources(evidence):
+        variances = {name: change**2 for name, change in _carried(source.change, evidence).items()}
+        for name, variance in variances.items():
+            total[name] += variance
+            if source.shared:
+                shared[name] += variance
+        lines.append((source, [float(variances[name][middle]) for name in OUTPUTS]))
+    noise = _white_noise(evidence)
+    for name, variance in noise.items():
+        total[name] += variance
+    nothing = _Source("noise", shared=False, assumed=False, change=_Change())
+    lines.append((nothing, [float(noise[name][middle]) for name in OUTPUTS]))
+
+    whole = [max(float(total[name][middle]), 1e-300) for name in OUTPUTS]
+    contributions = [
+        Contribution(
+            source=source.name,
+            shared=source.shared,
+            assumed=source.assumed,
+            share=tuple(value / all_ for value, all_ in zip(values, whole, strict=True)),
+        )
+        for source, values in lines
+    ]
+    u = {name: frozen(np.sqrt(variance)) for name, variance in total.items()}
+    u_true_strain, u_true_stress = _true(u, evidence)
+    return Budget(
+        u=u,
+        u_shared={name: frozen(np.sqrt(variance)) for name, variance in shared.items()},
+        u_true_strain=frozen(u_true_strain),
+        u_true_stress_pa=frozen(u_true_stress),
+        contributions=tuple(sorted(contributions, key=lambda c: -max(c.share))),
+    )
+
+
+# --- sources -----------------------------------------------------------------------------------
+
+
+def _relative(value: float, name: str) -> tuple[float, bool]:
+    """Relative standard uncertainty of a quantity, and whether it had to be assumed."""
+    u = getattr(value, "u", None)
+    return (ASSUMED[name], True) if u is None else (u / abs(value), False)
+
+
+def _sources(evidence: Evidence) -> Iterator[_Source]:
+    rig, specimen = evidence.rig, evidence.sheet.specimen
+    yield from _gauge_sources(evidence, "incident", rig.incident_gauge)
+    yield from _gauge_sources(evidence, "transmitted", rig.transmitted_gauge)
+    if rig.incident_bar == rig.transmitted_bar or _one_stock(rig.incident_bar, rig.transmitted_bar):
+        # Bars of one stock: what was measured once acts on both.
+        yield from _bar_sources(evidence, "bars", rig.incident_bar, incident=True, transmitted=True)
+    else:
+        yield from _bar_sources(evidence, "incident bar", rig.incident_bar, incident=True, transmitted=False)
+        yield from _bar_sources(
+            evidence, "transmitted bar", rig.transmitted_bar, incident=False, transmitted=True
+        )
+    u, assumed = _relative(specimen.diameter_m, "specimen diameter")
+    yield _Source("specimen diameter", False, assumed, _Change(area=2 * u))
+    u, assumed = _relative(specimen.length_m, "specimen length")
+    yield _Source("specimen length", False, assumed, _Change(length=u))
+    yield from _pulse_sources(evidence)
+
+
+def _one_stock(a: Bar, b: Bar) -> bool:
+    names = ("material", "density_kg_m3", "wave_speed_m_s", "diameter_m")
+    return all(getattr(a, name) == getattr(b, name) for name in names)
+
+
+def _gauge_sources(evidence: Evidence, side: str, gauge: Gauge) -> Iterator[_Source]:
+    """Gauge factor, excitation and gain scale the whole trace; the distance shifts pulses against each other."""
+    faces, rig = evidence.faces, evidence.rig
+    for name, value in (
+        ("gauge factor", gauge.gauge_factor),
+        ("excitation", gauge.excitation_v),
+        ("gain", gauge.gain),
+    ):
+        u, assumed = _relative(value, name)
+        if side == "incident":
+            change = _Change(incident=u * faces.incident.strain, reflected=u * faces.reflected.strain)
+        else:
+            change = _Change(transmitted=u * faces.transmitted.strain)
+        yield _Source(f"{side} {name}", True, assumed, change)
+    u, assumed = _relative(gauge.to_specimen_m, "gauge distance")
+    bar = rig.incident_bar if side == "incident" else rig.transmitted_bar
+    delay = u * gauge.to_specimen_m / bar.wave_speed_m_s
+    transmitted = _slope(evidence, faces.transmitted.strain) * delay
+    # Time zero is the incident foot at the face: what moves it moves the two others against it.
+    reflected = 2 * _slope(evidence, faces.reflected.strain) * delay if side == "incident" else 0.0
+    yield _Source(
+        f"{side} gauge distance", True, assumed, _Change(reflected=reflected, transmitted=transmitted)
+    )
+
+
+def _bar_sources(
+    evidence: Evidence, name: str, bar: Bar, *, incident: bool, transmitted: bool
+) -> Iterator[_Source]:
+    """Density and diameter scale forces; the wave speed scales force and velocity, and shifts the pulses."""
+    rig, faces = evidence.rig, evidence.faces
+    for what, value, power in (("density", bar.density_kg_m3, 1), ("bar diameter", bar.diameter_m, 2)):
+        u, assumed = _relative(value, what)
+        change = _Change(force_in=power * u * incident, force_out=power * u * transmitted)
+        yield _Source(f"{name}: {what.removeprefix('bar ')}", True, assumed, change)
+    u, assumed = _relative(bar.wave_speed_m_s, "wave speed")
+    travel_i = rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s * incident
+    travel_t = rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s * transmitted
+    yield _Source(
+        f"{name}: wave speed",
+        True,
+        assumed,
+        _Change(
+            reflected=-2 * u * travel_i * _slope(evidence, faces.reflected.strain),
+            transmitted=-u * (travel_i + travel_t) * _slope(evidence, faces.transmitted.strain),
+            force_in=2 * u * incident,
+            force_out=2 * u * transmitted,
+            velocity_in=u * incident,
+            velocity_out=u * transmitted,
+        ),
+    )
+
+
+def _pulse_sources(evidence: Evidence) -> Iterator[_Source]:
+    """What each pulse has on its own: its zero line, and the error of gauge linearity, bending and dispersion."""
+    pulses, faces, error = evidence.pulses, evidence.faces, evidence.settings.pulse_error
+    time = faces.time_s - faces.time_s[0]
+    for name, pulse in (
+        ("incident", pulses.incident),
+        ("reflected", pulses.reflected),
+        ("transmitted", pulses.transmitted),
+    ):
+        strain = getattr(faces, name).strain
+        slope = pulse.zero.u_slope / pulses.sample_interval_s
+        since = time + (
+            pulse.start_s - (evidence.strain.start_s + pulse.zero.centre * pulses.sample_interval_s)
+        )
+        for what, change in (
+            ("pulse", error * strain),
+            ("zero level", np.full(time.size, pulse.zero.u_level)),
+            ("zero slope", slope * since),
+        ):
+            yield _Source(f"{name} {what}", False, False, _in_pulse(name, change))
+
+
+def _in_pulse(name: str, change: FloatArray) -> _Change:
+    """A change of one pulse alone."""
+    if name == "incident":
+        return _Change(incident=change)
+    return _Change(reflected=change) if name == "reflected" else _Change(transmitted=change)
+
+
+def _slope(evidence: Evidence, strain: FloatArray) -> FloatArray:
+    """Slope of a pulse at the face [1/s]."""
+    slope: FloatArray = np.gradient(strain, evidence.faces.interval_s)
+    return slope
+
+
+# --- carried to the outputs -------------------------------------------------------------------------
+
+
+def _carried(change: _Change, evidence: Evidence) -> dict[str, FloatArray]:
+    """Change of every output by one standard uncertainty of a source."""
+    rig, specimen, response = evidence.rig, evidence.sheet.specimen, evidence.response
+    bar_i, bar_t, motion = rig.incident_bar, rig.transmitted_bar, response.motion
+    zero = np.zeros(response.time_s.size)
+    incident, reflected, transmitted = (zero + part for part in change[:3])
+    force_in = bar_i.force_per_strain_n * (incident + reflected) + change.force_in * motion.force_in_n
+    force_out = bar_t.force_per_strain_n * transmitted + change.force_out * motion.force_out_n
+    velocity_in = bar_i.wave_speed_m_s * (incident - reflected) + change.velocity_in * motion.velocity_in_m_s
+    velocity_out = bar_t.wave_speed_m_s * transmitted + change.velocity_out * motion.velocity_out_m_s
+    one, three = response.one_wave, response.three_wave
+    mismatch = 1 / bar_i.impedance_n_s_m - 1 / bar_t.impedance_n_s_m
+    closing_1w = -2 * bar_i.wave_speed_m_s * reflected + mismatch * force_out
+    closing_1w += change.velocity_in * one.strain_rate_per_s * specimen.length_m
+    rate_1w = closing_1w / specimen.length_m - change.length * one.strain_rate_per_s
+    rate_3w = (velocity_in - velocity_out) / specimen.length_m - change.length * three.strain_rate_per_s
+    return {
+        "stress_1w": force_out / specimen.area_m2 - change.area * one.stress_pa,
+        "strain_rate_1w": rate_1w,
+        "strain_1w": integrated(rate_1w, evidence.faces.interval_s),
+        "stress_3w": 0.5 * (force_in + force_out) / specimen.area_m2 - change.area * three.stress_pa,
+        "strain_rate_3w": rate_3w,
+        "strain_3w": integrated(rate_3w, evidence.faces.interval_s),
+    }
+
+
+def _white_noise(evidence: Evidence) -> dict[str, FloatArray]:
+    """Variance that the noise of the samples leaves in every output after the low-pass.
+
+    A running integral of white noise grows as the root of time: variance S t/2 with the one-sided density
+    S = 2 sigma^2 dt of a noise of sigma sampled at dt.
+    """
+    rig, specimen, faces, pulses = evidence.rig, evidence.sheet.specimen, evidence.faces, evidence.pulses
+    share = min(2 * 0.875 * faces.low_pass.cutoff_hz * faces.interval_s, 1.0)
+    elapsed = faces.time_s - faces.time_s[0]
+    i, t = pulses.incident.noise**2, pulses.transmitted.noise**2
+    force_i = rig.incident_bar.force_per_strain_n**2 * 2 * i
+    force_t = rig.transmitted_bar.force_per_strain_n**2 * t
+    speed_i = (rig.incident_bar.wave_speed_m_s / specimen.length_m) ** 2
+    speed_t = (rig.transmitted_bar.wave_speed_m_s / specimen.length_m) ** 2
+    rate_1w, rate_3w = 4 * speed_i * i, 2 * speed_i * i + speed_t * t
+    ones = np.ones(elapsed.size)
+    return {
+        "stress_1w": ones * share * force_t / specimen.area_m2**2,
+        "strain_rate_1w": ones * share * rate_1w,
+        "strain_1w": elapsed * faces.interval_s * rate_1w,
+        "stress_3w": ones * share * 0.25 * (force_i + force_t) / specimen.area_m2**2,
+        "strain_rate_3w": ones * share * rate_3w,
+        "strain_3w": elapsed * faces.interval_s * rate_3w,
+    }
+
+
+def _true(u: dict[str, FloatArray], evidence: Evidence) -> tuple[FloatArray, FloatArray]:
+    """Standard uncertainty of true strain and true stress [Pa] of the curve put forward.
+
+    Compression: e_t = -ln(1 - e), s_t = s (1 - e); tension with the other sign. Stress and strain enter as
+    independent: what they share (the wave speed) is a small part of either.
+    """
+    response = evidence.response
+    which = "1w" if response.analysis is Analysis.ONE_WAVE else "3w"
+    curve = response.curve
+    sign = 1.0 if evidence.sheet.kind is TestKind.TENSION else -1.0
+    stretch = np.maximum(1.0 + sign * curve.strain, 1e-3)
+    u_strain, u_stress = u[f"strain_{which}"], u[f"stress_{which}"]
+    u_true_stress: FloatArray = np.hypot(stretch * u_stress, curve.stress_pa * u_strain)
+    u_true_strain: FloatArray = u_strain / stretch
+    return u_true_strain, u_true_stress
+
+
+def flow_stress_uncertainty_pa(budget: Budget, response: Response) -> tuple[float | None, ...]:
+    """Standard uncertainty of each flow stress at its strain [Pa]; None where there is no flow stress.
+
+    At a given strain the stress carries its own uncertainty and that of the strain, by the slope of the curve.
+    """
+    if response.span is None:
+        return tuple(None for _ in response.flow)
+    part = slice(*response.span)
+    strain, stress = response.curve.true_strain[part], response.curve.true_stress_pa[part]
+    # Slope of the curve over the whole span: enough to weigh the strain's small share.
+    centred = strain - strain.mean()
+    slope = dot(centred, stress) / max(dot(centred, centred), 1e-300)
+    at_strain = np.hypot(budget.u_true_stress_pa[part], slope * budget.u_true_strain[part])
+    rising = np.maximum.accumulate(strain)
+    return tuple(
+        None if point.stress_pa is None else float(np.interp(point.at_strain, rising, at_strain))
+        for point in response.flow
+    )

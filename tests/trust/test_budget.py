@@ -1,0 +1,140 @@
+"""The uncertainty of a shot: coverage over seeded shots of disturbed rigs, and hand-worked combinations."""
+
+from __future__ import annotations
+
+import dataclasses
+
+import numpy as np
+import pytest
+from numpy.typing import NDArray
+
+from shpb.quantity import Quantity
+from shpb.reduction import ShotResult, reduce
+from shpb.rig.rig import Rig
+from shpb.rig.sheet import ShotSheet
+from shpb.settings import DEFAULT
+from shpb.trust.budget import OUTPUTS, Budget, uncertainty_budget
+from shpb.trust.evidence import Evidence
+from tests.synthetic import FaceStrains, copper, gauge, record_of, rig, sheet, steel_bar, uniform_plastic_shot
+
+Array = NDArray[np.float64]
+NOISE_V = 0.004
+# Relative standard uncertainties of the disturbed rigs, of the size of real ones.
+U = {
+    "gauge_factor": 0.005,
+    "gain": 0.002,
+    "wave_speed_m_s": 0.001,
+    "density_kg_m3": 0.002,
+    "diameter_m": 0.0005,
+}
+
+
+def stated(value: float, relative: float) -> Quantity:
+    return Quantity(value, relative * value, "test")
+
+
+def a_rig() -> Rig:
+    def station(channel: str, distance: float):  # type: ignore[no-untyped-def]
+        return gauge(
+            channel, Quantity(distance, 0.0003), gauge_factor=stated(2.1, U["gauge_factor"]),
+            gain=stated(200.0, U["gain"]), excitation_v=Quantity(5.0, 0.0),
+        )  # fmt: skip
+
+    bar = steel_bar(
+        diameter_m=stated(0.02, U["diameter_m"]), density_kg_m3=stated(8000.0, U["density_kg_m3"]),
+        wave_speed_m_s=stated(5000.0, U["wave_speed_m_s"]),
+    )  # fmt: skip
+    return rig(
+        incident_bar=bar,
+        transmitted_bar=bar,
+        incident_gauge=station("A", 1.0),
+        transmitted_gauge=station("B", 0.6),
+    )
+
+
+def a_sheet() -> ShotSheet:
+    return sheet(copper(diameter_m=Quantity(0.010, 1e-5), length_m=Quantity(0.005, 1e-5)))
+
+
+def budget_of(result: ShotResult) -> Budget:
+    names = {field.name for field in dataclasses.fields(Evidence)}
+    return uncertainty_budget(Evidence(**{name: getattr(result, name) for name in names}))
+
+
+def drawn(lab: Rig, random: np.random.Generator) -> Rig:
+    """A rig as it truly is, when the rig file says what it says."""
+
+    def true(value: Quantity) -> Quantity:
+        return Quantity(float(value) + (value.u or 0.0) * random.standard_normal())
+
+    def disturbed(thing, names):  # type: ignore[no-untyped-def]
+        return dataclasses.replace(thing, **{name: true(getattr(thing, name)) for name in names})
+
+    bar = disturbed(lab.incident_bar, ("diameter_m", "density_kg_m3", "wave_speed_m_s"))
+    names = ("gauge_factor", "gain", "to_specimen_m")
+    return dataclasses.replace(
+        lab,
+        incident_bar=bar,
+        transmitted_bar=bar,
+        incident_gauge=disturbed(lab.incident_gauge, names),
+        transmitted_gauge=disturbed(lab.transmitted_gauge, names),
+    )
+
+
+@pytest.mark.slow
+def test_95_percent_bands_hold_the_truth() -> None:
+    """Between 93 and 97 % of 600 seeded shots, for stress, strain and rate (JCGM 101 notion of coverage)."""
+    lab, shot = a_rig(), a_sheet()
+    faces, _ = uniform_plastic_shot(rig(), copper(), interval_s=4e-7)
+    quiet = reduce(record_of(faces, lab), lab, shot)
+    assert quiet.response.span is not None
+    at = np.linspace(quiet.response.span[0] + 40, quiet.response.span[1] - 40, 5).astype(int)
+    since = quiet.response.time_s[at]
+    one, three = quiet.response.one_wave, quiet.response.three_wave
+    # The same chain without noise, on the rig as its file says, is the truth of that rig.
+    nominal = {
+        "stress_1w": one.stress_pa, "strain_rate_1w": one.strain_rate_per_s, "strain_1w": one.strain,
+        "stress_3w": three.stress_pa, "strain_rate_3w": three.strain_rate_per_s, "strain_3w": three.strain,
+    }  # fmt: skip
+    inside: dict[str, list[float]] = {name: [] for name in OUTPUTS}
+    random = np.random.default_rng(31)
+    for seed in range(600):
+        truly = drawn(lab, random)
+        scale = 1 + DEFAULT.pulse_error * random.standard_normal(3)
+        bar = truly.incident_bar
+        # The specimen's forces and velocities are what they are; the strains that make them depend on the bar.
+        force = lab.incident_bar.force_per_strain_n / bar.force_per_strain_n
+        speed = lab.incident_bar.wave_speed_m_s / bar.wave_speed_m_s
+        total, difference = (
+            force * (faces.incident + faces.reflected),
+            speed * (faces.incident - faces.reflected),
+        )
+        seen = FaceStrains(
+            faces.time_s,
+            scale[0] * (total + difference) / 2,
+            scale[1] * (total - difference) / 2,
+            scale[2] * force * faces.transmitted,
+        )
+        record = record_of(seen, truly, noise_v=NOISE_V, seed=seed)
+        true_size = (
+            Quantity(0.010 + 1e-5 * random.standard_normal()),
+            Quantity(0.005 + 1e-5 * random.standard_normal()),
+        )
+        result = reduce(record, lab, shot)
+        u = budget_of(result).u
+        response = result.response
+        area = (true_size[0] / 0.010) ** 2
+        length = true_size[1] / 0.005
+        found = {
+            "stress_1w": response.one_wave.stress_pa, "strain_rate_1w": response.one_wave.strain_rate_per_s,
+            "strain_1w": response.one_wave.strain, "stress_3w": response.three_wave.stress_pa,
+            "strain_rate_3w": response.three_wave.strain_rate_per_s, "strain_3w": response.three_wave.strain,
+        }  # fmt: skip
+        for name in OUTPUTS:
+            true = np.interp(since, quiet.response.time_s, nominal[name])
+            true = true / (area if name.startswith("stress") else length)
+            value = np.interp(since, response.time_s, found[name])
+            band = 1.96 * np.interp(since, response.time_s, u[name])
+            inside[name].append(float(np.mean(np.abs(value - true) <= band)))
+    coverage = {name: float(np.mean(values)) for name, values in inside.items()}
+    assert all(0.93 <= share <= 0.97 for share in coverage.values()), coverage
