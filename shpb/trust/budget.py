@@ -17,14 +17,17 @@ from dataclasses import dataclass, field
 from typing import NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 
 from shpb.arrays import FloatArray, dot, frozen
-from shpb.response.bar_analysis import integrated
+from shpb.response.bar_analysis import FaceMotion, integrated
 from shpb.response.response import Response
 from shpb.rig.bar import Bar
 from shpb.rig.gauge import Gauge, TestKind
 from shpb.settings import Analysis
 from shpb.trust.evidence import Evidence
+
+IntArray = NDArray[np.intp]
 
 OUTPUTS = ("stress_1w", "strain_rate_1w", "strain_1w", "stress_3w", "strain_rate_3w", "strain_3w")
 
@@ -99,48 +102,93 @@ class Budget:
     contributions: tuple[Contribution, ...] = field(default=())
 
 
+class _Scene(NamedTuple):
+    """What the sources act on, thinned to a grid that still carries all that passed the low-pass."""
+
+    evidence: Evidence
+    at: IntArray  # samples of the response that are looked at
+    interval_s: float
+    time_s: FloatArray
+    strains: dict[str, FloatArray]  # at the faces
+    slopes: dict[str, FloatArray]  # of those [1/s]
+    motion: FaceMotion
+    rate_1w: FloatArray
+    rate_3w: FloatArray
+    stress_1w: FloatArray
+    stress_3w: FloatArray
+
+
+def _scene(evidence: Evidence) -> _Scene:
+    faces, response = evidence.faces, evidence.response
+    # Ten points in the shortest period that passes: the changes are as smooth as the pulses.
+    stride = max(int(0.1 / faces.low_pass.stop_hz / faces.interval_s), 1)
+    index = np.append(np.arange(0, response.time_s.size - 1, stride), response.time_s.size - 1)
+    strains = {name: getattr(faces, name).strain[index] for name in ("incident", "reflected", "transmitted")}
+    time = response.time_s[index]
+    one, three = response.one_wave, response.three_wave
+    return _Scene(
+        evidence,
+        index,
+        faces.interval_s * stride,
+        time,
+        strains,
+        {name: np.gradient(strain, time) for name, strain in strains.items()},
+        FaceMotion(*(values[index] for values in response.motion)),
+        one.strain_rate_per_s[index],
+        three.strain_rate_per_s[index],
+        one.stress_pa[index],
+        three.stress_pa[index],
+    )
+
+
 def uncertainty_budget(evidence: Evidence) -> Budget:
     """Propagate every stated (or assumed) uncertainty to the curves, first order.
 
-    The cost is a fraction of the reduction: no transform is done again.
+    The cost is a fraction of the reduction: no transform is done again, and the changes are worked out on a thinned
+    grid and laid on the response's by straight lines.
     """
-    total = {name: np.zeros(evidence.response.time_s.size) for name in OUTPUTS}
-    shared = {name: np.zeros(evidence.response.time_s.size) for name in OUTPUTS}
+    scene = _scene(evidence)
+    shared = np.zeros((len(OUTPUTS), scene.at.size))
+    own = np.zeros_like(shared)
     span = evidence.response.span or evidence.response.loading
-    middle = (span[0] + span[1]) // 2
-    lines: list[tuple[_Source, list[float]]] = []
-    for source in _sources(evidence):
-        variances = {name: change**2 for name, change in _carried(source.change, evidence).items()}
-        for name, variance in variances.items():
-            total[name] += variance
-            if source.shared:
-                shared[name] += variance
-        lines.append((source, [float(variances[name][middle]) for name in OUTPUTS]))
-    noise = _white_noise(evidence)
-    for name, variance in noise.items():
-        total[name] += variance
-    nothing = _Source("noise", shared=False, assumed=False, change=_Change())
-    lines.append((nothing, [float(noise[name][middle]) for name in OUTPUTS]))
+    middle = int(np.searchsorted(scene.at, (span[0] + span[1]) // 2))
+    lines: list[tuple[_Source, FloatArray]] = []
+    for source in _sources(scene):
+        variance = _carried(source.change, scene) ** 2
+        part = shared if source.shared else own
+        part += variance
+        lines.append((source, variance[:, middle]))
+    noise = _white_noise(scene)
+    own += noise
+    lines.append((_Source("noise", shared=False, assumed=False, change=_Change()), noise[:, middle]))
 
-    whole = [max(float(total[name][middle]), 1e-300) for name in OUTPUTS]
+    total = shared + own
+    whole = np.maximum(total[:, middle], 1e-300)
     contributions = [
         Contribution(
             source=source.name,
             shared=source.shared,
             assumed=source.assumed,
-            share=tuple(value / all_ for value, all_ in zip(values, whole, strict=True)),
+            share=tuple(float(share) for share in variance / whole),
         )
-        for source, values in lines
+        for source, variance in lines
     ]
-    u = {name: frozen(np.sqrt(variance)) for name, variance in total.items()}
+    u = _on_response(scene, np.sqrt(total))
     u_true_strain, u_true_stress = _true(u, evidence)
     return Budget(
         u=u,
-        u_shared={name: frozen(np.sqrt(variance)) for name, variance in shared.items()},
+        u_shared=_on_response(scene, np.sqrt(shared)),
         u_true_strain=frozen(u_true_strain),
         u_true_stress_pa=frozen(u_true_stress),
         contributions=tuple(sorted(contributions, key=lambda c: -max(c.share))),
     )
+
+
+def _on_response(scene: _Scene, values: FloatArray) -> dict[str, FloatArray]:
+    """Rows of ``values`` by the name of their output, on the time axis of the response."""
+    time = scene.evidence.response.time_s
+    rows = values if scene.at.size == time.size else (np.interp(time, scene.time_s, row) for row in values)
+    return {name: frozen(np.array(row)) for name, row in zip(OUTPUTS, rows, strict=True)}
 
 
 # --- sources -----------------------------------------------------------------------------------
@@ -152,23 +200,23 @@ def _relative(value: float, name: str) -> tuple[float, bool]:
     return (ASSUMED[name], True) if u is None else (u / abs(value), False)
 
 
-def _sources(evidence: Evidence) -> Iterator[_Source]:
-    rig, specimen = evidence.rig, evidence.sheet.specimen
-    yield from _gauge_sources(evidence, "incident", rig.incident_gauge)
-    yield from _gauge_sources(evidence, "transmitted", rig.transmitted_gauge)
+def _sources(scene: _Scene) -> Iterator[_Source]:
+    rig, specimen = scene.evidence.rig, scene.evidence.sheet.specimen
+    yield from _gauge_sources(scene, "incident", rig.incident_gauge)
+    yield from _gauge_sources(scene, "transmitted", rig.transmitted_gauge)
     if rig.incident_bar == rig.transmitted_bar or _one_stock(rig.incident_bar, rig.transmitted_bar):
         # Bars of one stock: what was measured once acts on both.
-        yield from _bar_sources(evidence, "bars", rig.incident_bar, incident=True, transmitted=True)
+        yield from _bar_sources(scene, "bars", rig.incident_bar, incident=True, transmitted=True)
     else:
-        yield from _bar_sources(evidence, "incident bar", rig.incident_bar, incident=True, transmitted=False)
+        yield from _bar_sources(scene, "incident bar", rig.incident_bar, incident=True, transmitted=False)
         yield from _bar_sources(
-            evidence, "transmitted bar", rig.transmitted_bar, incident=False, transmitted=True
+            scene, "transmitted bar", rig.transmitted_bar, incident=False, transmitted=True
         )
     u, assumed = _relative(specimen.diameter_m, "specimen diameter")
     yield _Source("specimen diameter", False, assumed, _Change(area=2 * u))
     u, assumed = _relative(specimen.length_m, "specimen length")
     yield _Source("specimen length", False, assumed, _Change(length=u))
-    yield from _pulse_sources(evidence)
+    yield from _pulse_sources(scene)
 
 
 def _one_stock(a: Bar, b: Bar) -> bool:
@@ -176,9 +224,9 @@ def _one_stock(a: Bar, b: Bar) -> bool:
     return all(getattr(a, name) == getattr(b, name) for name in names)
 
 
-def _gauge_sources(evidence: Evidence, side: str, gauge: Gauge) -> Iterator[_Source]:
+def _gauge_sources(scene: _Scene, side: str, gauge: Gauge) -> Iterator[_Source]:
     """Gauge factor, excitation and gain scale the whole trace; the distance shifts pulses against each other."""
-    faces, rig = evidence.faces, evidence.rig
+    rig, strains = scene.evidence.rig, scene.strains
     for name, value in (
         ("gauge factor", gauge.gauge_factor),
         ("excitation", gauge.excitation_v),
@@ -186,26 +234,26 @@ def _gauge_sources(evidence: Evidence, side: str, gauge: Gauge) -> Iterator[_Sou
     ):
         u, assumed = _relative(value, name)
         if side == "incident":
-            change = _Change(incident=u * faces.incident.strain, reflected=u * faces.reflected.strain)
+            change = _Change(incident=u * strains["incident"], reflected=u * strains["reflected"])
         else:
-            change = _Change(transmitted=u * faces.transmitted.strain)
+            change = _Change(transmitted=u * strains["transmitted"])
         yield _Source(f"{side} {name}", True, assumed, change)
     u, assumed = _relative(gauge.to_specimen_m, "gauge distance")
     bar = rig.incident_bar if side == "incident" else rig.transmitted_bar
     delay = u * gauge.to_specimen_m / bar.wave_speed_m_s
-    transmitted = _slope(evidence, faces.transmitted.strain) * delay
+    transmitted = scene.slopes["transmitted"] * delay
     # Time zero is the incident foot at the face: what moves it moves the two others against it.
-    reflected = 2 * _slope(evidence, faces.reflected.strain) * delay if side == "incident" else 0.0
+    reflected = 2 * scene.slopes["reflected"] * delay if side == "incident" else 0.0
     yield _Source(
         f"{side} gauge distance", True, assumed, _Change(reflected=reflected, transmitted=transmitted)
     )
 
 
 def _bar_sources(
-    evidence: Evidence, name: str, bar: Bar, *, incident: bool, transmitted: bool
+    scene: _Scene, name: str, bar: Bar, *, incident: bool, transmitted: bool
 ) -> Iterator[_Source]:
     """Density and diameter scale forces; the wave speed scales force and velocity, and shifts the pulses."""
-    rig, faces = evidence.rig, evidence.faces
+    rig = scene.evidence.rig
     for what, value, power in (("density", bar.density_kg_m3, 1), ("bar diameter", bar.diameter_m, 2)):
         u, assumed = _relative(value, what)
         change = _Change(force_in=power * u * incident, force_out=power * u * transmitted)
@@ -218,8 +266,8 @@ def _bar_sources(
         True,
         assumed,
         _Change(
-            reflected=-2 * u * travel_i * _slope(evidence, faces.reflected.strain),
-            transmitted=-u * (travel_i + travel_t) * _slope(evidence, faces.transmitted.strain),
+            reflected=-2 * u * travel_i * scene.slopes["reflected"],
+            transmitted=-u * (travel_i + travel_t) * scene.slopes["transmitted"],
             force_in=2 * u * incident,
             force_out=2 * u * transmitted,
             velocity_in=u * incident,
@@ -228,16 +276,17 @@ def _bar_sources(
     )
 
 
-def _pulse_sources(evidence: Evidence) -> Iterator[_Source]:
+def _pulse_sources(scene: _Scene) -> Iterator[_Source]:
     """What each pulse has on its own: its zero line, and the error of gauge linearity, bending and dispersion."""
-    pulses, faces, error = evidence.pulses, evidence.faces, evidence.settings.pulse_error
-    time = faces.time_s - faces.time_s[0]
+    evidence = scene.evidence
+    pulses, error = evidence.pulses, evidence.settings.pulse_error
+    time = scene.time_s - scene.time_s[0]
     for name, pulse in (
         ("incident", pulses.incident),
         ("reflected", pulses.reflected),
         ("transmitted", pulses.transmitted),
     ):
-        strain = getattr(faces, name).strain
+        strain = scene.strains[name]
         slope = pulse.zero.u_slope / pulses.sample_interval_s
         since = time + (
             pulse.start_s - (evidence.strain.start_s + pulse.zero.centre * pulses.sample_interval_s)
@@ -257,65 +306,62 @@ def _in_pulse(name: str, change: FloatArray) -> _Change:
     return _Change(reflected=change) if name == "reflected" else _Change(transmitted=change)
 
 
-def _slope(evidence: Evidence, strain: FloatArray) -> FloatArray:
-    """Slope of a pulse at the face [1/s]."""
-    slope: FloatArray = np.gradient(strain, evidence.faces.interval_s)
-    return slope
-
-
 # --- carried to the outputs -------------------------------------------------------------------------
 
 
-def _carried(change: _Change, evidence: Evidence) -> dict[str, FloatArray]:
-    """Change of every output by one standard uncertainty of a source."""
-    rig, specimen, response = evidence.rig, evidence.sheet.specimen, evidence.response
-    bar_i, bar_t, motion = rig.incident_bar, rig.transmitted_bar, response.motion
-    zero = np.zeros(response.time_s.size)
+def _carried(change: _Change, scene: _Scene) -> FloatArray:
+    """Change of every output by one standard uncertainty of a source, shape (outputs, thinned samples)."""
+    rig, specimen, motion = scene.evidence.rig, scene.evidence.sheet.specimen, scene.motion
+    bar_i, bar_t, length = rig.incident_bar, rig.transmitted_bar, specimen.length_m
+    zero = np.zeros(scene.at.size)
     incident, reflected, transmitted = (zero + part for part in change[:3])
     force_in = bar_i.force_per_strain_n * (incident + reflected) + change.force_in * motion.force_in_n
     force_out = bar_t.force_per_strain_n * transmitted + change.force_out * motion.force_out_n
     velocity_in = bar_i.wave_speed_m_s * (incident - reflected) + change.velocity_in * motion.velocity_in_m_s
     velocity_out = bar_t.wave_speed_m_s * transmitted + change.velocity_out * motion.velocity_out_m_s
-    one, three = response.one_wave, response.three_wave
     mismatch = 1 / bar_i.impedance_n_s_m - 1 / bar_t.impedance_n_s_m
     closing_1w = -2 * bar_i.wave_speed_m_s * reflected + mismatch * force_out
-    closing_1w += change.velocity_in * one.strain_rate_per_s * specimen.length_m
-    rate_1w = closing_1w / specimen.length_m - change.length * one.strain_rate_per_s
-    rate_3w = (velocity_in - velocity_out) / specimen.length_m - change.length * three.strain_rate_per_s
-    return {
-        "stress_1w": force_out / specimen.area_m2 - change.area * one.stress_pa,
-        "strain_rate_1w": rate_1w,
-        "strain_1w": integrated(rate_1w, evidence.faces.interval_s),
-        "stress_3w": 0.5 * (force_in + force_out) / specimen.area_m2 - change.area * three.stress_pa,
-        "strain_rate_3w": rate_3w,
-        "strain_3w": integrated(rate_3w, evidence.faces.interval_s),
-    }
+    rate_1w = closing_1w / length + (change.velocity_in - change.length) * scene.rate_1w
+    rate_3w = (velocity_in - velocity_out) / length - change.length * scene.rate_3w
+    return np.stack(
+        (
+            force_out / specimen.area_m2 - change.area * scene.stress_1w,
+            rate_1w,
+            integrated(rate_1w, scene.interval_s),
+            0.5 * (force_in + force_out) / specimen.area_m2 - change.area * scene.stress_3w,
+            rate_3w,
+            integrated(rate_3w, scene.interval_s),
+        )
+    )
 
 
-def _white_noise(evidence: Evidence) -> dict[str, FloatArray]:
-    """Variance that the noise of the samples leaves in every output after the low-pass.
+def _white_noise(scene: _Scene) -> FloatArray:
+    """Variance that the noise of the samples leaves in every output after the low-pass, as :func:`_carried`.
 
     A running integral of white noise grows as the root of time: variance S t/2 with the one-sided density
     S = 2 sigma^2 dt of a noise of sigma sampled at dt.
     """
+    evidence = scene.evidence
     rig, specimen, faces, pulses = evidence.rig, evidence.sheet.specimen, evidence.faces, evidence.pulses
-    share = min(2 * 0.875 * faces.low_pass.cutoff_hz * faces.interval_s, 1.0)
-    elapsed = faces.time_s - faces.time_s[0]
+    passed = min(2 * 0.875 * faces.low_pass.cutoff_hz * faces.interval_s, 1.0)
+    summed = (scene.time_s - scene.time_s[0]) * faces.interval_s
     i, t = pulses.incident.noise**2, pulses.transmitted.noise**2
     force_i = rig.incident_bar.force_per_strain_n**2 * 2 * i
     force_t = rig.transmitted_bar.force_per_strain_n**2 * t
     speed_i = (rig.incident_bar.wave_speed_m_s / specimen.length_m) ** 2
     speed_t = (rig.transmitted_bar.wave_speed_m_s / specimen.length_m) ** 2
     rate_1w, rate_3w = 4 * speed_i * i, 2 * speed_i * i + speed_t * t
-    ones = np.ones(elapsed.size)
-    return {
-        "stress_1w": ones * share * force_t / specimen.area_m2**2,
-        "strain_rate_1w": ones * share * rate_1w,
-        "strain_1w": elapsed * faces.interval_s * rate_1w,
-        "stress_3w": ones * share * 0.25 * (force_i + force_t) / specimen.area_m2**2,
-        "strain_rate_3w": ones * share * rate_3w,
-        "strain_3w": elapsed * faces.interval_s * rate_3w,
-    }
+    level = np.full(scene.at.size, passed)
+    return np.stack(
+        (
+            level * force_t / specimen.area_m2**2,
+            level * rate_1w,
+            summed * rate_1w,
+            level * 0.25 * (force_i + force_t) / specimen.area_m2**2,
+            level * rate_3w,
+            summed * rate_3w,
+        )
+    )
 
 
 def _true(u: dict[str, FloatArray], evidence: Evidence) -> tuple[FloatArray, FloatArray]:

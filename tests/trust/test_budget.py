@@ -138,3 +138,40 @@ def test_95_percent_bands_hold_the_truth() -> None:
             inside[name].append(float(np.mean(np.abs(value - true) <= band)))
     coverage = {name: float(np.mean(values)) for name, values in inside.items()}
     assert all(0.93 <= share <= 0.97 for share in coverage.values()), coverage
+
+
+def test_shares_of_the_variance_add_up_and_name_what_was_assumed() -> None:
+    faces, _ = uniform_plastic_shot(rig(), copper(), interval_s=4e-7)
+    stated_budget = budget_of(reduce(record_of(faces, a_rig(), noise_v=NOISE_V), a_rig(), a_sheet()))
+    for column, name in enumerate(OUTPUTS):
+        assert sum(line.share[column] for line in stated_budget.contributions) == pytest.approx(1.0), name
+    assert not any(line.assumed for line in stated_budget.contributions)
+    bare = budget_of(reduce(record_of(faces, rig(), noise_v=NOISE_V), rig(), sheet()))
+    assumed = {line.source for line in bare.contributions if line.assumed}
+    assert {"bars: wave speed", "incident gauge factor", "specimen diameter"} <= assumed
+
+
+def test_stress_by_hand() -> None:
+    # One-wave stress: gauge factor 0.5 %, gain 0.2, density 0.2, wave speed twice 0.1, bar diameter twice 0.05,
+    # specimen diameter twice 0.1 %, the pulse's own 0.5 %: root of the sum of squares 0.83 % on a plateau.
+    faces, _ = uniform_plastic_shot(rig(), copper(), interval_s=4e-7)
+    result = reduce(record_of(faces, a_rig()), a_rig(), a_sheet())
+    budget = budget_of(result)
+    middle = int(np.searchsorted(result.response.time_s, 70e-6))
+    share = budget.u["stress_1w"][middle] / result.response.one_wave.stress_pa[middle]
+    # A faster wave also lays the transmitted pulse earlier by 1.6 m/c of 0.1 %, on a curve that still rises.
+    rising = np.gradient(result.response.one_wave.stress_pa, result.faces.interval_s)[middle]
+    later = 100 * 1e-3 * 1.6 / 5000 * rising / result.response.one_wave.stress_pa[middle]
+    expected = np.sqrt(0.5**2 + 0.2**2 + 0.2**2 + (0.2 - later) ** 2 + 0.1**2 + 0.2**2 + 0.5**2) / 100
+    assert share == pytest.approx(expected, rel=0.02)
+    # Gauges, density, wave speed and bar diameter are the rig's: what is left is this shot's own.
+    own = np.sqrt(0.2**2 + 0.5**2) / 100
+    shared = budget.u_shared["stress_1w"][middle] / result.response.one_wave.stress_pa[middle]
+    assert np.sqrt(share**2 - shared**2) == pytest.approx(own, rel=0.02)
+
+
+def test_bars_of_different_stock_have_uncertainties_of_their_own() -> None:
+    faces, _ = uniform_plastic_shot(rig(), copper(), interval_s=4e-7)
+    lab = dataclasses.replace(a_rig(), transmitted_bar=steel_bar(material="another"))
+    sources = {line.source for line in budget_of(reduce(record_of(faces, lab), lab, a_sheet())).contributions}
+    assert {"incident bar: wave speed", "transmitted bar: wave speed"} <= sources
