@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+import math
 from dataclasses import dataclass
 from enum import StrEnum
 
@@ -79,6 +80,20 @@ class Settings:
     flow_strains: tuple[float, ...] = (0.02, 0.05, 0.10, 0.15, 0.20)
 
     def __post_init__(self) -> None:
+        for name, kind in (("dispersion", Dispersion), ("alignment", Alignment), ("analysis", Analysis)):
+            try:
+                object.__setattr__(self, name, kind(getattr(self, name)))
+            except ValueError:
+                raise InputError(
+                    f"found {getattr(self, name)!r}",
+                    where=f"settings.{name}",
+                    mend=f"Give one of {', '.join(kind)}",
+                ) from None
+        for field in dataclasses.fields(self):
+            value = getattr(self, field.name)
+            numbers = value if isinstance(value, tuple) else (value,)
+            for number in numbers:
+                _require_usable(field.name, number)
         if not 0.02 <= self.cutoff_fa_c0 <= 1.0:
             raise InputError(
                 f"cut-off f a/c0 is {self.cutoff_fa_c0:g}",
@@ -97,6 +112,16 @@ class Settings:
     def replaced(self, **changes: object) -> Settings:
         """Return a copy with the given fields changed."""
         return dataclasses.replace(self, **changes)  # type: ignore[arg-type]
+
+
+def _require_usable(name: str, number: object) -> None:
+    """Refuse NaN and infinity everywhere, and zero or less where only a positive number means anything."""
+    if not isinstance(number, int | float) or isinstance(number, bool):
+        return
+    on_the_clock = name.endswith(("_window_s", "_foot_s"))
+    if not math.isfinite(number) or (number <= 0 and not on_the_clock):
+        mend = "Give a time on the record's clock" if on_the_clock else "Give a positive number"
+        raise InputError(f"found {number}", where=f"settings.{name}", mend=mend)
 
 
 DEFAULT = Settings()

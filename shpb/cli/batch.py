@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -28,8 +29,8 @@ class Task:
     named_in: Path
 
 
-def gather(sources: Sequence[Path], rig_file: Path | None) -> list[Task]:
-    """Read sheets and lists, and the rig file of each shot; every mistake of every file at once.
+def gather(sources: Sequence[Path], rig_file: Path | None) -> tuple[list[Task], list[InputError]]:
+    """Read sheets and lists, and the rig file of each shot; what is wrong with some does not stop the others.
 
     Parameters
     ----------
@@ -38,10 +39,15 @@ def gather(sources: Sequence[Path], rig_file: Path | None) -> list[Task]:
     rig_file : Path or None
         Rig file for shots whose sheet names none.
 
+    Returns
+    -------
+    list of Task, list of InputError
+        The shots that can be reduced, and every mistake of every file that keeps others from it.
+
     Raises
     ------
     InputError
-        If a file holds mistakes, a shot has no rig, or two shots share an id.
+        If no shot can be reduced at all.
     """
     from shpb.rig.sheet_file import check_sheet_fits_rig
 
@@ -52,30 +58,29 @@ def gather(sources: Sequence[Path], rig_file: Path | None) -> list[Task]:
         try:
             task = Task(sheet, _rig_of(sheet, source, rig_file, rigs), source)
             check_sheet_fits_rig(sheet, task.rig)
+            _require_new(task, tasks)
         except InputError as error:
             errors.append(error)
         else:
             tasks.append(task)
-    _require_different_ids(tasks, errors)
-    if errors:
+    if not tasks and errors:
         raise _together(errors)
     if not tasks:
-        raise InputError(
-            "there is no shot to reduce", where=", ".join(map(str, sources)), mend="Name a shot sheet"
-        )
-    return tasks
+        named = ", ".join(map(str, sources))
+        raise InputError("there is no shot to reduce", where=named, mend="Name a shot sheet or a shot list")
+    return tasks, errors
 
 
 def _sheets(sources: Sequence[Path], errors: list[InputError]) -> Iterator[tuple[Path, ShotSheet]]:
-    from shpb.rig.sheet_file import read_sheet
-
     for source in sources:
         try:
             if source.is_dir():
                 for path in sorted(source.glob("*.toml")):
-                    yield path, read_sheet(path)
+                    # A folder may hold its rig file too; only sheets have a [shot] table.
+                    if _is_sheet(path):
+                        yield from _one_sheet(path, errors)
             elif source.suffix.lower() == ".toml":
-                yield source, read_sheet(source)
+                yield from _one_sheet(source, errors)
             else:
                 from shpb.rig.shot_list import read_shot_list
 
@@ -83,6 +88,26 @@ def _sheets(sources: Sequence[Path], errors: list[InputError]) -> Iterator[tuple
                     yield source, sheet
         except InputError as error:
             errors.append(error)
+
+
+def _is_sheet(path: Path) -> bool:
+    try:
+        return re.search(rb"(?m)^\s*\[\s*(shot|specimen)\s*\]", path.read_bytes()) is not None
+    except OSError:
+        return True  # let the reader say what is wrong with it
+
+
+def _one_sheet(path: Path, errors: list[InputError]) -> Iterator[tuple[Path, ShotSheet]]:
+    from shpb.rig.sheet_file import read_sheet
+
+    try:
+        yield path, read_sheet(path)
+    except InputError as mistakes:
+        if path.is_file() and b"[incident_bar]" in path.read_bytes():
+            mend = "Name the sheet of a shot; the rig file is named in the sheet or with --rig"
+            errors.append(InputError("this is a rig file, not a shot sheet", where=str(path), mend=mend))
+        else:
+            errors.append(mistakes)
 
 
 def _rig_of(sheet: ShotSheet, source: Path, rig_file: Path | None, rigs: dict[Path, Rig]) -> Rig:
@@ -100,19 +125,22 @@ def _rig_of(sheet: ShotSheet, source: Path, rig_file: Path | None, rigs: dict[Pa
     return rigs[path]
 
 
-def _require_different_ids(tasks: Sequence[Task], errors: list[InputError]) -> None:
-    seen: dict[str, Path] = {}
-    for task in tasks:
-        other = seen.setdefault(task.sheet.shot_id, task.named_in)
-        if other is not task.named_in or sum(t.sheet.shot_id == task.sheet.shot_id for t in tasks) > 1:
-            errors.append(
-                InputError(
-                    f"shot id {task.sheet.shot_id} is used twice (also in {other.name})",
-                    where=str(task.named_in),
-                    mend="Give every shot an id of its own",
-                )
+def _require_new(task: Task, earlier: Sequence[Task]) -> None:
+    """Two shots share neither an id nor a record."""
+    files = {path.resolve() for path in task.sheet.record_files}
+    for other in earlier:
+        if other.sheet.shot_id.casefold() == task.sheet.shot_id.casefold():
+            raise InputError(
+                f"shot id {task.sheet.shot_id} is used twice, first in {other.named_in.name}",
+                where=str(task.named_in),
+                mend="Give every shot an id of its own",
             )
-            return
+        if files & {path.resolve() for path in other.sheet.record_files}:
+            raise InputError(
+                f"shot {task.sheet.shot_id} names the record of shot {other.sheet.shot_id} in {other.named_in.name}",
+                where=str(task.named_in),
+                mend="Name each record in one sheet only",
+            )
 
 
 def _together(errors: Sequence[InputError]) -> InputError:
@@ -128,7 +156,7 @@ def start_workers(count: int, prepare: Callable[[], None]) -> Executor | None:
         return None
     from concurrent.futures import ProcessPoolExecutor
 
-    pool = ProcessPoolExecutor(count, initializer=prepare)
+    pool = ProcessPoolExecutor(count, initializer=_start_worker, initargs=(prepare,))
     pool.submit(int)  # the first task starts the processes
     return pool
 
@@ -156,7 +184,7 @@ def in_parallel(
     # Few items a parcel keeps all workers busy to the end; many spare the traffic between processes.
     size = max(1, min(16, len(items) // (4 * workers)))
     parcels = [range(start, min(start + size, len(items))) for start in range(0, len(items), size)]
-    with pool or ProcessPoolExecutor(workers) as crew:
+    with pool or ProcessPoolExecutor(workers, initializer=_start_worker) as crew:
         futures = {crew.submit(_several, function, [items[i] for i in parcel]): parcel for parcel in parcels}
         finished = 0
         for future in as_completed(futures):
@@ -164,6 +192,27 @@ def in_parallel(
                 yield index, result
             finished += len(futures[future])
             done(finished)
+
+
+def _start_worker(prepare: Callable[[], None] | None = None) -> None:
+    """End with the parent, even one that was killed; then prepare."""
+    import multiprocessing
+    import signal
+    import threading
+    from multiprocessing.connection import wait
+
+    signal.signal(signal.SIGINT, signal.SIG_IGN)  # the parent hears Ctrl-C and ends its workers in order
+    parent = multiprocessing.parent_process()
+    if parent is not None:
+        sentinel = parent.sentinel
+
+        def follow() -> None:
+            wait([sentinel])
+            os._exit(1)
+
+        threading.Thread(target=follow, daemon=True).start()
+    if prepare is not None:
+        prepare()
 
 
 def _several(function: Callable[[T], R], items: list[T]) -> list[R]:

@@ -29,7 +29,7 @@ def run(options: argparse.Namespace) -> int:
     """Write the campaign, then reduce it as ``shpb reduce`` would."""
     import sys
 
-    from shpb.cli.batch import Task, gather, start_workers, usual_workers
+    from shpb.cli.batch import gather, start_workers, usual_workers
     from shpb.cli.reduce import Outputs, load_what_workers_need, reduce_all
     from shpb.cli.status import DONE, REJECTED
     from shpb.demo.campaign import write_demo
@@ -48,7 +48,7 @@ def run(options: argparse.Namespace) -> int:
     if options.write_only:
         return DONE
     sheets = [shot.sheet for shot in campaign.shots if shot.sheet is not None]
-    tasks: list[Task] = gather([*sheets, campaign.shot_list], rig_file=None)
+    tasks, _ = gather([*sheets, campaign.shot_list], rig_file=None)
     status = reduce_all(
         tasks,
         Outputs(folder=campaign.folder / "results", figure="png"),

@@ -67,8 +67,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
         with contextlib.suppress(OSError):
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 0
+    except OSError as error:
+        print(f"shpb: the system refused: {error.strerror or error}", file=sys.stderr)
+        return FAILED
     except KeyboardInterrupt:
-        print("stopped; what was finished is stored whole", file=sys.stderr)
+        print("shpb: stopped; what was finished is stored whole", file=sys.stderr)
         return FAILED
 
 

@@ -11,6 +11,8 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from shpb.errors import InputError, StoreError
+
 if TYPE_CHECKING:
     from concurrent.futures import Executor
 
@@ -69,12 +71,20 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
 def run(options: argparse.Namespace) -> int:
     """Reduce what was named."""
     from shpb.cli.batch import gather, usual_workers
+    from shpb.cli.status import BAD_INPUT
 
-    tasks = gather(options.shots, options.rig)
+    if options.workers is not None and options.workers < 1:
+        raise InputError(f"found {options.workers}", where="--workers", mend="Give 1 or more")
+    tasks, errors = gather(options.shots, options.rig)
     folder = options.results or (_folder_of(options.shots[0]) / "results")
+    if folder.exists() and not folder.is_dir():
+        raise InputError("this is a file", where=str(folder), mend="Give a folder for --results")
     outputs = Outputs(folder=folder, figure=options.figure, csv=options.csv, choices=_choices(options))
     workers = usual_workers() if options.workers is None else options.workers
-    return reduce_all(tasks, outputs, as_json=options.json, full=options.full, workers=workers)
+    status = reduce_all(tasks, outputs, as_json=options.json, full=options.full, workers=workers)
+    for error in errors:
+        _say(str(error))
+    return BAD_INPUT if errors else status
 
 
 def _folder_of(source: Path) -> Path:
@@ -150,7 +160,10 @@ class _Work:
         record = read_record(task.sheet.record_files, hints_for(task.rig, task.sheet))
         result = reduce(record, task.rig, task.sheet, settings)
         stem = file_stem(task.sheet.shot_id)
-        files = [save_shot(result, self.outputs.folder / f"{stem}.h5")]
+        store = self.outputs.folder / f"{stem}.h5"
+        kinds = [self.outputs.figure, "csv" if self.outputs.csv else "none"]
+        _require_free(task, store, [store.with_suffix(f".{kind}") for kind in kinds if kind != "none"])
+        files = [save_shot(result, store)]
         if self.outputs.csv:
             from shpb.store.curves_csv import export_csv
 
@@ -169,6 +182,26 @@ class _Work:
 
             files.append(save_figure(result, self.outputs.folder / f"{stem}.{self.outputs.figure}"))
         return Done(row=done.row, text=done.text, json=done.json, files=tuple(map(str, files)))
+
+
+def _require_free(task: Task, store: Path, others: Sequence[Path]) -> None:
+    """Nothing that goes in is written over, nor anything beside a result that this program did not write."""
+    sheet, rig = task.sheet, task.sheet.rig_file
+    inputs = {path.resolve() for path in (*sheet.record_files, task.named_in, *([rig] if rig else []))}
+    for path in (store, *others):
+        if path.resolve() in inputs:
+            raise StoreError(
+                f"shot {sheet.shot_id} would be written over what it was made from",
+                where=str(path),
+                mend="Choose another folder with --results",
+            )
+        # Where the shot file of this shot stands, its figure and curves are of this program too.
+        if path != store and path.exists() and not store.exists():
+            raise StoreError(
+                "a file of this name stands there and was not written with a result",
+                where=str(path),
+                mend="Choose another folder with --results, or move that file away",
+            )
 
 
 def file_stem(shot_id: str) -> str:
@@ -224,6 +257,13 @@ def _silent(done: int) -> None:
     """Show no progress."""
 
 
+def _say(error: str) -> None:
+    """An error on stderr, line by line, its outside strings made harmless."""
+    from shpb.view.text import printable
+
+    print("\n".join(printable(line) for line in f"shpb: {error}".splitlines()), file=sys.stderr)
+
+
 def _print_json(finished: Sequence[Done]) -> None:
     from shpb.view.summary import SCHEMA_VERSION, json_text
 
@@ -235,7 +275,7 @@ def _print_one(done: Done) -> None:
     from shpb.view.text import printable
 
     if done.error:
-        print("\n".join(printable(line) for line in f"shpb: {done.error}".splitlines()), file=sys.stderr)
+        _say(done.error)
         return
     for name in done.files:
         print(f"written: {printable(name)}")
@@ -250,9 +290,9 @@ def _print_several(finished: Sequence[Done], outputs: Outputs, *, full: bool) ->
             if done.text:
                 print(done.text, end="\n\n")
     print(list_text([done.row for done in finished]))
-    errors = [done.error for done in finished if done.error]
-    for error in errors:
-        print("\n".join(printable(line) for line in f"shpb: {error}".splitlines()), file=sys.stderr)
+    for done in finished:
+        if done.error:
+            _say(f"shot {done.row.shot_id}: {done.error}")
     print(f"written to {printable(outputs.folder)}")
 
 

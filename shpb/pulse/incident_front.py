@@ -41,7 +41,8 @@ def incident_front_s(strain: GaugeStrain, rig: Rig, settings: Settings) -> float
             raise UnusableShotError(
                 f"the {name} pulse comes out negative: the polarity is inverted",
                 where=f"{name} gauge",
-                mend="Turn voltage_under_compression (or _tension) round in the rig file, or check the wiring",
+                mend="Check kind in the shot sheet; else turn voltage_under_compression (or _tension) round in the rig "
+                "file, or check the wiring",
                 check="polarity",
             )
     if settings.incident_foot_s is not None:

@@ -53,9 +53,14 @@ class Pulse:
     u_level_at_start: float = 0.0
 
     @property
+    def foot_by_hand(self) -> bool:
+        """Whether the sheet set the foot."""
+        return self.foot is not None and self.foot is not self.automatic_foot
+
+    @property
     def set_by_hand(self) -> bool:
         """Whether the sheet set the window or the foot."""
-        return self.window_s != self.automatic_window_s or self.foot != self.automatic_foot
+        return self.window_s != self.automatic_window_s or self.foot_by_hand
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)

@@ -134,6 +134,14 @@ class _Cutter:
         by_hand = getattr(self.settings, f"{name}_foot_s")
         foot = picked
         if by_hand is not None:
+            if not window[0] <= by_hand <= window[1]:
+                raise UnusableShotError(
+                    f"the {name} foot set by hand, {by_hand * 1e6:.1f} us, lies outside its window from "
+                    f"{window[0] * 1e6:.1f} to {window[1] * 1e6:.1f} us",
+                    where=f"{name} pulse",
+                    mend="Give the foot on the record's own clock, inside the window",
+                    check="window",
+                )
             foot = Foot(by_hand, interval, picked.sign if picked else 1, picked.rise_s if picked else 0.0)
         begin = values[: max(int(_START_RADII * trace.bar.radius_time_s / interval), 4)]
         peak = max(float(np.abs(values).max()), 1e-12)

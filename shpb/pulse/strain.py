@@ -8,6 +8,7 @@ import numpy as np
 
 from shpb.arrays import FloatArray, frozen, require_finite
 from shpb.pulse.bridge import strain_from_voltage
+from shpb.pulse.front import UnusableShotError
 from shpb.record.record import Record
 from shpb.rig.bar import Bar
 from shpb.rig.gauge import Gauge, TestKind
@@ -87,9 +88,24 @@ def _station(record: Record, gauge: Gauge, bar: Bar, kind: TestKind) -> StationS
         side = strain_from_voltage(voltage - _first_zero(voltage), gauge, bar.poisson_ratio)
         side *= sign
         sides.append(side)
+    _require_possible(sides, gauge)
     axial = sides[0] if len(sides) == 1 else 0.5 * (sides[0] + sides[1])
     bending = None if len(sides) == 1 else frozen(0.5 * (sides[0] - sides[1]))
     return StationStrain(frozen(axial), bending, np.stack(voltages))
+
+
+def _require_possible(sides: list[FloatArray], gauge: Gauge) -> None:
+    """No bar lives through 5 % of strain: such a number comes from a wrong unit, gain or a spike."""
+    for channel, strain in zip(gauge.channels, sides, strict=True):
+        worst = int(np.argmax(np.abs(strain)))
+        if abs(strain[worst]) > 0.05:
+            raise UnusableShotError(
+                f"the voltage at sample {worst} means {100 * float(strain[worst]):.3g} % of strain in the bar",
+                where=f"channel {channel!r}",
+                mend="Check the unit of the voltages (mV or V), gain, excitation and gauge factor in the rig file, and "
+                "look for a spike in the record",
+                check="strain range",
+            )
 
 
 def _first_zero(voltage_v: FloatArray) -> float:

@@ -5,6 +5,8 @@ from __future__ import annotations
 import dataclasses
 from dataclasses import dataclass
 
+import numpy as np
+
 from shpb.arrays import FloatArray, frozen
 from shpb.errors import InputError
 from shpb.pulse.pulse import Pulses
@@ -13,6 +15,7 @@ from shpb.response.bar_analysis import Curve, FaceMotion, face_motion, one_wave,
 from shpb.response.equilibrium import Equilibrium, force_uncertainties, judge_equilibrium
 from shpb.response.flow import FlowStress, apparent_slope_pa, back_extrapolated_yield_pa, flow_stresses
 from shpb.response.span import RateSummary, loading_span, rate_summary
+from shpb.rig.gauge import TestKind
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 from shpb.settings import Analysis, Settings
@@ -105,12 +108,15 @@ def specimen_response(
             where="response",
             mend="Check polarity, channels and windows in the rig file and the shot sheet",
         )
+    curve = one if settings.analysis is Analysis.ONE_WAVE else three
     equilibrium = judge_equilibrium(
-        motion, force_uncertainties(pulses, faces, rig, settings), faces, three.true_strain, loading, specimen,
+        motion, force_uncertainties(pulses, faces, rig, settings), faces, curve.true_strain, loading, specimen,
         settings,
     )  # fmt: skip
     span = None if equilibrium.start is None else (equilibrium.start, loading[1])
-    curve = one if settings.analysis is Analysis.ONE_WAVE else three
+    if span is not None:
+        end = min(span[1], _over_the_edge(three, rig, sheet))
+        span = (span[0], end) if end - span[0] >= 8 else None
     modulus = specimen.young_modulus_pa
     return Response(
         time_s=faces.time_s,
@@ -135,6 +141,16 @@ def specimen_response(
         ),
         apparent_slope_pa=apparent_slope_pa(three.strain, three.stress_pa, loading),
     )  # fmt: skip
+
+
+def _over_the_edge(curve: Curve, rig: Rig, sheet: ShotSheet) -> int:
+    """First sample at which the specimen has grown over a bar's edge (constant volume); beyond the end if never."""
+    size = curve.true_strain.size
+    if sheet.kind is TestKind.TENSION:
+        return size
+    bar = min(rig.incident_bar.diameter_m, rig.transmitted_bar.diameter_m)
+    over = np.flatnonzero(curve.true_strain > 2 * np.log(bar / sheet.specimen.diameter_m))
+    return int(over[0]) if over.size else size
 
 
 def _untuned(

@@ -105,8 +105,13 @@ def save_shot(result: ShotResult, path: Path | str, *, replace_other: bool = Fal
     target = Path(path)
     if target.exists() and not replace_other:
         _require_same_shot(target, result)
-    with whole_file(target) as part, h5py.File(part, "w", libver=("earliest", "v110")) as file:
+    # Built in memory and written as plain bytes: on a full disk the HDF5 library itself may bring the process down.
+    with h5py.File(target.name, "w", driver="core", backing_store=False, libver=("earliest", "v110")) as file:
         _write(file, result)
+        file.flush()
+        image = file.id.get_file_image()
+    with whole_file(target) as part:
+        part.write_bytes(image)
     return target
 
 

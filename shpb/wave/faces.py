@@ -11,6 +11,7 @@ from shpb.errors import InputError
 from shpb.pulse.foot import Foot, pick_foot
 from shpb.pulse.pulse import Pulse, Pulses
 from shpb.pulse.pulses import TAPER_RADII
+from shpb.rig.bar import Bar
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import Specimen
 from shpb.settings import Alignment, Settings
@@ -181,26 +182,29 @@ def _whole(grid: Grid, low_pass: LowPass, rig: Rig) -> int:
     return max(grid.samples - int((TAPER_RADII * unit + 2.0 / low_pass.cutoff_hz) / grid.interval_s), 0)
 
 
+def _travel_s(distance_m: float, bar: Bar) -> float:
+    """Travel time over a distance at the bar speed [s]."""
+    return distance_m / bar.wave_speed_m_s
+
+
 def _feet_at_faces(
     pulses: Pulses, carried: tuple[CarriedPulse, CarriedPulse, CarriedPulse], grid: Grid, rig: Rig
 ) -> tuple[Foot | None, ...]:
     """Pick all three feet at the faces, with the same picker, where dispersion no longer rounds them."""
     unit = rig.incident_bar.radius_time_s
     stop = int((_BEFORE_RADII + _PICK_RADII) * unit / grid.interval_s)
-    feet = []
+    travel_i = _travel_s(rig.incident_gauge.to_specimen_m, rig.incident_bar)
+    travel_t = _travel_s(rig.transmitted_gauge.to_specimen_m, rig.transmitted_bar)
+    to_face = {"incident": travel_i, "reflected": -travel_i, "transmitted": -travel_t}
+    feet: list[Foot | None] = []
     for pulse, at_face in zip(pulses, carried, strict=True):
-        sign = pulse.foot.sign if pulse.foot is not None else None
-        # The noise left after the low-pass is that of a running mean of half its period.
-        feet.append(
-            pick_foot(
-                at_face.strain[:stop],
-                grid.start_s,
-                grid.interval_s,
-                pulse.noise,
-                _SMOOTHING_RADII * unit,
-                sign,
-            )
-            if pulse.foot is not None
-            else None
-        )
+        if pulse.foot is None:
+            feet.append(None)
+        elif pulse.foot_by_hand:
+            # A foot set by hand counts as it stands, carried to the face at c0.
+            feet.append(pulse.foot._replace(time_s=pulse.foot.time_s + to_face[pulse.name]))
+        else:
+            smoothing, sign = _SMOOTHING_RADII * unit, pulse.foot.sign
+            strain = at_face.strain[:stop]
+            feet.append(pick_foot(strain, grid.start_s, grid.interval_s, pulse.noise, smoothing, sign))
     return tuple(feet)

@@ -202,7 +202,7 @@ def test_one_id_twice(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
     copy = lab / "records" / "copy.toml"
     copy.write_text(sheet.read_text())
     assert run("reduce", sheet, copy) == 2
-    assert "shot id W-02 is used twice" in capsys.readouterr().err
+    assert "shot id W-02 is used twice, first in W-02.toml" in capsys.readouterr().err
 
 
 def test_a_shot_without_a_rig(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
@@ -233,6 +233,73 @@ def test_a_hostile_name_is_only_text(lab: Path, capsys: pytest.CaptureFixture[st
     sheet.write_text(text + "\n")
     assert run("reduce", sheet) == 0
     assert "[red] $x^2$ &amp;" in capsys.readouterr().out
+
+
+def test_one_bad_sheet_does_not_stop_the_others(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    bad = lab / "records" / "W-03.toml"
+    bad.write_text(bad.read_text().replace("length_mm", "lenght_mm"))
+    assert run("reduce", lab / "records" / "W-02.toml", bad, "--figure", "none") == 2
+    out, err = capsys.readouterr()
+    assert out.startswith("ACCEPT")
+    assert "lenght_mm" in err
+    assert (lab / "records" / "results" / "W-02.h5").exists()
+
+
+def test_a_folder_with_its_rig_file_in_it(tmp_path: Path, lab: Path) -> None:
+    work = tmp_path / "work"
+    work.mkdir()
+    for name in ("W-02.csv", "W-02.toml"):
+        shutil.copy(lab / "records" / name, work / name)
+    shutil.copy(lab / "calibration" / "bench_1.toml", work / "rig.toml")
+    sheet = work / "W-02.toml"
+    sheet.write_text(sheet.read_text().replace("../calibration/bench_1.toml", "rig.toml"))
+    assert run("reduce", work, "--figure", "none") == 0
+
+
+def test_a_rig_file_for_a_sheet(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    assert run("reduce", lab / "calibration" / "bench_1.toml") == 2
+    assert "this is a rig file, not a shot sheet" in capsys.readouterr().err
+
+
+def test_two_sheets_of_one_record(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    sheet = lab / "records" / "W-02.toml"
+    other = lab / "records" / "other.toml"
+    other.write_text(sheet.read_text().replace('id = "W-02"', 'id = "W-99"'))
+    assert run("reduce", sheet, other, "--figure", "none") == 2
+    assert "shot W-99 names the record of shot W-02" in capsys.readouterr().err
+
+
+def test_the_raw_record_is_never_written_over(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    record = lab / "records" / "W-02.csv"
+    before = record.read_bytes()
+    status = run(
+        "reduce", lab / "records" / "W-02.toml", "--results", lab / "records", "--csv", "--figure", "none"
+    )
+    assert status == 1
+    assert record.read_bytes() == before
+    assert "written over what it was made from" in capsys.readouterr().err
+    assert not (lab / "records" / "W-02.h5").exists()
+
+
+def test_a_stranger_beside_the_results_is_left_alone(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    out = lab / "out"
+    out.mkdir()
+    (out / "W-02.png").write_text("holiday")
+    assert run("reduce", lab / "records" / "W-02.toml", "--results", out) == 1
+    assert (out / "W-02.png").read_text() == "holiday"
+    assert "was not written with a result" in capsys.readouterr().err
+    (out / "W-02.png").unlink()
+    assert run("reduce", lab / "records" / "W-02.toml", "--results", out) == 0
+    assert run("reduce", lab / "records" / "W-02.toml", "--results", out) == 0
+
+
+def test_odd_arguments(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    sheet = lab / "records" / "W-02.toml"
+    assert run("reduce", sheet, "--workers", "0") == 2
+    assert run("reduce", sheet, "--results", lab / "README.txt") == 2
+    assert "this is a file" in capsys.readouterr().err
+    for arguments in (["--dispersion", "foo"], ["--cutoff-khz", "-1"], ["--cutoff-khz", "nan"]):
+        assert run("reduce", sheet, "--figure", "none", *arguments) == 2
 
 
 # --- other verbs -------------------------------------------------------------------------------

@@ -206,3 +206,17 @@ def test_gauge_factor_of_long_leads() -> None:
     station = gauge("A", 1.0, resistance_ohm=Quantity(120.0), lead_resistance_ohm=Quantity(1.2))
     # k R/(R + R_lead): 1 % of lead resistance costs 1 % of sensitivity (circuit theory).
     assert station.effective_gauge_factor == pytest.approx(2.1 * 120 / 121.2)
+
+
+def test_a_wrong_unit_is_not_called_a_wrong_polarity(faces: FaceStrains) -> None:
+    record = record_of(faces, rig(), noise_v=0.002)
+    with pytest.raises(UnusableShotError, match="Check the unit of the voltages"):
+        pulses_of(altered(record, 1000 * record.voltage_v))
+
+
+def test_a_foot_outside_its_window(faces: FaceStrains) -> None:
+    record = record_of(faces, rig(), noise_v=0.002)
+    with pytest.raises(
+        UnusableShotError, match="transmitted foot set by hand, 9999.0 us, lies outside its window"
+    ):
+        pulses_of(record, settings=DEFAULT.replaced(transmitted_foot_s=9999e-6))

@@ -5,12 +5,13 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from shpb.errors import InputError
 from shpb.quantity import Quantity
 from shpb.reduction import ShotResult, reduce
 from shpb.response.equilibrium import Outcome
 from shpb.response.flow import back_extrapolated_yield_pa, flow_stresses, plastic_strain
 from shpb.response.span import loading_span, rate_summary
-from shpb.settings import DEFAULT, Analysis
+from shpb.settings import DEFAULT, Alignment, Analysis, Dispersion
 from tests.synthetic import FaceStrains, copper, record_of, rig, sheet, smooth_pulse, uniform_plastic_shot
 
 
@@ -212,3 +213,23 @@ def test_specimen_without_modulus_or_density_still_reduces() -> None:
     result = reduce(record_of(faces, rig()), rig(), sheet(bare))
     assert result.response.equilibrium.reverberations is None
     assert not result.response.flow[0].plastic
+
+
+def test_a_foot_set_by_hand_moves_the_pulse() -> None:
+    faces, _ = uniform_plastic_shot(rig(), copper(), interval_s=5e-7)
+    record = record_of(faces, rig(), noise_v=0.002)
+    feet = DEFAULT.replaced(alignment=Alignment.FEET)
+    own = reduce(record, rig(), sheet(), feet)
+    assert own.pulses.reflected.foot is not None
+    later = own.pulses.reflected.foot.time_s + 5e-6
+    moved = reduce(record, rig(), sheet(), feet.replaced(reflected_foot_s=later))
+    # Its foot stands 5 us (and what the face's picker sees differently) later: so much more it is laid back.
+    assert moved.faces.reflected_shift_s - own.faces.reflected_shift_s == pytest.approx(-5e-6, abs=1e-6)
+    assert moved.pulses.reflected.set_by_hand
+
+
+def test_settings_are_looked_at_before_they_are_used() -> None:
+    assert DEFAULT.replaced(dispersion="none").dispersion is Dispersion.NONE
+    for wrong in ({"dispersion": "foo"}, {"cutoff_hz": -1.0}, {"equilibrium_limit": float("nan")}):
+        with pytest.raises(InputError, match="settings"):
+            DEFAULT.replaced(**wrong)

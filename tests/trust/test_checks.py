@@ -252,3 +252,31 @@ def test_gravest_finding_decides() -> None:
     assert verdict_of(of(Weight.FINE, Weight.NOTE)) is Verdict.ACCEPT
     assert verdict_of(of(Weight.NOTE, Weight.RESTRICT)) is Verdict.RESTRICT
     assert verdict_of(of(Weight.RESTRICT, Weight.REJECT)) is Verdict.REJECT
+
+
+def test_something_must_confirm_the_scale(faces: FaceStrains) -> None:
+    assert finding(run(faces), "absolute calibration").weight is Weight.FINE
+    said = finding(run(faces, shot=good_sheet(striker_speed_m_s=None)), "absolute calibration")
+    assert said.weight is Weight.NOTE
+
+
+def test_a_first_slope_above_the_modulus(faces: FaceStrains) -> None:
+    assert finding(run(faces), "first slope").weight is Weight.FINE
+    # A modulus of 10 GPa stated for a specimen whose curve rises far more steeply.
+    soft = sheet(copper(young_modulus_pa=Quantity(10e9)), striker_speed_m_s=Quantity(SPEED))
+    assert finding(run(faces, shot=soft), "first slope").weight is Weight.REJECT
+
+
+def test_what_counts_ends_at_the_bars_edge(faces: FaceStrains) -> None:
+    # 19 mm on 20 mm: over the edge from a true strain of 2 ln(20/19) = 0.1026 on.
+    wide = sheet(copper(diameter_m=Quantity(0.019)), striker_speed_m_s=Quantity(SPEED))
+    result = run(faces, shot=wide)
+    assert finding(result, "barrelling room").weight is Weight.RESTRICT
+    assert result.response.strain_span is not None
+    assert result.response.strain_span[1] == pytest.approx(2 * np.log(20 / 19), abs=0.003)
+
+
+def test_samples_the_scope_marked(faces: FaceStrains) -> None:
+    lab = rig()
+    record = dataclasses.replace(record_of(faces, lab), remarks=("channel 'A': 2 samples over range",))
+    assert finding(reduce(record, lab, good_sheet()), "over range").weight is Weight.REJECT

@@ -154,3 +154,19 @@ def record_end(evidence: Evidence) -> Finding | None:
         source="common practice",
         action="Lengthen the record, or shorten the striker, so that the pulses die away in it.",
     )
+
+
+@check
+def over_range(evidence: Evidence) -> Finding | None:
+    """Samples that the scope itself marked as beyond its range."""
+    said = [remark for remark in evidence.record.remarks if "over range" in remark.lower()]
+    if not said:
+        return None
+    return Finding(
+        check="over range",
+        weight=Weight.REJECT,
+        measured="; ".join(said),
+        limit="none",
+        source="the record's own marks",
+        action="Widen the scope range of that channel or lower the gain, and fire again.",
+    )

@@ -17,7 +17,7 @@ _EQUILIBRIUM_SOURCE = "settings equilibrium_limit; Ravichandran & Subhash 1994 (
 def force_equilibrium(evidence: Evidence) -> Finding | None:
     """One of four outcomes."""
     eq = evidence.response.equilibrium
-    limit = f"R <= {100 * eq.limit:.0f} % for 90 % of the rest of the loading"
+    limit = f"R <= {100 * eq.limit:.3g} % for 90 % of the rest of the loading"
     spread = f"mean R {100 * eq.mean_ratio:.1f} %, floor {100 * eq.typical_floor:.1f} %"
     match eq.outcome:
         case Outcome.REACHED:
@@ -204,5 +204,45 @@ def barrelling_room(evidence: Evidence) -> Finding | None:
         measured=f"specimen grew to {100 * share:.0f} % of the bar's diameter",
         limit="90 %",
         source="common practice",
-        action="Use a smaller specimen or stop the strain earlier (shorter striker, stop ring).",
+        action="What counts ends where the specimen reaches the bar's edge. Use a smaller specimen or stop the strain "
+        "earlier (shorter striker, stop ring).",
+    )
+
+
+@check
+def absolute_calibration(evidence: Evidence) -> Finding | None:
+    """Something outside the bridges must confirm their scale: the striker's momentum or the specimen's final length."""
+    sheet = evidence.sheet
+    by_striker = sheet.striker_speed_m_s is not None and evidence.rig.striker is not None
+    by_length = sheet.specimen.length_after_m is not None
+    known = [
+        name for name, there in (("striker speed", by_striker), ("length after the shot", by_length)) if there
+    ]
+    return Finding(
+        check="absolute calibration",
+        weight=Weight.FINE if known else Weight.NOTE,
+        measured=f"scale confirmed by {' and '.join(known)}"
+        if known
+        else "nothing confirms the scale of the gauges",
+        limit="striker speed or length after the shot",
+        source="common practice",
+        action="State the striker speed and the striker, or measure the specimen after the shot: a wrong gauge factor "
+        "or gain scales every curve and shows nowhere else.",
+    )
+
+
+@check
+def first_slope(evidence: Evidence) -> Finding | None:
+    """The apparent slope is far below the modulus as a rule; above it, a size or a scale is wrong."""
+    modulus, slope = evidence.sheet.specimen.young_modulus_pa, evidence.response.apparent_slope_pa
+    if modulus is None or slope is None:
+        return None
+    share = slope / modulus
+    return Finding(
+        check="first slope",
+        weight=Weight.REJECT if share > 1.3 else Weight.NOTE if share > 1.0 else Weight.FINE,
+        measured=f"first slope {100 * share:.0f} % of the stated modulus",
+        limit="100 %, reject beyond 130 %",
+        source="common practice: 10 to 50 % on metals, bar faces give way",
+        action="Check the specimen's diameter and length, its stated modulus, and the gauges' scale.",
     )
