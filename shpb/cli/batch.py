@@ -82,9 +82,12 @@ def _sheets(sources: Sequence[Path], errors: list[InputError]) -> Iterator[tuple
             elif source.suffix.lower() == ".toml":
                 yield from _one_sheet(source, errors)
             else:
-                from shpb.rig.shot_list import read_shot_list
+                from shpb.rig.shot_list import usable_rows
 
-                for sheet in read_shot_list(source):
+                sheets, mistakes = usable_rows(source)
+                if mistakes is not None:
+                    errors.append(mistakes)
+                for sheet in sheets:
                     yield source, sheet
         except InputError as error:
             errors.append(error)

@@ -6,6 +6,7 @@ import os
 from collections.abc import Mapping
 from pathlib import Path
 
+from shpb.errors import FileMistakes, Mistake
 from shpb.rig.columns import COLUMNS, NOTE_PREFIX, RECORD_COLUMNS, Column, cell_value
 from shpb.rig.csv_rows import Row, split_rows
 from shpb.rig.key import Kind
@@ -53,10 +54,28 @@ def read_shot_list(path: str | Path) -> tuple[ShotSheet, ...]:
     return shot_list_from_text(read_text(path, "shot list", latin_1=True), str(path), path.parent)
 
 
+def usable_rows(path: str | Path) -> tuple[tuple[ShotSheet, ...], FileMistakes | None]:
+    """Read what can be used of a shot list: the sheets of its sound rows, and the mistakes of the others.
+
+    Raises InputError as :func:`read_shot_list` does where the file or its header cannot be used at all.
+    """
+    path = Path(path)
+    text = read_text(path, "shot list", latin_1=True)
+    sheets, mistakes = _rows_of(text, str(path), path.parent)
+    return sheets, FileMistakes(mistakes) if mistakes else None
+
+
 def shot_list_from_text(text: str, name: str, folder: str | Path) -> tuple[ShotSheet, ...]:
     """Return the sheets that the text of a shot list describes; see :func:`read_shot_list`."""
+    sheets, mistakes = _rows_of(text, name, Path(folder))
+    if mistakes:
+        raise FileMistakes(mistakes)
+    return sheets
+
+
+def _rows_of(text: str, name: str, folder: Path) -> tuple[tuple[ShotSheet, ...], list[Mistake]]:
+    """Sheets of the rows without a mistake, and the mistakes of all others."""
     separator, header, rows = split_rows(text, name, COLUMNS)
-    folder = Path(folder)
     seen = _RowCollector(name)
     columns = _columns(header, rows, seen)
     seen.finish()  # a misnamed column would only bring a mistake on every row
@@ -64,16 +83,16 @@ def shot_list_from_text(text: str, name: str, folder: str | Path) -> tuple[ShotS
     sheets: list[ShotSheet] = []
     for row in rows:
         seen.begin(row)
+        before = len(seen.mistakes)
         document = _document(row, columns, separator != ",", seen)
         _check_surplus(row, len(header.cells), seen)
         once.check(document, row, seen)
         sheet = sheet_from_document(
             document, _sheet_text(name, header, row, document), folder, seen, f"{name}, line {row.line}"
         )
-        if sheet is not None:
+        if sheet is not None and len(seen.mistakes) == before:
             sheets.append(sheet)
-    seen.finish()
-    return tuple(sheets)
+    return tuple(sheets), seen.mistakes
 
 
 class _RowCollector(Collector):

@@ -245,6 +245,19 @@ def test_one_bad_sheet_does_not_stop_the_others(lab: Path, capsys: pytest.Captur
     assert (lab / "records" / "results" / "W-02.h5").exists()
 
 
+def test_one_bad_row_does_not_stop_the_others(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    listed = lab / "shot_list.csv"
+    lines = listed.read_text().splitlines()
+    row = next(i for i, line in enumerate(lines) if "H-02" in line)
+    lines[row] = lines[row].replace("compression", "compresion")
+    listed.write_text("\n".join(lines) + "\n")
+    assert run("reduce", listed, "--figure", "none") == 2
+    out, err = capsys.readouterr()
+    assert "H-01 ACCEPT" in " ".join(out.split())
+    assert "compresion" in err
+    assert not (lab / "results" / "H-02.h5").exists()
+
+
 def test_a_folder_with_its_rig_file_in_it(tmp_path: Path, lab: Path) -> None:
     work = tmp_path / "work"
     work.mkdir()
