@@ -17,6 +17,8 @@ if TYPE_CHECKING:
     from concurrent.futures import Executor
 
     from shpb.cli.batch import Task
+    from shpb.errors import ShpbError
+    from shpb.reduction import ShotResult
     from shpb.view.listing import ListRow
 
 NAME = "reduce"
@@ -130,11 +132,11 @@ class _Work:
     outputs: Outputs
     full: bool
     figure_later: bool
+    as_json: bool
 
     def __call__(self, task: Task) -> Done:
         from shpb.errors import InputError, ShpbError
         from shpb.view.listing import list_row_of_error
-        from shpb.view.summary import error_json
 
         try:
             return self.reduced(task)
@@ -142,10 +144,25 @@ class _Work:
             return Done(
                 row=list_row_of_error(task.sheet.shot_id, error),
                 text="",
-                json={"shot_id": task.sheet.shot_id, **error_json(error)},
+                json=self._error_json(task, error),
                 error=str(error),
                 bad_input=isinstance(error, InputError),
             )
+
+    def _shot_json(self, result: ShotResult) -> dict[str, Any]:
+        """What other programs get, made only where they asked."""
+        if not self.as_json:
+            return {}
+        from shpb.view.summary import shot_json
+
+        return shot_json(result)
+
+    def _error_json(self, task: Task, error: ShpbError) -> dict[str, Any]:
+        if not self.as_json:
+            return {}
+        from shpb.view.summary import error_json
+
+        return {"shot_id": task.sheet.shot_id, **error_json(error)}
 
     def reduced(self, task: Task) -> Done:
         from shpb.record.read import read_record
@@ -153,7 +170,6 @@ class _Work:
         from shpb.rig.overrides import hints_for, settings_for, settings_from
         from shpb.store.shot_file import save_shot
         from shpb.view.listing import list_row
-        from shpb.view.summary import shot_json
         from shpb.view.terminal import shot_text
 
         settings = settings_from(self.outputs.choices, settings_for(task.rig, task.sheet))
@@ -171,7 +187,7 @@ class _Work:
         done = Done(
             row=list_row(result),
             text=shot_text(result, full=self.full),
-            json=shot_json(result),
+            json=self._shot_json(result),
             files=tuple(map(str, files)),
         )
         if self.figure_later:
@@ -238,7 +254,7 @@ def reduce_all(
     from shpb.cli.progress import progress
 
     one = len(tasks) == 1
-    work = _Work(outputs, full, figure_later=one and not as_json)
+    work = _Work(outputs, full, figure_later=one and not as_json, as_json=as_json)
     found: dict[int, Done] = {}
     with progress(len(tasks), "reducing shots") as step:
         for index, done in in_parallel(work, tasks, workers, step if not one else _silent, pool):
