@@ -81,25 +81,55 @@ class Contribution:
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
 class Budget:
-    """Standard uncertainties on the time axis of the response.
+    """Standard uncertainties of the curves, worked out on a thinned grid and laid on the response's when asked for.
 
     Attributes
     ----------
-    u : dict of str to float array, shape (samples,)
-        Standard uncertainty of each of ``OUTPUTS`` [Pa], [1/s] or [1].
-    u_shared : dict of str to float array
-        The part that all shots of the rig share (wave speed, density, bar diameters, gauges).
-    u_true_strain, u_true_stress_pa : float array
-        Of the curve put forward.
+    time_s : float array, shape (thinned samples,)
+        The grid that was worked on; the same as the response's where that is not much finer than need be.
+    response_time_s : float array, shape (samples,)
+        Time axis of the response, on which all arrays below are given.
+    total, shared : float array, shape (outputs, thinned samples)
+        Standard uncertainty of each of ``OUTPUTS``, whole and the part that all shots of the rig share.
+    true : float array, shape (2, thinned samples)
+        Of true strain and of true stress of the curve put forward.
     contributions : tuple of Contribution
         Ranked by their greatest share.
     """
 
-    u: dict[str, FloatArray]
-    u_shared: dict[str, FloatArray]
-    u_true_strain: FloatArray
-    u_true_stress_pa: FloatArray
+    time_s: FloatArray
+    response_time_s: FloatArray
+    total: FloatArray
+    shared: FloatArray
+    true: FloatArray
     contributions: tuple[Contribution, ...] = field(default=())
+
+    @property
+    def u(self) -> dict[str, FloatArray]:
+        """Standard uncertainty of each output [Pa], [1/s] or [1], shape (samples,) each."""
+        return {name: self._laid(row) for name, row in zip(OUTPUTS, self.total, strict=True)}
+
+    @property
+    def u_shared(self) -> dict[str, FloatArray]:
+        """The part that all shots of the rig share (wave speed, density, bar diameters, gauges)."""
+        return {name: self._laid(row) for name, row in zip(OUTPUTS, self.shared, strict=True)}
+
+    @property
+    def u_true_strain(self) -> FloatArray:
+        """Standard uncertainty of true strain of the curve put forward, shape (samples,)."""
+        return self._laid(self.true[0])
+
+    @property
+    def u_true_stress_pa(self) -> FloatArray:
+        """Standard uncertainty of true stress of the curve put forward [Pa], shape (samples,)."""
+        return self._laid(self.true[1])
+
+    def _laid(self, row: FloatArray) -> FloatArray:
+        """A row on the time axis of the response, by straight lines."""
+        if self.time_s.size == self.response_time_s.size:
+            return row
+        laid: FloatArray = np.interp(self.response_time_s, self.time_s, row)
+        return laid
 
 
 class _Scene(NamedTuple):
@@ -145,7 +175,7 @@ def uncertainty_budget(evidence: Evidence) -> Budget:
     """Propagate every stated (or assumed) uncertainty to the curves, first order.
 
     The cost is a fraction of the reduction: no transform is done again, and the changes are worked out on a thinned
-    grid and laid on the response's by straight lines.
+    grid.
     """
     scene = _scene(evidence)
     shared = np.zeros((len(OUTPUTS), scene.at.size))
@@ -173,22 +203,15 @@ def uncertainty_budget(evidence: Evidence) -> Budget:
         )
         for source, variance in lines
     ]
-    u = _on_response(scene, np.sqrt(total))
-    u_true_strain, u_true_stress = _true(u, evidence)
+    u = np.sqrt(total)
     return Budget(
-        u=u,
-        u_shared=_on_response(scene, np.sqrt(shared)),
-        u_true_strain=frozen(u_true_strain),
-        u_true_stress_pa=frozen(u_true_stress),
+        time_s=frozen(scene.time_s),
+        response_time_s=evidence.response.time_s,
+        total=frozen(u),
+        shared=frozen(np.sqrt(shared)),
+        true=frozen(_true(u, scene)),
         contributions=tuple(sorted(contributions, key=lambda c: -max(c.share))),
     )
-
-
-def _on_response(scene: _Scene, values: FloatArray) -> dict[str, FloatArray]:
-    """Rows of ``values`` by the name of their output, on the time axis of the response."""
-    time = scene.evidence.response.time_s
-    rows = values if scene.at.size == time.size else (np.interp(time, scene.time_s, row) for row in values)
-    return {name: frozen(np.array(row)) for name, row in zip(OUTPUTS, rows, strict=True)}
 
 
 # --- sources -----------------------------------------------------------------------------------
@@ -364,21 +387,21 @@ def _white_noise(scene: _Scene) -> FloatArray:
     )
 
 
-def _true(u: dict[str, FloatArray], evidence: Evidence) -> tuple[FloatArray, FloatArray]:
-    """Standard uncertainty of true strain and true stress [Pa] of the curve put forward.
+def _true(u: FloatArray, scene: _Scene) -> FloatArray:
+    """Standard uncertainty of true strain and true stress [Pa] of the curve put forward, shape (2, thinned samples).
 
     Compression: e_t = -ln(1 - e), s_t = s (1 - e); tension with the other sign. Stress and strain enter as
     independent: what they share (the wave speed) is a small part of either.
     """
+    evidence = scene.evidence
     response = evidence.response
     which = "1w" if response.analysis is Analysis.ONE_WAVE else "3w"
-    curve = response.curve
     sign = 1.0 if evidence.sheet.kind is TestKind.TENSION else -1.0
-    stretch = np.maximum(1.0 + sign * curve.strain, 1e-3)
-    u_strain, u_stress = u[f"strain_{which}"], u[f"stress_{which}"]
-    u_true_stress: FloatArray = np.hypot(stretch * u_stress, curve.stress_pa * u_strain)
-    u_true_strain: FloatArray = u_strain / stretch
-    return u_true_strain, u_true_stress
+    stretch = np.maximum(1.0 + sign * response.curve.strain[scene.at], 1e-3)
+    u_strain, u_stress = u[OUTPUTS.index(f"strain_{which}")], u[OUTPUTS.index(f"stress_{which}")]
+    return np.stack(
+        (u_strain / stretch, np.hypot(stretch * u_stress, response.curve.stress_pa[scene.at] * u_strain))
+    )
 
 
 def flow_stress_uncertainty_pa(budget: Budget, response: Response) -> tuple[float | None, ...]:
