@@ -100,7 +100,7 @@ def force_uncertainties(
 
     def variance(strain: FloatArray, noise: float, u_zero: float) -> FloatArray:
         slope = np.gradient(strain, interval)
-        band = _noise_share(faces, interval)
+        band = faces.low_pass.noise_share(interval)
         return (settings.pulse_error * strain) ** 2 + (slope * u_time) ** 2 + (noise * band) ** 2 + u_zero**2
 
     u_in = rig.incident_bar.force_per_strain_n * np.sqrt(
@@ -111,11 +111,6 @@ def force_uncertainties(
         variance(faces.transmitted.strain, pulses.transmitted.noise, pulses.transmitted.zero.u_level)
     )
     return u_in, u_out
-
-
-def _noise_share(faces: FacePulses, interval_s: float) -> float:
-    """Share of white noise that passes the low-pass: its equivalent bandwidth is 0.875 of the cut-off."""
-    return float(min(np.sqrt(2 * 0.875 * faces.low_pass.cutoff_hz * interval_s), 1.0))
 
 
 def judge_equilibrium(

@@ -366,7 +366,7 @@ def _white_noise(scene: _Scene) -> FloatArray:
     """
     evidence = scene.evidence
     rig, specimen, faces, pulses = evidence.rig, evidence.sheet.specimen, evidence.faces, evidence.pulses
-    passed = min(2 * 0.875 * faces.low_pass.cutoff_hz * faces.interval_s, 1.0)
+    passed = faces.low_pass.noise_share(faces.interval_s) ** 2
     summed = (scene.time_s - scene.time_s[0]) * faces.interval_s
     i, t = pulses.incident.noise**2, pulses.transmitted.noise**2
     force_i = rig.incident_bar.force_per_strain_n**2 * 2 * i

@@ -49,6 +49,13 @@ class LowPass:
         """Time by which the ringing of a step has fallen below 0.1 % [s]."""
         return 4.0 / self.cutoff_hz
 
+    def noise_share(self, interval_s: float) -> float:
+        """Share of the standard deviation of white noise, sampled at ``interval_s``, that passes.
+
+        The equivalent noise bandwidth of the raised cosine, the integral of its squared gain, is 0.875 of the cut-off.
+        """
+        return float(min(np.sqrt(2 * 0.875 * self.cutoff_hz * interval_s), 1.0))
+
     def gain(self, frequency_hz: FloatArray) -> FloatArray:
         """Gain at each frequency, shape of ``frequency_hz``."""
         x = np.clip(frequency_hz / self.cutoff_hz - 0.5, 0.0, 1.0)

@@ -105,7 +105,7 @@ def _steps(evidence: Evidence, pulse: Pulse, gauge: Gauge) -> int:
 def noise(evidence: Evidence) -> Finding | None:
     """Noise that is left in each pulse after the low-pass, against its peak."""
     faces = evidence.faces
-    share = min(np.sqrt(2 * 0.875 * faces.low_pass.cutoff_hz * faces.interval_s), 1.0)
+    share = faces.low_pass.noise_share(faces.interval_s)
     levels = {
         pulse.name: pulse.noise * share / max(float(np.abs(pulse.strain).max()), 1e-12)
         for pulse in evidence.pulses
