@@ -12,12 +12,13 @@ from shpb.pulse.arrivals import geometric_arrivals
 from shpb.pulse.pulse import Pulse, Pulses
 from shpb.pulse.zero_line import ZeroLine
 from shpb.quantity import Quantity
-from shpb.response.balance import face_indentation_m, work_balance
+from shpb.response.balance import work_balance
 from shpb.response.bar_analysis import face_motion, integrated, one_wave, three_wave, two_wave
 from shpb.rig.gauge import TestKind
 from shpb.rig.rig import Rig
 from shpb.settings import DEFAULT
 from shpb.wave.faces import FacePulses, low_pass_of
+from shpb.wave.indentation import face_indentation_m
 from shpb.wave.propagation import CarriedPulse
 from tests.synthetic import copper, rig, steel_bar
 
