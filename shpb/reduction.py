@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import dataclass, fields, replace
+from typing import TYPE_CHECKING
 
 from shpb.pulse.pulse import Pulses
 from shpb.pulse.pulses import find_pulses
@@ -14,10 +16,14 @@ from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 from shpb.settings import Settings
 from shpb.trust.budget import Budget, uncertainty_budget
+from shpb.trust.closure import Closure, close
 from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Finding, Verdict, verdict_of
 from shpb.trust.judge import judge
 from shpb.wave.faces import FacePulses, carry_to_faces
+
+if TYPE_CHECKING:
+    from shpb.trust.draws import Draws
 
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
@@ -42,7 +48,9 @@ class ShotResult:
     faces: FacePulses
     response: Response
     budget: Budget
+    closure: Closure | None
     findings: tuple[Finding, ...]
+    draws: Draws | None = None  # by :func:`draw_shot`
 
     @property
     def verdict(self) -> Verdict:
@@ -51,7 +59,7 @@ class ShotResult:
 
 
 def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings | None = None) -> ShotResult:
-    """Reduce one shot: voltages to strain, pulses, faces, response, findings.
+    """Reduce one shot: voltages to strain, pulses, faces, response, uncertainty, closure, findings.
 
     Parameters
     ----------
@@ -85,7 +93,7 @@ def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings | None
     settings = settings_for(rig, sheet) if settings is None else settings
     strain = gauge_strain(record, rig, sheet.kind)
     pulses = find_pulses(strain, rig, sheet.specimen, settings)
-    faces = carry_to_faces(pulses, rig, sheet.specimen, settings)
+    faces = carry_to_faces(pulses, rig, sheet, settings)
     response = specimen_response(faces, pulses, rig, sheet, settings)
     evidence = Evidence(
         record=record,
@@ -97,6 +105,8 @@ def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings | None
         faces=faces,
         response=response,
     )
+    budget = uncertainty_budget(evidence, rig.correlation_pairs)
+    closure = close(evidence, budget)
     return ShotResult(
         record=record,
         rig=rig,
@@ -106,6 +116,59 @@ def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings | None
         pulses=pulses,
         faces=faces,
         response=response,
-        budget=uncertainty_budget(evidence),
-        findings=judge(evidence),
+        budget=budget,
+        closure=closure,
+        findings=judge(replace(evidence, budget=budget, closure=closure)),
     )
+
+
+def draw_shot(
+    result: ShotResult,
+    draws: int | None = None,
+    *,
+    seed: int = 1,
+    progress: Callable[[int, int | None], None] | None = None,
+) -> ShotResult:
+    """Work out the uncertainty of a reduced shot by Monte Carlo as well, beside its linear budget.
+
+    Parameters
+    ----------
+    result : ShotResult
+        The reduced shot.
+    draws : int or None
+        How many, 200 or more; None draws until one significant digit of every standard uncertainty has settled
+        (JCGM 101:2008, 7.9.4).
+    seed : int
+        The same seed gives the same numbers.
+    progress : callable
+        Called after each chunk with the draws done and the draws asked for (None where they are not known).
+
+    Returns
+    -------
+    ShotResult
+        The same with ``draws``.
+
+    Raises
+    ------
+    InputError
+        If the number of draws or the seed is out of range.
+
+    Examples
+    --------
+    >>> from shpb.reduction import draw_shot
+    >>> drawn = draw_shot(result, 500, seed=1).draws
+    >>> drawn.draws, drawn.mean.shape == drawn.u.shape
+    (500, True)
+    """
+    from shpb.trust.draws import draw_evidence
+
+    evidence = Evidence(**{field.name: getattr(result, field.name) for field in fields(Evidence)})
+    drawn = draw_evidence(
+        evidence,
+        result.budget,
+        draws,
+        seed=seed,
+        correlations=result.rig.correlation_pairs,
+        progress=progress,
+    )
+    return replace(result, draws=drawn)

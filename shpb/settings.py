@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from enum import StrEnum
 
 from shpb.errors import InputError
+from shpb.limits import USUAL, Limits
 
 
 class Dispersion(StrEnum):
@@ -30,6 +31,18 @@ class Analysis(StrEnum):
 
     ONE_WAVE = "one-wave"
     THREE_WAVE = "three-wave"
+
+
+class Correction(StrEnum):
+    """What is known to disturb a curve, and can be taken out of it."""
+
+    INDENTATION = "indentation"  # bar faces give way under the specimen
+    INERTIA = "inertia"  # radial and axial inertia of the specimen
+    FRICTION = "friction"  # between specimen and bar faces
+    GAUGE_RISE = "gauge-rise"  # gauge length and amplifier round the fronts
+    BAR_TEMPERATURE = "bar-temperature"  # a hot or cold specimen changes the bars' ends
+    MISMATCH = "bar-mismatch"  # two bars of different impedance
+    HEATING = "heating"  # plastic work heats the specimen
 
 
 Span = tuple[float, float]
@@ -62,24 +75,21 @@ class Settings:
     reflected_foot_s: float | None = None
     transmitted_foot_s: float | None = None
     analysis: Analysis = Analysis.ONE_WAVE  # the curve put forward; all are stored
-    # Limits of the checks (common practice unless the check's table names a source).
-    equilibrium_limit: float = 0.05
-    equilibrium_late_strain: float = 0.03
+    # All are computed and reported; these are applied too.
+    corrections: tuple[Correction, ...] = (Correction.MISMATCH,)
     # Relative error that each pulse has on its own (gauge linearity, bending, rest of dispersion): what
     # keeps F_in, a difference of two large pulses, from being better known. Common practice: 0.5 %.
     pulse_error: float = 0.005
-    rate_variation_limit: float = 0.10
-    overlap_limit: float = 0.02  # tail of the incident pulse under the reflected one, share of its peak
-    misalignment_limit_s: float = 3e-6
-    striker_limit: float = 0.05  # impulse of the incident pulse against striker momentum
-    bar_yield_limit: float = 0.9  # greatest bar stress by yield strength
-    noise_limit: float = 0.02  # noise of a pulse after the low-pass, share of its peak
-    least_codes: int = 64  # digitiser steps that a pulse must span
-    final_length_limit: float = 0.02  # strain from the bars less strain from the micrometer
-    work_limit: float = 0.05  # work at the faces against work in the specimen
     flow_strains: tuple[float, ...] = (0.02, 0.05, 0.10, 0.15, 0.20)
+    limits: Limits = USUAL  # of the checks
 
     def __post_init__(self) -> None:
+        object.__setattr__(self, "corrections", _corrections(self.corrections))
+        if not isinstance(self.limits, Limits):
+            raise InputError(
+                f"found {self.limits!r}", where="settings.limits", mend="Give a Limits value or leave it out"
+            )
+        self.limits.require_order()
         for name, kind in (("dispersion", Dispersion), ("alignment", Alignment), ("analysis", Analysis)):
             try:
                 object.__setattr__(self, name, kind(getattr(self, name)))
@@ -112,6 +122,21 @@ class Settings:
     def replaced(self, **changes: object) -> Settings:
         """Return a copy with the given fields changed."""
         return dataclasses.replace(self, **changes)  # type: ignore[arg-type]
+
+
+def _corrections(words: object) -> tuple[Correction, ...]:
+    """The corrections as members of their enumeration, each once."""
+    try:
+        chosen = tuple(Correction(word) for word in words)  # type: ignore[attr-defined]
+    except (TypeError, ValueError):
+        chosen = None
+    if chosen is None or isinstance(words, str) or len(set(chosen)) < len(chosen):
+        raise InputError(
+            f"found {words!r}",
+            where="settings.corrections",
+            mend=f"Give each at most once, in a list: {', '.join(Correction)}",
+        )
+    return chosen
 
 
 def _require_usable(name: str, number: object) -> None:

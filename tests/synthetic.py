@@ -53,6 +53,7 @@ def gauge(channel: str, to_specimen_m: float, **changes: object) -> Gauge:
 def rig(**changes: object) -> Rig:
     values: dict[str, object] = {
         "name": "closed form",
+        "calibration_date": "2031-02-03",
         "incident_bar": steel_bar(),
         "transmitted_bar": steel_bar(),
         "incident_gauge": gauge("A", 1.0),
@@ -69,6 +70,7 @@ def sheet(specimen: Specimen | None = None, **changes: object) -> ShotSheet:
         "shot_id": "closed-form-1",
         "kind": TestKind.COMPRESSION,
         "specimen": specimen or copper(),
+        "date": "2031-02-17",
     }
     return ShotSheet(**{**values, **changes})  # type: ignore[arg-type]
 

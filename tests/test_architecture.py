@@ -15,11 +15,12 @@ PACKAGE = Path(shpb.__file__).parent
 MODULES = sorted(path for path in PACKAGE.rglob("*.py"))
 
 # What each folder may import, besides itself and the ground.
-GROUND = {"errors", "quantity", "arrays", "version", "whole_file"}
+GROUND = {"errors", "quantity", "arrays", "version", "whole_file", "limits"}
 ALLOWED: dict[str, set[str]] = {
     "errors": set(),
     "quantity": set(),
     "version": set(),
+    "limits": set(),
     "arrays": set(),
     "whole_file": set(),
     "settings": set(),
@@ -28,12 +29,14 @@ ALLOWED: dict[str, set[str]] = {
     "pulse": {"record", "rig", "settings"},
     "wave": {"pulse", "rig", "settings"},
     "response": {"wave", "pulse", "rig", "settings"},
-    "trust": {"response", "wave", "pulse", "record", "rig", "settings"},
+    "trust": {"forward", "response", "wave", "pulse", "record", "rig", "settings"},
     "reduction": {"trust", "response", "wave", "pulse", "record", "rig", "settings"},
     "forward": {"wave", "rig", "settings"},
+    "merge": {"record", "response", "rig", "settings"},
     "store": {"reduction", "trust", "response", "wave", "pulse", "record", "rig", "settings"},
     "view": {"reduction", "trust", "response", "wave", "pulse", "record", "rig", "settings"},
     "demo": {"forward", "wave", "rig", "record", "settings"},
+    "docs": {"response", "trust", "rig"},
     "cli": {"demo", "view", "store", "reduction", "record", "rig", "settings"},
 }
 

@@ -11,8 +11,8 @@ _QUIET_S = 10.0  # between two lines off a terminal
 
 
 @contextmanager
-def progress(total: int, what: str) -> Iterator[Callable[[int], None]]:
-    """Give a function to call with the number of items done."""
+def progress(total: int | None, what: str) -> Iterator[Callable[[int], None]]:
+    """Give a function to call with the number of items done; ``total`` is None where nobody knows it."""
     if sys.stderr.isatty():
         with _bar(total, what) as step:
             yield step
@@ -21,7 +21,7 @@ def progress(total: int, what: str) -> Iterator[Callable[[int], None]]:
 
 
 @contextmanager
-def _bar(total: int, what: str) -> Iterator[Callable[[int], None]]:
+def _bar(total: int | None, what: str) -> Iterator[Callable[[int], None]]:
     from rich.console import Console
     from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
 
@@ -31,7 +31,7 @@ def _bar(total: int, what: str) -> Iterator[Callable[[int], None]]:
         yield lambda done: bar.update(task, completed=done)
 
 
-def _lines(total: int, what: str) -> Callable[[int], None]:
+def _lines(total: int | None, what: str) -> Callable[[int], None]:
     started = said = time.monotonic()
 
     def step(done: int) -> None:
@@ -40,6 +40,9 @@ def _lines(total: int, what: str) -> Callable[[int], None]:
         if now - said < _QUIET_S or done == 0:
             return
         said = now
+        if total is None:
+            print(f"{what}: {done} so far", file=sys.stderr, flush=True)
+            return
         left = (now - started) / done * (total - done)
         print(f"{what}: {done} of {total}, about {left:.0f} s left", file=sys.stderr, flush=True)
 

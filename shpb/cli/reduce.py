@@ -38,6 +38,8 @@ exit status: 0 done, 1 failed, 2 bad input or usage, 3 done, a shot is rejected
 """
 
 _FIGURES = ("png", "pdf", "svg", "none")
+# Fewer say nothing about where a 95 % interval ends; more take an hour.
+_LEAST_DRAWS, _MOST_DRAWS = 200, 10_000_000
 
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
@@ -61,10 +63,25 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
     verb.add_argument(
         "--workers", type=int, metavar="N", help="processes for several shots (default: one a core)"
     )
+    trust = verb.add_argument_group("uncertainty (a linear budget is always worked out)")
+    trust.add_argument(
+        "--draws",
+        metavar="N",
+        help="draws of a Monte Carlo run of every shot too, or adaptive (10000 take seconds)",
+    )
+    trust.add_argument(
+        "--seed", type=int, metavar="N", help="of the draws: the same seed, the same numbers (default 1)"
+    )
+    trust.add_argument(
+        "--budget", action="store_true", help="draw the ranked budget too: SHOT_budget, as with --draws"
+    )
     choices = verb.add_argument_group("choices of the reduction (else rig file, shot sheet, defaults)")
     choices.add_argument("--dispersion", metavar="WHICH", help="none, phase or full (phase and amplitude)")
     choices.add_argument("--alignment", metavar="WHICH", help="physical or feet")
     choices.add_argument("--analysis", metavar="WHICH", help="curve put forward: one-wave or three-wave")
+    choices.add_argument(
+        "--corrections", metavar="LIST", help="corrections that are applied, with commas between, or none"
+    )
     choices.add_argument(
         "--cutoff-khz", type=float, metavar="KHZ", help="cut-off of the low-pass of all pulses"
     )
@@ -81,7 +98,15 @@ def run(options: argparse.Namespace) -> int:
     folder = options.results or (_folder_of(options.shots[0]) / "results")
     if folder.exists() and not folder.is_dir():
         raise InputError("this is a file", where=str(folder), mend="Give a folder for --results")
-    outputs = Outputs(folder=folder, figure=options.figure, csv=options.csv, choices=_choices(options))
+    drawing = _drawing(options)
+    outputs = Outputs(
+        folder=folder,
+        figure=options.figure,
+        csv=options.csv,
+        choices=_choices(options),
+        drawing=drawing,
+        budget=options.budget or (drawing is not None and options.figure != "none"),
+    )
     workers = usual_workers() if options.workers is None else options.workers
     status = reduce_all(tasks, outputs, as_json=options.json, full=options.full, workers=workers)
     for error in errors:
@@ -93,14 +118,44 @@ def _folder_of(source: Path) -> Path:
     return source if source.is_dir() else source.parent
 
 
+def _drawing(options: argparse.Namespace) -> Drawing | None:
+    """What --draws and --seed ask for."""
+    if options.draws is None:
+        if options.seed is not None:
+            raise InputError("there is nothing to draw", where="--seed", mend="Give --draws as well")
+        return None
+    seed = 1 if options.seed is None else options.seed
+    if seed < 0:
+        raise InputError(f"found {seed}", where="--seed", mend="Give zero or a positive whole number")
+    if options.draws == "adaptive":
+        return Drawing(None, seed)
+    digits = options.draws.isascii() and options.draws.isdigit() and len(options.draws) <= 8
+    if not digits or not _LEAST_DRAWS <= int(options.draws) <= _MOST_DRAWS:
+        raise InputError(
+            f"found {options.draws!r}",
+            where="--draws",
+            mend=f"Give {_LEAST_DRAWS} to {_MOST_DRAWS} draws, or adaptive; 10000 are usual",
+        )
+    return Drawing(int(options.draws), seed)
+
+
 def _choices(options: argparse.Namespace) -> dict[str, object]:
     given = {
         "dispersion": options.dispersion,
         "alignment": options.alignment,
         "analysis": options.analysis,
+        "corrections": options.corrections,
         "cutoff_kHz": options.cutoff_khz,
     }
     return {name: value for name, value in given.items() if value is not None}
+
+
+@dataclass(frozen=True, slots=True)
+class Drawing:
+    """How many draws (None: adaptive), from which seed."""
+
+    draws: int | None
+    seed: int
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -111,6 +166,14 @@ class Outputs:
     figure: str = "png"
     csv: bool = False
     choices: Mapping[str, object] = field(default_factory=dict)
+    drawing: Drawing | None = None
+    budget: bool = False
+
+    def budget_page(self, stem: str) -> Path | None:
+        """The page of the budget, where there is to be one."""
+        if not self.budget:
+            return None
+        return self.folder / f"{stem}_budget.{'png' if self.figure == 'none' else self.figure}"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -133,6 +196,7 @@ class _Work:
     full: bool
     figure_later: bool
     as_json: bool
+    alone: bool = False  # the only shot: progress of its draws is shown
 
     def __call__(self, task: Task) -> Done:
         from shpb.errors import InputError, ShpbError
@@ -170,15 +234,19 @@ class _Work:
         from shpb.rig.overrides import hints_for, settings_for, settings_from
         from shpb.store.shot_file import save_shot
         from shpb.view.listing import list_row
-        from shpb.view.terminal import shot_text
+        from shpb.view.terminal import draws_text, shot_text
 
         settings = settings_from(self.outputs.choices, settings_for(task.rig, task.sheet))
         record = read_record(task.sheet.record_files, hints_for(task.rig, task.sheet))
         result = reduce(record, task.rig, task.sheet, settings)
         stem = file_stem(task.sheet.shot_id)
         store = self.outputs.folder / f"{stem}.h5"
+        page = self.outputs.budget_page(stem)
         kinds = [self.outputs.figure, "csv" if self.outputs.csv else "none"]
-        _require_free(task, store, [store.with_suffix(f".{kind}") for kind in kinds if kind != "none"])
+        others = [store.with_suffix(f".{kind}") for kind in kinds if kind != "none"]
+        _require_free(task, store, others if page is None else [*others, page])
+        if not self.figure_later:
+            result = self._drawn(result)
         files = [save_shot(result, store)]
         if self.outputs.csv:
             from shpb.store.curves_csv import export_csv
@@ -193,11 +261,32 @@ class _Work:
         if self.figure_later:
             # One shot at the bench: the verdict is on the screen before the figure is drawn.
             print(done.text, flush=True)
+            if self.outputs.drawing is not None:
+                result = self._drawn(result)
+                print(draws_text(result), flush=True)
+                save_shot(result, store)
         if self.outputs.figure != "none":
             from shpb.view.figure import save_figure
 
             files.append(save_figure(result, self.outputs.folder / f"{stem}.{self.outputs.figure}"))
+        if page is not None:
+            from shpb.view.budget_page import save_budget_page
+
+            files.append(save_budget_page(result, page))
         return Done(row=done.row, text=done.text, json=done.json, files=tuple(map(str, files)))
+
+    def _drawn(self, result: ShotResult) -> ShotResult:
+        """The shot with its draws, where they are asked for."""
+        drawing = self.outputs.drawing
+        if drawing is None:
+            return result
+        from shpb.cli.progress import progress
+        from shpb.reduction import draw_shot
+
+        if not self.alone:
+            return draw_shot(result, drawing.draws, seed=drawing.seed)
+        with progress(drawing.draws, "drawing") as step:
+            return draw_shot(result, drawing.draws, seed=drawing.seed, progress=lambda done, _: step(done))
 
 
 def _require_free(task: Task, store: Path, others: Sequence[Path]) -> None:
@@ -217,6 +306,12 @@ def _require_free(task: Task, store: Path, others: Sequence[Path]) -> None:
                 "a file of this name stands there and was not written with a result",
                 where=str(path),
                 mend="Choose another folder with --results, or move that file away",
+            )
+        if path != store and path.stem != store.stem and path.with_suffix(".h5").exists():
+            raise StoreError(
+                "this name belongs to the figure of another shot",
+                where=str(path),
+                mend="Choose another folder with --results for one of the two",
             )
 
 
@@ -254,7 +349,7 @@ def reduce_all(
     from shpb.cli.progress import progress
 
     one = len(tasks) == 1
-    work = _Work(outputs, full, figure_later=one and not as_json, as_json=as_json)
+    work = _Work(outputs, full, figure_later=one and not as_json, as_json=as_json, alone=one)
     found: dict[int, Done] = {}
     with progress(len(tasks), "reducing shots") as step:
         for index, done in in_parallel(work, tasks, workers, step if not one else _silent, pool):
@@ -281,10 +376,12 @@ def _say(error: str) -> None:
 
 
 def _print_json(finished: Sequence[Done]) -> None:
+    from shpb.view.repeats import repeats_json
     from shpb.view.summary import SCHEMA_VERSION, json_text
 
     shots = [{**done.json, "files": list(done.files)} for done in finished]
-    print(json_text({"schema_version": SCHEMA_VERSION, "shots": shots}))
+    repeats = repeats_json(done.row.repeat for done in finished if done.row.repeat is not None)
+    print(json_text({"schema_version": SCHEMA_VERSION, "shots": shots, "repeats": repeats}))
 
 
 def _print_one(done: Done) -> None:

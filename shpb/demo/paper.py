@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import io
+import math
 from dataclasses import dataclass
 
 from shpb.demo.materials import ALLOYS, QUASISTATIC_RATES_PER_S, quasistatic_curve, rate_words
@@ -20,16 +21,24 @@ class Readings:
 
     striker_speed_m_s: float
     length_after_mm: float
+    mass_g: float  # before the shot
 
 
 def readings(truth: DemoTruth) -> Readings:
-    """Striker speed within its uncertainty, length to 0.01 mm; seeded by the shot's id."""
+    """Striker speed within its uncertainty, length to 0.01 mm, mass to 1 mg; seeded by the shot's id."""
     shot = truth.shot
+    volume_mm3 = math.pi / 4 * shot.diameter_mm**2 * shot.length_mm
     error = float(random_for(f"{shot.shot_id} readings").standard_normal())
     return Readings(
         striker_speed_m_s=round(shot.striker_speed_m_s * (1 + SPEED_U * error), 2),
         length_after_mm=round(1e3 * truth.length_after_m, 2),
+        mass_g=round(1e-6 * shot.alloy.density_kg_m3 * volume_mm3, 3),
     )
+
+
+def hot_sides(shot: DemoShot) -> tuple[str, ...]:
+    """The bars whose faces were measured: both where the specimen was hot, brought up to it just before the shot."""
+    return ("incident", "transmitted") if shot.temperature_c > 50 else ()
 
 
 def shot_sheet(truth: DemoTruth, record_names: tuple[str, ...]) -> str:
@@ -51,6 +60,7 @@ def shot_sheet(truth: DemoTruth, record_names: tuple[str, ...]) -> str:
         f"striker_speed_m_s = {{ value = {read.striker_speed_m_s:.2f}, u_percent = {100 * SPEED_U:g}, "
         'origin = "light gates" }',
         f"temperature_C = {shot.temperature_c:g}",
+        *(f"{side}_face_temperature_C = {shot.face_temperature_c:g}" for side in hot_sides(shot)),
         f'remarks = "{shot.remarks}"',
         "",
         "[specimen]",
@@ -58,6 +68,7 @@ def shot_sheet(truth: DemoTruth, record_names: tuple[str, ...]) -> str:
         f'diameter_mm = {{ value = {shot.diameter_mm:.2f}, u = 0.005, origin = "micrometer" }}',
         f'length_mm = {{ value = {shot.length_mm:.2f}, u = 0.005, origin = "micrometer" }}',
         f'length_after_mm = {{ value = {read.length_after_mm:.2f}, u = 0.005, origin = "micrometer" }}',
+        f"mass_g = {read.mass_g:.3f}",
         f"young_modulus_GPa = {alloy.young_modulus_pa / 1e9:g}",
         f"density_kg_m3 = {alloy.density_kg_m3:g}",
         f"poisson_ratio = {alloy.poisson_ratio:g}",
@@ -69,8 +80,9 @@ def shot_sheet(truth: DemoTruth, record_names: tuple[str, ...]) -> str:
 
 _COLUMNS = (
     "shot_id", "kind", "record", "rig", "date", "operator", "striker_speed_m_s", "u_striker_speed_m_s",
-    "temperature_C", "material", "diameter_mm", "u_diameter_mm", "length_mm", "u_length_mm",
-    "length_after_mm", "u_length_after_mm", "young_modulus_GPa", "density_kg_m3", "poisson_ratio",
+    "temperature_C", "incident_face_temperature_C", "transmitted_face_temperature_C", "material",
+    "diameter_mm", "u_diameter_mm", "length_mm", "u_length_mm",
+    "length_after_mm", "u_length_after_mm", "mass_g", "young_modulus_GPa", "density_kg_m3", "poisson_ratio",
     "heat_capacity_J_kg_K", "lubricant", "remarks",
 )  # fmt: skip
 
@@ -99,6 +111,7 @@ def _row(truth: DemoTruth, record: str) -> dict[str, str]:
         "striker_speed_m_s": f"{read.striker_speed_m_s:.2f}",
         "u_striker_speed_m_s": f"{SPEED_U * read.striker_speed_m_s:.3f}",
         "temperature_C": f"{shot.temperature_c:g}",
+        **{f"{side}_face_temperature_C": f"{shot.face_temperature_c:g}" for side in hot_sides(shot)},
         "material": alloy.name,
         "diameter_mm": f"{shot.diameter_mm:.2f}",
         "u_diameter_mm": "0.005",
@@ -106,6 +119,7 @@ def _row(truth: DemoTruth, record: str) -> dict[str, str]:
         "u_length_mm": "0.005",
         "length_after_mm": f"{read.length_after_mm:.2f}",
         "u_length_after_mm": "0.005",
+        "mass_g": f"{read.mass_g:.3f}",
         "young_modulus_GPa": f"{alloy.young_modulus_pa / 1e9:g}",
         "density_kg_m3": f"{alloy.density_kg_m3:g}",
         "poisson_ratio": f"{alloy.poisson_ratio:g}",

@@ -65,6 +65,7 @@ class DemoShot:
     format: Format
     bench: str = "bench_1"
     temperature_c: float = 20.0
+    face_temperature_c: float = 28.0  # of the bars in a hot test: cold bars, brought up just before the shot
     rise_us: float = 20.0
     shaper: Shaper | None = None
     striker_length_mm: float | None = None  # where another striker was in the barrel

@@ -21,6 +21,7 @@ import numpy as np
 from shpb.arrays import FloatArray, frozen
 from shpb.errors import InputError
 from shpb.forward.bars import BarWaves
+from shpb.forward.contact import FaceSprings
 from shpb.forward.specimen import SpecimenHistory, SpecimenModel, SpecimenRun, longest_time_step_s
 from shpb.forward.striker import Shaper, impact_force, limited_by_yield, shaped_impact_force
 from shpb.rig.bar import Bar, Striker
@@ -44,6 +45,7 @@ class ShotPlan:
     rise_s: float = 10e-6  # of the striker's impact on the bare bar
     shaper: Shaper | None = None
     dispersive: bool = True
+    indented: bool = True  # the bar faces give way under the specimen
 
     @property
     def striker_used(self) -> Striker:
@@ -60,8 +62,10 @@ class ShotPlan:
 class ForwardShot:
     """What happened: arrays of shape (samples,) on one even grid, loading positive, read-only.
 
-    Forces are those on the bar faces, velocities those of the bar faces; strain, rate, stress
-    and temperature are the specimen's own (means over its length). ``incident_strain`` and
+    Forces are those on the bar faces, velocities those of the bar faces, less the mean indentation as
+    one-dimensional theory has them; strain, rate, stress and temperature are the specimen's own (means over
+    its length). The bar faces have come nearer by the specimen's shortening and both indentations.
+    ``incident_strain`` and
     ``transmitted_strain`` are what a perfect gauge on the bar's surface sees.
     """
 
@@ -75,6 +79,8 @@ class ForwardShot:
     force_out_n: FloatArray
     velocity_in_m_s: FloatArray
     velocity_out_m_s: FloatArray
+    indentation_in_m: FloatArray
+    indentation_out_m: FloatArray
     eng_strain: FloatArray
     eng_strain_rate_per_s: FloatArray
     eng_stress_pa: FloatArray
@@ -118,8 +124,9 @@ def fire(
     elements : int
         Elements along each specimen.
     courant : float
-        Time step by the shortest element transit; must stay below 1 - e at the largest strain e. At 1
-        (elastic specimens only) elastic waves travel exactly.
+        Time step by the shortest element transit; must stay below 1 - e at the largest strain e, below
+        0.85 (1 - e) where the specimen rings between two loadings (the damping shortens the stable step).
+        At 1 (elastic specimens only) elastic waves travel exactly.
     damping : float
         Of elastic ringing, see :class:`shpb.forward.specimen.SpecimenRun`.
 
@@ -145,10 +152,18 @@ def fire(
         np.array([p.temperature_k for p in plans]),
         elements=elements,
         time_step_s=step,
+        springs=_springs(plans),
         damping=damping,
     )
     histories = _march(run, lines, time, zero)
     return [_shot(plan, line, time, h) for plan, line, h in zip(plans, lines, histories, strict=True)]
+
+
+def _springs(plans: Sequence[ShotPlan]) -> FaceSprings | None:
+    giving = [plan.indented for plan in plans]
+    if not any(giving):
+        return None
+    return FaceSprings.of_bars([(p.rig.incident_bar, p.rig.transmitted_bar) for p in plans], giving=giving)
 
 
 class _Faces(NamedTuple):
@@ -239,12 +254,13 @@ def _march(run: SpecimenRun, lines: Sequence[_Lines], time_s: FloatArray, zero: 
         parts.append(part)
     out = []
     for i, line in enumerate(lines):
-        before = SpecimenHistory(*(np.zeros(zero) for _ in range(7)))
+        names = tuple(SpecimenHistory.__dataclass_fields__)
+        before = SpecimenHistory(*(np.zeros(zero) for _ in names))
         before.temperature_k[:] = parts[0].temperature_k[i, 0]
         whole = SpecimenHistory(
             *(
                 np.concatenate([getattr(before, name), *(getattr(part, name)[i] for part in parts)])
-                for name in SpecimenHistory.__dataclass_fields__
+                for name in names
             )
         )
         # Ahead of the march stands only what the band limit leaks; keep the sums exact there too.
@@ -271,6 +287,8 @@ def _shot(plan: ShotPlan, lines: _Lines, time_s: FloatArray, faces: _Faces) -> F
         force_out_n=frozen(force_out),
         velocity_in_m_s=frozen(velocity_in),
         velocity_out_m_s=frozen(velocity_out),
+        indentation_in_m=frozen(history.indentation_in_m),
+        indentation_out_m=frozen(history.indentation_out_m),
         eng_strain=frozen(history.eng_strain),
         eng_strain_rate_per_s=frozen(np.gradient(history.eng_strain, float(time_s[1] - time_s[0]))),
         eng_stress_pa=frozen(history.nominal_stress_pa),

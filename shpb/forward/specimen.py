@@ -8,10 +8,10 @@ faces, central differences in time; elastic-viscoplastic with large strain. In a
 strain e (compression positive) the true strain is -ln(1 - e), the area A0/(1 - e) (constant volume),
 the nominal stress (force by initial area) is the true stress by (1 - e), and the true stress is E times the
 elastic part of the true strain. Plastic work heats the element adiabatically. The contacts at
-the faces bear no tension: when they would, a gap opens and closes again later.
+the faces bear no tension: when they would, a gap opens and closes again later. The bar faces
+give way under the specimen if they are told to, see :mod:`shpb.forward.contact`.
 
-Left out: radial inertia, friction, heat flow into the bars, indentation of the bar faces,
-and yielding in tension.
+Left out: radial inertia, friction, heat flow into the bars, and yielding in tension.
 
 With the time step equal to one element's elastic transit, the scheme carries elastic waves exactly.
 Sources: R. D. Richtmyer, K. W. Morton, Difference Methods for Initial-Value Problems, 2nd ed. (1967, from memory); for
@@ -28,11 +28,11 @@ import numpy as np
 
 from shpb.arrays import BoolArray, FloatArray
 from shpb.errors import InputError
+from shpb.forward.contact import Contacts, FaceSprings
 from shpb.forward.flow import ELASTIC, FlowLaw, side_by_side
 
 _NEWTON_STEPS = 2  # from the last step's rate: within 1e-4 at the yield point, 1e-6 in steady flow
 _STEPS_PER_YIELD_CHECK = 8  # the flow stress at rest hardly moves from step to step
-_INWARD = np.array([1.0, -1.0])  # into the specimen, at the front and at the back face
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -81,11 +81,14 @@ class SpecimenHistory:
     """What happened to the specimens; arrays of shape (specimens, steps), compression positive.
 
     Forces are those on the two bar faces, at the times of the incoming waves; strain, stress and
-    temperature are means over the specimen's length.
+    temperature are means over the specimen's length. While both contacts are closed the bar faces have
+    come nearer by the specimen's shortening and both indentations.
     """
 
     force_in_n: FloatArray
     force_out_n: FloatArray
+    indentation_in_m: FloatArray
+    indentation_out_m: FloatArray
     eng_strain: FloatArray
     nominal_stress_pa: FloatArray
     true_stress_pa: FloatArray
@@ -108,6 +111,8 @@ class SpecimenRun:
     time_step_s : float
         At most one element's elastic transit, see :func:`longest_time_step_s`. An element that is
         shortened to 1 - e of its length needs a step shorter by as much.
+    springs : FaceSprings or None
+        How the bar faces give way; None for faces that stay plane.
     damping : float
         Stills the ringing of a specimen that has flowed and is unloaded: an element of length h then has
         the further stress ``damping * (h/c) d(stress)/dt``. Elements that flow, or never have, have none.
@@ -122,6 +127,7 @@ class SpecimenRun:
         *,
         elements: int,
         time_step_s: float,
+        springs: FaceSprings | None = None,
         damping: float = 0.0,
     ) -> None:
         longest = longest_time_step_s(specimens, elements)
@@ -134,16 +140,19 @@ class SpecimenRun:
         self._step = time_step_s
         self._damping = damping * _column(s.transit_time_s / elements for s in specimens) / time_step_s
         self._flow = side_by_side([s.flow for s in specimens])
-        self._impedance = np.stack((incident_impedance, transmitted_impedance), axis=1)
         self._area = _column(s.area_m2 for s in specimens)
         self._modulus = _column(s.young_modulus_pa for s in specimens)
         self._size = _column(s.length_m / elements for s in specimens)
         self._density = _column(s.density_kg_m3 for s in specimens)
         self._mass = self._density * self._area * self._size  # of an element
         self._step_by_mass = time_step_s / self._mass
-        self._half_mass_rate = 0.5 * self._mass / time_step_s  # of a face node
-        self._inertia = self._half_mass_rate - self._impedance / 2
-        self._resistance = self._half_mass_rate + self._impedance / 2
+        self._contacts = Contacts(
+            np.stack((incident_impedance, transmitted_impedance), axis=1),
+            0.5 * self._mass / time_step_s,
+            _column(s.diameter_m / 2 for s in specimens),
+            time_step_s,
+            springs,
+        )
         self._warming = _column(s.heat_share / (s.density_kg_m3 * s.heat_capacity_j_kg_k) for s in specimens)
         # One step's plastic strain at the reference rate: the unit of the return to the flow stress.
         self._unit = np.asarray(self._flow.reference_rate_per_s) * time_step_s
@@ -158,7 +167,6 @@ class SpecimenRun:
         self._at_rest: FloatArray | None = None  # flow stress at no rate
         self._flowing = 0  # steps with plastic flow so far
         self._temperature = np.repeat(np.asarray(temperature_k, dtype=float)[:, None], elements, axis=1)
-        self._gap = np.zeros((shape[0], 2))
 
     @np.errstate(invalid="ignore", over="ignore")  # _check_stable says in words what went wrong
     def march(self, incident_n: FloatArray, returning_n: FloatArray) -> SpecimenHistory:
@@ -173,7 +181,7 @@ class SpecimenRun:
         """
         shape = incident_n.shape
         arriving = np.stack((incident_n, returning_n), axis=2)
-        force = np.empty((*shape, 2))
+        force, indentation = np.empty((*shape, 2)), np.empty((*shape, 2))
         # Elements last in memory order of the steps: one plain copy a step, all means at the end.
         kept = np.empty((5, shape[1], *self._strain.shape))
         for n in range(shape[1]):
@@ -182,11 +190,12 @@ class SpecimenRun:
             kept[3, n], kept[4, n] = self._plastic, self._temperature
             inside = self._damped / (1.0 - self._strain) * self._area
             force[:, n] = self._move(inside, arriving[:, n])
+            indentation[:, n] = self._contacts.indentation_m
             self._deform()
         self._check_stable(kept[0])
         means = kept.mean(axis=3).transpose(0, 2, 1)
-        both = (force[:, :, 0], force[:, :, 1], *means)
-        return SpecimenHistory(*(np.ascontiguousarray(each) for each in both))
+        at_faces = (*force.transpose(2, 0, 1), *indentation.transpose(2, 0, 1))
+        return SpecimenHistory(*(np.ascontiguousarray(each) for each in (*at_faces, *means)))
 
     @property
     def momentum_n_s(self) -> FloatArray:
@@ -211,26 +220,12 @@ class SpecimenRun:
             )
 
     def _move(self, force: FloatArray, arriving: FloatArray) -> FloatArray:
-        """Accelerate the nodes by one step; return the forces on the two bar faces, shape (specimens, 2).
-
-        In contact the bar gives 2 p - Z v (p: force of the arriving wave, v into the specimen). The
-        back face is the mirror image of the front: there the bar comes from the other side.
-        """
-        velocity, Z, rate = self._velocity, self._impedance, self._half_mass_rate
+        """Accelerate the nodes by one step; return the forces on the two bar faces, shape (specimens, 2)."""
+        velocity = self._velocity
         velocity[:, 1:-1] += self._step_by_mass * (force[:, :-1] - force[:, 1:])
         faces = velocity[:, :: velocity.shape[1] - 1]  # a view of the first and the last node
-        inward = faces * _INWARD
-        inner = force[:, [0, -1]]
-        after: FloatArray = (self._inertia * inward + 2 * arriving - inner) / self._resistance
-        contact: FloatArray = 2 * arriving - Z / 2 * (inward + after)
-        apart = (contact < 0) | (self._gap > 0)
-        if apart.any():
-            free = inward - inner / rate
-            opened = self._gap + self._step * (free - 2 * arriving / Z)
-            self._gap = np.where(apart, np.maximum(opened, 0.0), 0.0)
-            after, contact = np.where(apart, free, after), np.where(apart, 0.0, contact)
-        faces[:] = after * _INWARD
-        return contact
+        ends = [0, -1]
+        return self._contacts.meet(faces, force[:, ends], arriving, self._strain[:, ends])
 
     def _deform(self) -> None:
         """Strain the elements by one step and return their stress to the flow stress."""

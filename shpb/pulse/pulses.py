@@ -70,11 +70,13 @@ def find_pulses(strain: GaugeStrain, rig: Rig, specimen: Specimen, settings: Set
         arrivals=arrivals,
         sample_interval_s=strain.sample_interval_s,
         tail_at_reflection=zeros.tail_at_reflection,
-        remarks=_remarks(strain, arrivals, zeros),
+        remarks=_remarks(strain, arrivals, zeros, reflected, transmitted),
     )
 
 
-def _remarks(strain: GaugeStrain, arrivals: Arrivals, zeros: ShotZeros) -> tuple[str, ...]:
+def _remarks(
+    strain: GaugeStrain, arrivals: Arrivals, zeros: ShotZeros, reflected: Pulse, transmitted: Pulse
+) -> tuple[str, ...]:
     remarks = []
     end = strain.time(strain.samples)
     if not zeros.has_gap:
@@ -82,9 +84,9 @@ def _remarks(strain: GaugeStrain, arrivals: Arrivals, zeros: ShotZeros) -> tuple
             "no quiet stretch between incident and reflected pulse: the zero line of the reflected pulse "
             "is that before the incident pulse"
         )
-    if arrivals.second_loading_s < end:
+    if reflected.window_s[1] <= arrivals.second_loading_s < end:
         remarks.append(f"second loading from {arrivals.second_loading_s * 1e6:.0f} us on is kept out")
-    if arrivals.end_reflection_s < end:
+    if transmitted.window_s[1] <= arrivals.end_reflection_s < end:
         remarks.append(
             f"end reflection of the transmitted bar from {arrivals.end_reflection_s * 1e6:.0f} us on is kept out"
         )

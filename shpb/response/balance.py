@@ -1,20 +1,16 @@
-"""Work and momentum of a shot, and the strain that the bar faces give way by."""
+"""Work and momentum of a shot."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass
 
-import numpy as np
-
 from shpb.arrays import FloatArray
 from shpb.pulse.pulse import Pulses
-from shpb.response.bar_analysis import Curve, FaceMotion
+from shpb.response.bar_analysis import Curve
 from shpb.rig.bar import Bar
-from shpb.rig.gauge import TestKind
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import Specimen
 from shpb.wave.faces import FacePulses
-from shpb.wave.indentation import face_indentation_m
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -69,21 +65,3 @@ def work_balance(
         incident_impulse_n_s=impulse,
         striker_momentum_n_s=momentum,
     )
-
-
-def indentation_strain(
-    motion: FaceMotion, curve: Curve, rig: Rig, specimen: Specimen, kind: TestKind
-) -> FloatArray:
-    """Engineering strain that both bar faces add by giving way, shape (samples,).
-
-    An estimate with the specimen's current radius at constant volume, always computed and shown.
-    Zero in tension, where the specimen does not press on the bar faces.
-    """
-    if kind is TestKind.TENSION:
-        return np.zeros_like(curve.strain)
-    radius = specimen.diameter_m / 2 * np.exp(0.5 * np.clip(curve.true_strain, -0.5, 3.0))
-    total = face_indentation_m(motion.force_in_n, radius, rig.incident_bar) + face_indentation_m(
-        motion.force_out_n, radius, rig.transmitted_bar
-    )
-    strain: FloatArray = total / specimen.length_m
-    return strain

@@ -70,22 +70,55 @@ def face_motion(faces: FacePulses, rig: Rig) -> FaceMotion:
     )
 
 
-def one_wave(faces: FacePulses, motion: FaceMotion, rig: Rig, specimen: Specimen, kind: TestKind) -> Curve:
-    """Back-face stress; rate from the reflected pulse, equilibrium assumed."""
-    bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
-    velocity = -2 * bar_i.wave_speed_m_s * faces.reflected.velocity_strain
-    mismatch = 1 / bar_i.impedance_n_s_m - 1 / bar_t.impedance_n_s_m
-    if mismatch:
-        velocity = velocity + motion.force_out_n * mismatch
+def one_wave(
+    faces: FacePulses,
+    motion: FaceMotion,
+    rig: Rig,
+    specimen: Specimen,
+    kind: TestKind,
+    *,
+    own_bars: bool = True,
+) -> Curve:
+    """Back-face stress; rate from the reflected pulse, equilibrium assumed.
+
+    Without ``own_bars`` the formula for equal bars is taken, whatever they are.
+    """
+    velocity = -2 * rig.incident_bar.wave_speed_m_s * faces.reflected.velocity_strain
+    if own_bars and _unlike(faces, rig):
+        velocity = velocity + _force_as_velocity_in(faces, motion, rig) - motion.velocity_out_m_s
     return curve_of(faces, velocity, motion.force_out_n, specimen, kind)
 
 
-def two_wave(faces: FacePulses, motion: FaceMotion, rig: Rig, specimen: Specimen, kind: TestKind) -> Curve:
-    """Front-face stress; rate from incident and transmitted pulse, equilibrium assumed."""
-    bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
-    compliance = 1 / bar_i.impedance_n_s_m + 1 / bar_t.impedance_n_s_m
-    velocity = 2 * bar_i.wave_speed_m_s * faces.incident.velocity_strain - compliance * motion.force_out_n
+def two_wave(
+    faces: FacePulses,
+    motion: FaceMotion,
+    rig: Rig,
+    specimen: Specimen,
+    kind: TestKind,
+    *,
+    own_bars: bool = True,
+) -> Curve:
+    """Front-face stress; rate from incident and transmitted pulse, equilibrium assumed; else as :func:`one_wave`."""
+    bar_i = rig.incident_bar
+    velocity = 2 * bar_i.wave_speed_m_s * faces.incident.velocity_strain
+    if own_bars and _unlike(faces, rig):
+        velocity = velocity - _force_as_velocity_in(faces, motion, rig) - motion.velocity_out_m_s
+    else:
+        velocity = velocity - 2 / bar_i.impedance_n_s_m * motion.force_out_n
     return curve_of(faces, velocity, motion.force_in_n, specimen, kind)
+
+
+def _unlike(faces: FacePulses, rig: Rig) -> bool:
+    """Whether the two bars answer differently at the faces."""
+    return (
+        faces.face_impedance_ratio != 1.0
+        or rig.incident_bar.impedance_n_s_m != rig.transmitted_bar.impedance_n_s_m
+    )
+
+
+def _force_as_velocity_in(faces: FacePulses, motion: FaceMotion, rig: Rig) -> FloatArray:
+    """Velocity that a single wave with the force F_out would have in the incident bar's face [m/s]."""
+    return motion.force_out_n / (rig.incident_bar.impedance_n_s_m * faces.face_impedance_ratio)
 
 
 def three_wave(faces: FacePulses, motion: FaceMotion, specimen: Specimen, kind: TestKind) -> Curve:
@@ -101,23 +134,26 @@ def curve_of(
     specimen: Specimen,
     kind: TestKind,
 ) -> Curve:
-    """Engineering and true curve from the closing velocity of the faces and a force.
-
-    True values: compression e_t = -ln(1 - e), s_t = s (1 - e); tension e_t = ln(1 + e), s_t = s (1 + e).
-    """
+    """Engineering and true curve from the closing velocity of the faces and a force."""
     rate = closing_velocity_m_s / specimen.length_m
-    strain = integrated(rate, faces.interval_s)
-    stress = force_n / specimen.area_m2
+    return curve_from(rate, integrated(rate, faces.interval_s), force_n / specimen.area_m2, kind)
+
+
+def curve_from(rate_per_s: FloatArray, strain: FloatArray, stress_pa: FloatArray, kind: TestKind) -> Curve:
+    """True values beside engineering ones.
+
+    Compression e_t = -ln(1 - e), s_t = s (1 - e); tension e_t = ln(1 + e), s_t = s (1 + e).
+    """
     sign = 1.0 if kind is TestKind.TENSION else -1.0
     # Where noise or a second loading would carry compression past the whole length, nothing is true.
     stretch = np.maximum(1.0 + sign * strain, 1e-3)
     return Curve(
-        strain_rate_per_s=rate,
+        strain_rate_per_s=rate_per_s,
         strain=strain,
-        stress_pa=stress,
-        true_strain_rate_per_s=rate / stretch,
+        stress_pa=stress_pa,
+        true_strain_rate_per_s=rate_per_s / stretch,
         true_strain=sign * np.log(stretch),
-        true_stress_pa=stress * stretch,
+        true_stress_pa=stress_pa * stretch,
     )
 
 

@@ -135,14 +135,14 @@ def judge_equilibrium(
     ratio = np.where(loaded, np.minimum(moving_mean(np.abs(difference), width) / safe, 2.0), 2.0)
     floor = np.where(loaded, np.minimum(np.hypot(*uncertainties) / safe, 2.0), 2.0)
 
-    limit = settings.equilibrium_limit
+    limit = settings.limits.equilibrium
     within = ratio[first:last] <= limit
     start = _first_lasting(within)
     span = slice(first if start is None else first + start, last)
     typical_floor = float(np.median(floor[span]))
     mean_ratio = float(ratio[span].mean())
     at_start = None if start is None else float(true_strain[first + start])
-    outcome = _outcome(start, at_start, mean_ratio, typical_floor, limit, settings.equilibrium_late_strain)
+    outcome = _outcome(start, at_start, mean_ratio, typical_floor, limit, settings.limits.late_strain)
     if outcome is Outcome.CANNOT_BE_DECIDED:
         start = at_start = None
     impulse_in = float(motion.force_in_n[first:last].sum())

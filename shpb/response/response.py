@@ -10,15 +10,17 @@ import numpy as np
 from shpb.arrays import FloatArray, frozen
 from shpb.errors import InputError
 from shpb.pulse.pulse import Pulses
-from shpb.response.balance import Balance, indentation_strain, work_balance
+from shpb.response.balance import Balance, work_balance
 from shpb.response.bar_analysis import Curve, FaceMotion, face_motion, one_wave, three_wave, two_wave
+from shpb.response.corrections.chain import correct
+from shpb.response.corrections.correction import Curves, Report
 from shpb.response.equilibrium import Equilibrium, force_uncertainties, judge_equilibrium
 from shpb.response.flow import FlowStress, apparent_slope_pa, back_extrapolated_yield_pa, flow_stresses
 from shpb.response.span import RateSummary, loading_span, rate_summary
 from shpb.rig.gauge import TestKind
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
-from shpb.settings import Analysis, Settings
+from shpb.settings import Analysis, Correction, Settings
 from shpb.wave.faces import FacePulses
 
 
@@ -46,8 +48,11 @@ class Response:
         Samples that count: in equilibrium and loading. None where nothing counts.
     rate : RateSummary
         Over the span that counts, or over the loading where nothing does.
-    indentation_strain : float array
-        Estimate of the strain that the bar faces add [1]; not taken off.
+    corrections : tuple of Report
+        What each correction did to the curves, or would have done.
+    heating_k : float array or None
+        Adiabatic rise of the specimen's temperature along the three-wave curve [K]; None without density or heat
+        capacity.
     """
 
     time_s: FloatArray
@@ -62,7 +67,8 @@ class Response:
     span: tuple[int, int] | None
     rate: RateSummary
     balance: Balance
-    indentation_strain: FloatArray
+    corrections: tuple[Report, ...]
+    heating_k: FloatArray | None
     flow: tuple[FlowStress, ...]
     yield_back_extrapolated_pa: float | None
     apparent_slope_pa: float | None
@@ -71,6 +77,21 @@ class Response:
     def curve(self) -> Curve:
         """The curve put forward as the result."""
         return self.one_wave if self.analysis is Analysis.ONE_WAVE else self.three_wave
+
+    def correction(self, which: Correction) -> Report:
+        """What one correction did, or would have done."""
+        return next(report for report in self.corrections if report.correction is which)
+
+    @property
+    def indentation_strain(self) -> FloatArray:
+        """Estimate of the engineering strain that the bar faces add [1], taken off or not, shape (samples,)."""
+        return np.broadcast_to(self.correction(Correction.INDENTATION).off.strain, self.time_s.shape)
+
+    @property
+    def elastic_faces_strain(self) -> FloatArray:
+        """The part of the strain of the curves that belongs to the bar faces: zero where it has been taken off."""
+        taken = self.correction(Correction.INDENTATION).applied
+        return np.zeros_like(self.time_s) if taken else self.indentation_strain
 
     @property
     def strain_span(self) -> tuple[float, float] | None:
@@ -93,21 +114,23 @@ def specimen_response(
     """
     specimen, kind = sheet.specimen, sheet.kind
     motion = face_motion(faces, rig)
-    curves = (
-        one_wave(faces, motion, rig, specimen, kind),
-        two_wave(faces, motion, rig, specimen, kind),
+    own_bars = Correction.MISMATCH in settings.corrections
+    raw = Curves(
+        one_wave(faces, motion, rig, specimen, kind, own_bars=own_bars),
+        two_wave(faces, motion, rig, specimen, kind, own_bars=own_bars),
         three_wave(faces, motion, specimen, kind),
     )
-    for array in (*motion, *(getattr(c, f.name) for c in curves for f in dataclasses.fields(c))):
-        frozen(array)
-    one, two, three = curves
-    loading = loading_span(three.strain_rate_per_s, faces.time_s, faces.whole)
+    loading = loading_span(raw.three_wave.strain_rate_per_s, faces.time_s, faces.whole)
     if loading[1] - loading[0] < 8 or motion.force_out_n[slice(*loading)].max() <= 0:
         raise InputError(
             "the pulses at the specimen faces load it nowhere",
             where="response",
             mend="Check polarity, channels and windows in the rig file and the shot sheet",
         )
+    corrected = correct(faces, motion, raw, rig, sheet, loading, settings)
+    one, two, three = corrected.curves
+    for array in (*motion, *(getattr(c, f.name) for c in corrected.curves for f in dataclasses.fields(c))):
+        frozen(array)
     curve = one if settings.analysis is Analysis.ONE_WAVE else three
     equilibrium = judge_equilibrium(
         motion, force_uncertainties(pulses, faces, rig, settings), faces, curve.true_strain, loading, specimen,
@@ -131,7 +154,8 @@ def specimen_response(
         span=span,
         rate=rate_summary(three.strain_rate_per_s, three.true_strain_rate_per_s, span or loading),
         balance=work_balance(pulses, faces, three, rig, specimen, loading, sheet.striker_speed_m_s),
-        indentation_strain=frozen(indentation_strain(motion, three, rig, specimen, kind)),
+        corrections=corrected.reports,
+        heating_k=corrected.heating_k,
         flow=flow_stresses(
             curve.true_strain, curve.true_stress_pa, curve.true_strain_rate_per_s, span, modulus,
             settings.flow_strains,
@@ -139,7 +163,8 @@ def specimen_response(
         yield_back_extrapolated_pa=back_extrapolated_yield_pa(
             curve.true_strain, curve.true_stress_pa, span, modulus
         ),
-        apparent_slope_pa=apparent_slope_pa(three.strain, three.stress_pa, loading),
+        # Of the curve as the bars see it: what is usual for it includes the bar faces that give way.
+        apparent_slope_pa=apparent_slope_pa(raw.three_wave.strain, raw.three_wave.stress_pa, loading),
     )  # fmt: skip
 
 

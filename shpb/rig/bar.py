@@ -25,6 +25,7 @@ class Bar:
     wave_speed_m_s: Quantity
     poisson_ratio: Quantity
     yield_strength_pa: Quantity | None = None
+    modulus_temperature_coefficient_per_k: Quantity | None = None  # dE/dT/E, negative for metals
 
     def __post_init__(self) -> None:
         for name in ("diameter_m", "length_m", "density_kg_m3", "wave_speed_m_s"):

@@ -90,6 +90,8 @@ def cell_value(cell: str, column: Column, *, decimal_comma: bool) -> object:
         if cell.casefold() not in _SWITCHES:
             raise Unreadable(shown(cell), "true or false")
         return _SWITCHES[cell.casefold()]
+    if kind is Kind.CHOICES:
+        return [] if cell.casefold() == "none" else [part.strip() for part in re.split(r"[|,]", cell)]
     if kind not in _NUMERIC:
         return [part.strip() for part in cell.split("|")] if kind is Kind.TEXTS else cell
     if column.part or kind not in {Kind.NUMBERS, Kind.NUMBER_OR_NUMBERS}:

@@ -1,21 +1,11 @@
-"""The key tables of ``calibration/README.md``, written from the keys themselves.
-
-``python -m shpb.rig.docs calibration/README.md`` brings the tables of that file up to date; a test
-compares the two.
-"""
+"""The key tables of ``calibration/README.md``, written from the keys themselves; :mod:`shpb.docs` puts them there."""
 
 from __future__ import annotations
 
-import re
-import sys
-from pathlib import Path
-
-from shpb.errors import InputError
 from shpb.rig.columns import COLUMNS
 from shpb.rig.key import Key, Kind, OneOf, Table
 from shpb.rig.keys import RIG_FILE, SHEET_FILE
 
-_BLOCK = re.compile(r"(<!-- keys: ([a-z-]+) -->\n).*?(<!-- end of keys -->)", re.DOTALL)
 _HEAD = "| key | value | range | needed | meaning | example |\n|---|---|---|---|---|---|\n"
 
 
@@ -31,7 +21,7 @@ def needed_text(key: Key, group: OneOf | None) -> str:
 
 def range_text(key: Key) -> str:
     """The range in the documented unit, or the choices."""
-    if key.kind is Kind.CHOICE:
+    if key.kind in {Kind.CHOICE, Kind.CHOICES}:
         return ", ".join(f"`{choice}`" for choice in key.choices)
     return key.range_text(key.units[0])
 
@@ -76,8 +66,8 @@ def _names_in_all_units(name: str, key: Key, part: str) -> list[str]:
     return [key.columns(unit)[position] for unit in key.units]
 
 
-def blocks() -> dict[str, str]:
-    """Every generated block of the README by its name."""
+def key_blocks() -> dict[str, str]:
+    """Every table of keys by its name in the README."""
     rig = {table.name: key_table(table) for table in RIG_FILE}
     sheet = {table.name: key_table(table) for table in SHEET_FILE}
     # Both bars have the same keys; so have both gauges but for the example of the channel.
@@ -88,31 +78,8 @@ def blocks() -> dict[str, str]:
         "striker": rig["striker"],
         "record": rig["record"],
         "settings": rig["settings"],
+        "limits": rig["limits"],
         "shot": sheet["shot"],
         "specimen": sheet["specimen"],
         "columns": column_table(),
     }
-
-
-def refreshed(text: str) -> str:
-    """Return the README with every generated block written anew.
-
-    Raises
-    ------
-    InputError
-        If a block is missing, or one is asked for that does not exist.
-    """
-    written = blocks()
-    asked = [match[2] for match in _BLOCK.finditer(text)]
-    if sorted(asked) != sorted(written):
-        raise InputError(
-            f"the blocks are {', '.join(asked)}",
-            where="README",
-            mend=f"Put each of these between its marks once: {', '.join(written)}",
-        )
-    return _BLOCK.sub(lambda match: match[1] + written[match[2]] + match[3], text)
-
-
-if __name__ == "__main__":
-    readme = Path(sys.argv[1])
-    readme.write_text(refreshed(readme.read_text(encoding="utf-8")), encoding="utf-8")

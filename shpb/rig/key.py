@@ -24,6 +24,7 @@ class Kind(StrEnum):
     IDENTIFIER = "short text"  # becomes part of a file name
     DATE = "date"
     CHOICE = "choice"
+    CHOICES = "list of choices"
     FILE = "file name"
     FILES = "file name or list of file names"
     SPAN = "[start, end]"
@@ -121,6 +122,8 @@ class Key:
         """What is expected, in words with unit and range."""
         if self.kind is Kind.CHOICE:
             return "one of " + ", ".join(f'"{choice}"' for choice in self.choices)
+        if self.kind is Kind.CHOICES:
+            return "a list of any of " + ", ".join(f'"{choice}"' for choice in self.choices)
         words = _EXPECTED[self.kind]
         if unit.symbol:
             words += f" in {unit.symbol}"
@@ -166,6 +169,7 @@ _EXPECTED = {
     Kind.IDENTIFIER: 'text of 1 to 100 characters without / \\ : * ? " < > |',
     Kind.DATE: "a date such as 2024-05-17",
     Kind.CHOICE: "",
+    Kind.CHOICES: "",
     Kind.FILE: "a file name",
     Kind.FILES: "a file name, or a list of file names",
     Kind.SPAN: "a list [start, end] of two rising numbers",

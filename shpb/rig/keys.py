@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from shpb.rig.gauge import Arrangement, TestKind
 from shpb.rig.key import Key, Kind, OneOf, Table, Unit
-from shpb.rig.setting_keys import SETTING_KEYS
+from shpb.rig.setting_keys import LIMIT_KEYS, SETTING_KEYS
 
 MM = Unit("mm", "mm", 1e-3)
 M = Unit("m", "m")
@@ -32,6 +32,9 @@ MICROSECOND = Unit("us", "µs", 1e-6)
 SECOND = Unit("s", "s")
 CELSIUS = Unit("C", "°C", 1.0, 273.15)
 KELVIN = Unit("K", "K")
+PER_KELVIN = Unit("per_K", "1/K")
+GRAM = Unit("g", "g", 1e-3)
+KILOGRAM = Unit("kg", "kg")
 SPECIFIC_HEAT = Unit("J_kg_K", "J/(kg K)")
 SPECIFIC_HEAT_G = Unit("J_g_K", "J/(g K)", 1e3)
 
@@ -109,6 +112,11 @@ BAR_KEYS = (
         stem="yield_strength", kind=Kind.QUANTITY,
         meaning="Stress that the bar must stay below; without it no check of the bar's own yielding",
         example="1800", units=(MPA, GPA), low=1, high=10000, slips=(GPA, PA),
+    ),
+    Key(
+        stem="modulus_temperature_coefficient", kind=Kind.QUANTITY, units=(PER_KELVIN,), low=-0.02, high=0.02,
+        example="-3.5e-4", mend="Steels lie between -2.5e-4 and -5e-4 per kelvin",
+        meaning="Relative change of Young's modulus with temperature, dE/dT/E; for shots with hot or cold bar ends",
     ),
 )  # fmt: skip
 
@@ -228,6 +236,14 @@ HINT_KEYS = (
     ),
 )  # fmt: skip
 
+
+def _face_temperature(side: str) -> Key:
+    return Key(
+        stem=f"{side}_face_temperature", kind=Kind.QUANTITY, units=(CELSIUS, KELVIN), low=-272.15, high=3500,
+        example="110", meaning=f"Temperature of the {side} bar's face at the start of a hot or cold test",
+    )  # fmt: skip
+
+
 SHOT_KEYS = (
     Key(
         stem="id", kind=Kind.IDENTIFIER, required=True, example='"CU-017"', column="shot_id",
@@ -258,6 +274,12 @@ SHOT_KEYS = (
         meaning="Temperature of the specimen at the start of the test", default="20 °C",
         mend="Nothing is colder than -273.15 °C (0 K)",
     ),
+    _face_temperature("incident"),
+    _face_temperature("transmitted"),
+    _length(
+        "heated_length", "Length of the hot or cold end of each bar, from the specimen face to where the bar is "
+        "as the room is", "80", 0.1, 50000,
+    ),
     _text("remarks", "Anything to be kept with the result", "Contact of the bars checked"),
 )  # fmt: skip
 
@@ -272,12 +294,39 @@ SPECIMEN_KEYS = (
             0.05, 1000),
     _modulus("Young's modulus, quasi-static or handbook; an input, never taken from the shot", "118", 1e-4),
     _density("8940", 10, required=False),
+    Key(
+        stem="mass", kind=Kind.QUANTITY, units=(GRAM, KILOGRAM), low=1e-4, high=50000, example="4.236",
+        meaning="Mass before the shot, weighed; gives a check of diameter, length and density",
+    ),
     _poisson("Poisson's ratio, for the radial inertia", required=False),
     Key(
         stem="heat_capacity", kind=Kind.QUANTITY, units=(SPECIFIC_HEAT,), low=50, high=10000, example="385",
         slips=(SPECIFIC_HEAT_G,), meaning="Specific heat capacity, for the heating by plastic work",
     ),
+    Key(
+        stem="heat_share", kind=Kind.QUANTITY, low=0, high=1, example="0.9", default="0.9",
+        meaning="Share of the plastic work that becomes heat (Taylor & Quinney)",
+    ),
+    Key(
+        stem="stress_slope", kind=Kind.QUANTITY, units=(PER_KELVIN,), low=-0.02, high=0.02, example="-0.0006",
+        meaning="Relative change of the flow stress with temperature, negative where heat softens: gives the "
+        "isothermal stress",
+    ),
+    Key(
+        stem="melting_temperature", kind=Kind.QUANTITY, units=(CELSIUS, KELVIN), low=-100, high=4000, example="1083",
+        meaning="Melting temperature, with softening_exponent in place of stress_slope: thermal factor 1 - T*^m "
+        "of Johnson & Cook",
+    ),
+    Key(
+        stem="softening_exponent", kind=Kind.QUANTITY, low=0.05, high=10, example="1.09",
+        meaning="Exponent m of that factor; its reference temperature is 20 °C",
+    ),
     _text("lubricant", "What lies between specimen and bars", "molybdenum disulphide grease"),
+    Key(
+        stem="friction_coefficient", kind=Kind.QUANTITY, low=0, high=0.5, example="0.05",
+        meaning="Coulomb coefficient between specimen and bar faces, measured or from ring tests",
+        mend="Good grease is near 0.05, dry steel near 0.15",
+    ),
 )  # fmt: skip
 
 POLARITY = OneOf(
@@ -318,6 +367,10 @@ RIG_FILE = (
         name="settings", keys=SETTING_KEYS, required=False,
         meaning="Choices of the reduction that hold for every shot of this rig",
     ),
+    Table(
+        name="limits", keys=LIMIT_KEYS, required=False,
+        meaning="Limits that this lab sets in place of the usual ones. A share is a fraction: 0.05 is 5 %",
+    ),
 )  # fmt: skip
 
 SHEET_FILE = (
@@ -327,5 +380,9 @@ SHEET_FILE = (
     Table(
         name="settings", keys=SETTING_KEYS, required=False,
         meaning="Choices of the reduction for this shot alone; they rule over those of the rig file",
+    ),
+    Table(
+        name="limits", keys=LIMIT_KEYS, required=False,
+        meaning="Limits of the checks for this shot alone; they rule over those of the rig file",
     ),
 )  # fmt: skip

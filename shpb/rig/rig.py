@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 
 from shpb.errors import InputError
 from shpb.rig.bar import Bar, Striker
+from shpb.rig.correlations import Correlation
 from shpb.rig.gauge import Gauge
 
 
@@ -48,6 +49,7 @@ class Rig:
     record: RecordHints = field(default_factory=RecordHints)
     text: str = ""  # the rig file, word for word, stored with every result
     settings: Mapping[str, object] = field(default_factory=dict)  # fields of Settings, for all its shots
+    correlations: tuple[Correlation, ...] = ()  # between its values, from one calibration
     calibration_date: str = ""  # the day these values hold for
     remarks: str = ""
     source: str = ""  # the file it was read from, for messages
@@ -64,3 +66,8 @@ class Rig:
                     where=f"{side}_gauge.to_specimen",
                     mend="Give the distance from the gauge to the specimen face, less than the bar's length",
                 )
+
+    @property
+    def correlation_pairs(self) -> dict[tuple[str, str], float]:
+        """Correlation coefficients by pairs of names of the uncertainty budget."""
+        return {(one.first, one.second): one.coefficient for one in self.correlations}

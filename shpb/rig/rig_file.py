@@ -9,6 +9,8 @@ from typing import Any
 
 from shpb.quantity import Quantity
 from shpb.rig.bar import Bar, Striker
+from shpb.rig.correlations import TABLE as CORRELATIONS
+from shpb.rig.correlations import correlations_in
 from shpb.rig.gauge import Arrangement, Gauge
 from shpb.rig.keys import BAR_KEYS, RIG_FILE
 from shpb.rig.mistakes import Collector, shown
@@ -66,7 +68,9 @@ def rig_from_text(text: str, name: str) -> Rig:
 def rig_from_document(document: Mapping[str, Any], text: str, name: str) -> Rig:
     """Return the rig that the parsed tables of a rig file describe."""
     seen = Collector(name)
-    tables = read_tables(document, RIG_FILE, seen)
+    correlations = correlations_in(document, seen)
+    plain = {name: content for name, content in document.items() if name != CORRELATIONS}
+    tables = read_tables(plain, RIG_FILE, seen)
     speeds = {
         side: _speed(tables[side], tables[side].quantity("density"), seen)
         for side in ("incident_bar", "transmitted_bar")
@@ -76,7 +80,7 @@ def rig_from_document(document: Mapping[str, Any], text: str, name: str) -> Rig:
     transmitted_gauge = _gauge(tables["transmitted_gauge"], seen)
     bar_speed = speeds["incident_bar"]
     striker, striker_speed = _striker(tables["striker"], tables["incident_bar"], bar_speed, seen)
-    settings = overrides_in(tables["settings"], seen)
+    settings = overrides_in(tables, seen)
     _check_positions(tables, seen)
     _check_channels(tables, seen)
     _check_pulse_fits(tables["incident_gauge"], tables["striker"], bar_speed, striker_speed, seen)
@@ -93,6 +97,7 @@ def rig_from_document(document: Mapping[str, Any], text: str, name: str) -> Rig:
         record=hints_in(tables["record"]),
         text=text,
         settings=settings,
+        correlations=correlations,
         calibration_date=tables["rig"].text("calibration_date"),
         remarks=tables["rig"].text("remarks"),
         source=name,
@@ -163,6 +168,7 @@ def _bar(values: Values, speed: Quantity | None, seen: Collector) -> Bar | None:
         wave_speed_m_s=speed,
         poisson_ratio=given["poisson_ratio"],
         yield_strength_pa=given.get("yield_strength"),
+        modulus_temperature_coefficient_per_k=given.get("modulus_temperature_coefficient"),
     )
 
 

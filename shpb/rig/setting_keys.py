@@ -1,8 +1,9 @@
-"""The keys of [settings], derived from the fields of :class:`shpb.settings.Settings`.
+"""The keys of [settings] and [limits], derived from the fields of ``Settings`` and ``Limits``.
 
-A new field of ``Settings`` becomes a key by itself: its type and the unit at the end of its name
-decide how people write it (``incident_window_s`` becomes ``incident_window_us``, a pair). Only its
-meaning, an example and its range are stated here; a test holds the two together.
+A new field of :class:`shpb.settings.Settings` becomes a key by itself: its type and the unit at the end
+of its name decide how people write it (``incident_window_s`` becomes ``incident_window_us``, a pair). Only
+its meaning, an example and its range are stated here; a test holds the two together. A field of
+:class:`shpb.limits.Limits` states these itself.
 """
 
 from __future__ import annotations
@@ -14,6 +15,7 @@ import types
 import typing
 from dataclasses import dataclass
 
+from shpb.limits import LIMIT_FACTS, Limits
 from shpb.rig.key import PLAIN, Key, Kind, Unit
 from shpb.settings import Settings
 
@@ -26,6 +28,7 @@ class Fact:
     example: str = ""  # in people's units; empty: the default stands as example
     low: float = -math.inf  # in the first unit
     high: float = math.inf
+    column: str = ""  # in a shot list, where the name alone would be too short
 
 
 _WINDOW = "Window of the {} pulse on the record's clock, in place of the program's own"
@@ -52,35 +55,11 @@ FACTS: dict[str, Fact] = {
     "reflected_foot_s": Fact(_FOOT.format("reflected"), "367.4"),
     "transmitted_foot_s": Fact(_FOOT.format("transmitted"), "307.1"),
     "analysis": Fact("Which curve is put forward as the result; all are stored"),
-    "equilibrium_limit": Fact("Largest |R(t)| that counts as force equilibrium", low=1e-4, high=1),
-    "equilibrium_late_strain": Fact("Strain beyond which equilibrium counts as reached late", low=0, high=1),
+    "corrections": Fact("Corrections that are applied; all are computed and reported"),
     "pulse_error": Fact(
         "Relative error that each pulse has on its own; sets the floor below which R(t) says nothing",
         low=0,
         high=0.5,
-    ),
-    "rate_variation_limit": Fact(
-        "Largest variation of the strain rate (standard deviation over mean)", low=1e-3, high=10
-    ),
-    "overlap_limit": Fact(
-        "Largest tail of the incident pulse under the reflected one, as a share of its peak", low=0, high=1
-    ),
-    "misalignment_limit_s": Fact(
-        "Largest difference between a foot and where distances and wave speed put it", low=0, high=1000
-    ),
-    "striker_limit": Fact(
-        "Largest difference between impulse of the incident pulse and momentum of the striker, as a share",
-        low=0,
-        high=1,
-    ),
-    "bar_yield_limit": Fact("Largest stress in a bar, as a share of its yield strength", low=0.01, high=1),
-    "noise_limit": Fact("Largest noise of a pulse after the low-pass, as a share of its peak", low=0, high=1),
-    "least_codes": Fact("Digitiser steps that a pulse must span at least", low=1, high=1e6),
-    "final_length_limit": Fact(
-        "Largest difference between the strain from the bars and from the final length", low=0, high=1
-    ),
-    "work_limit": Fact(
-        "Largest difference between work at the faces and work in the specimen, as a share", low=0, high=1
     ),
     "flow_strains": Fact("Plastic strains at which the flow stress is reported", low=1e-5, high=5),
 }
@@ -100,8 +79,10 @@ _SUFFIXES: tuple[tuple[str, tuple[Unit, ...]], ...] = (
 )
 
 
-def setting_key(name: str, hint: object, default: object) -> Key:
+def setting_key(name: str, hint: object, default: object, fact: Fact | None = None) -> Key:
     """Return the key by which people set the field ``name`` of type ``hint`` and value ``default``.
+
+    ``fact`` tells its meaning and range; without it they are looked up in ``FACTS``.
 
     Raises
     ------
@@ -109,7 +90,7 @@ def setting_key(name: str, hint: object, default: object) -> Key:
         If no rule covers the field's type; the rule then has to be added here.
     """
     kind, choices, automatic = _kind(name, hint)
-    fact = FACTS.get(name, Fact(name.replace("_", " ").capitalize()))
+    fact = fact or FACTS.get(name, Fact(name.replace("_", " ").capitalize()))
     stem, units = _unit(name, default, kind)
     return Key(
         stem=stem,
@@ -123,6 +104,7 @@ def setting_key(name: str, hint: object, default: object) -> Key:
         default="the program's own choice" if default is None else _words(default, units[0]),
         automatic=automatic,
         field=name,
+        column=fact.column and f"{fact.column}{stem}",
     )
 
 
@@ -138,6 +120,9 @@ def _kind(name: str, hint: object) -> tuple[Kind, tuple[str, ...], bool]:
             return Kind.CHOICE, tuple(one), optional
         if isinstance(one, type) and one in simple:
             return simple[one], (), optional
+        items = typing.get_args(one) if typing.get_origin(one) is tuple else ()
+        if items[1:] == (...,) and isinstance(items[0], type) and issubclass(items[0], enum.StrEnum):
+            return Kind.CHOICES, tuple(items[0]), optional
         lists = {
             (float, float): Kind.SPAN,
             (float, ...): Kind.NUMBERS,
@@ -149,7 +134,7 @@ def _kind(name: str, hint: object) -> tuple[Kind, tuple[str, ...], bool]:
 
 
 def _unit(name: str, default: object, kind: Kind) -> tuple[str, tuple[Unit, ...]]:
-    if kind in {Kind.SWITCH, Kind.CHOICE, Kind.TEXT, Kind.TEXTS, Kind.INTEGER}:
+    if kind in {Kind.SWITCH, Kind.CHOICE, Kind.CHOICES, Kind.TEXT, Kind.TEXTS, Kind.INTEGER}:
         return name, (PLAIN,)
     for suffix, units in _SUFFIXES:
         if name.endswith(suffix):
@@ -165,7 +150,7 @@ def _words(default: object, unit: Unit) -> str:
     if isinstance(default, int | float):
         return f"{unit.from_si(default):.6g} {unit.symbol}".strip()
     if isinstance(default, tuple):
-        return ", ".join(_words(item, unit) for item in default)
+        return "none" if not default else ", ".join(_words(item, unit) for item in default)
     return str(default)
 
 
@@ -180,10 +165,25 @@ def _example(default: object, kind: Kind, unit: Unit) -> str:
     return f'"{default}"' if isinstance(default, str) else _words(default, Unit(unit.suffix, "", unit.factor))
 
 
-def _all() -> tuple[Key, ...]:
+def _setting_keys() -> tuple[Key, ...]:
     hints, defaults = typing.get_type_hints(Settings), Settings()
-    names = [field.name for field in dataclasses.fields(Settings)]
+    names = [field.name for field in dataclasses.fields(Settings) if field.name != "limits"]
     return tuple(setting_key(name, hints[name], getattr(defaults, name)) for name in names)
 
 
-SETTING_KEYS = _all()
+def _limit_keys() -> tuple[Key, ...]:
+    hints, usual = typing.get_type_hints(Limits), Limits()
+    return tuple(_limit_key(name, hints[name], getattr(usual, name)) for name in LIMIT_FACTS)
+
+
+def _limit_key(name: str, hint: object, usual: float) -> Key:
+    """The key of a limit; its range is stated in SI, a key's in the unit that people write."""
+    stated = LIMIT_FACTS[name]
+    unit = setting_key(name, hint, usual).units[0]
+    low, high = (float(f"{unit.from_si(end):.9g}") for end in (stated.low, stated.high))
+    meaning = f"{stated.meaning} ({stated.source})"
+    return setting_key(name, hint, usual, Fact(meaning, low=low, high=high, column="limit_"))
+
+
+SETTING_KEYS = _setting_keys()
+LIMIT_KEYS = _limit_keys()

@@ -27,9 +27,16 @@ class Specimen:
     length_after_m: Quantity | None = None  # micrometer reading after the shot
     young_modulus_pa: Quantity | None = None
     density_kg_m3: Quantity | None = None
+    mass_kg: Quantity | None = None  # weighed before the shot
     poisson_ratio: Quantity | None = None
     heat_capacity_j_kg_k: Quantity | None = None
+    heat_share: Quantity | None = None  # of plastic work (Taylor & Quinney 1934)
+    # Temperature sensitivity of the flow stress, either way: relative slope, or the thermal factor of Johnson & Cook.
+    stress_slope_per_k: Quantity | None = None
+    melting_temperature_k: Quantity | None = None
+    softening_exponent: Quantity | None = None
     lubricant: str = ""
+    friction_coefficient: Quantity | None = None  # Coulomb, between specimen and bar faces
 
     def __post_init__(self) -> None:
         for name in ("diameter_m", "length_m"):
@@ -74,6 +81,9 @@ class ShotSheet:
     kind: TestKind
     specimen: Specimen
     temperature_k: Quantity = field(default_factory=lambda: Quantity(293.15))
+    incident_face_temperature_k: Quantity | None = None  # of the bar's face, in a hot or cold test
+    transmitted_face_temperature_k: Quantity | None = None
+    heated_length_m: Quantity | None = None  # of each bar, from its face
     striker_speed_m_s: Quantity | None = None
     date: str = ""
     operator: str = ""

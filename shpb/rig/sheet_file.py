@@ -81,7 +81,7 @@ def sheet_from_document(
     before = len(seen.mistakes)
     tables = read_tables(document, SHEET_FILE, seen)
     shot, specimen = tables["shot"], tables["specimen"]
-    overrides = overrides_in(tables["settings"], seen)
+    overrides = overrides_in(tables, seen)
     if shot.has("kind"):
         _check_length_after(TestKind(shot.given["kind"]), specimen, seen)
     complete = shot.has("id", "kind") and specimen.has("material", "diameter", "length")
@@ -93,6 +93,9 @@ def sheet_from_document(
         kind=TestKind(shot.given["kind"]),
         specimen=_specimen(specimen.given),
         temperature_k=shot.given.get("temperature", Quantity(293.15)),
+        incident_face_temperature_k=shot.given.get("incident_face_temperature"),
+        transmitted_face_temperature_k=shot.given.get("transmitted_face_temperature"),
+        heated_length_m=shot.given.get("heated_length"),
         striker_speed_m_s=shot.given.get("striker_speed"),
         date=shot.text("date"),
         operator=shot.text("operator"),
@@ -114,9 +117,15 @@ def _specimen(given: Mapping[str, Any]) -> Specimen:
         length_after_m=given.get("length_after"),
         young_modulus_pa=given.get("young_modulus"),
         density_kg_m3=given.get("density"),
+        mass_kg=given.get("mass"),
         poisson_ratio=given.get("poisson_ratio"),
         heat_capacity_j_kg_k=given.get("heat_capacity"),
+        heat_share=given.get("heat_share"),
+        stress_slope_per_k=given.get("stress_slope"),
+        melting_temperature_k=given.get("melting_temperature"),
+        softening_exponent=given.get("softening_exponent"),
         lubricant=given.get("lubricant", ""),
+        friction_coefficient=given.get("friction_coefficient"),
     )
 
 

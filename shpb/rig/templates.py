@@ -138,6 +138,8 @@ def _key_facts(key: Key, group: OneOf | None) -> str:
 def _limits(key: Key) -> str:
     if key.kind is Kind.CHOICE:
         return "One of " + ", ".join(f'"{choice}"' for choice in key.choices)
+    if key.kind is Kind.CHOICES:
+        return "Any of " + ", ".join(f'"{choice}"' for choice in key.choices)
     limits = key.range_text(key.units[0])
     return limits[0].upper() + limits[1:] if limits else ""
 

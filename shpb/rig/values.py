@@ -177,6 +177,20 @@ def _choice(value: object, key: Key, unit: Unit) -> str:
     raise Unreadable(shown(value), key.expected(unit), mend)
 
 
+def _choices(value: object, key: Key, unit: Unit) -> tuple[str, ...]:
+    """Some of the choices, each at most once; a text holds them with commas between, "none" is the empty list."""
+    if isinstance(value, str):
+        value = [] if value.strip() in {"", "none"} else [part.strip() for part in value.split(",")]
+    if not isinstance(value, list | tuple):
+        mend = f"Write for example {key.name} = {key.example}; [] for none"
+        raise Unreadable(shown(value), key.expected(unit), mend)
+    chosen = tuple(_choice(item, key, unit) for item in value)
+    for choice in chosen:
+        if chosen.count(choice) > 1:
+            raise Unreadable(f"{shown(str(choice))} twice", "each at most once", "Remove one of the two")
+    return chosen
+
+
 def _file(value: object, key: Key, unit: Unit) -> str:
     text = _text(value, key, unit)
     if not text or "\n" in text or "\t" in text:
@@ -272,6 +286,7 @@ _READERS: dict[Kind, Callable[[Any, Key, Unit], Any]] = {
     Kind.IDENTIFIER: _identifier,
     Kind.DATE: _date,
     Kind.CHOICE: _choice,
+    Kind.CHOICES: _choices,
     Kind.FILE: _file,
     Kind.FILES: _files,
     Kind.SPAN: _rising,

@@ -3,12 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import NamedTuple
+from typing import TYPE_CHECKING, NamedTuple
 
 import numpy as np
 
 from shpb.arrays import FloatArray
 from shpb.reduction import ShotResult
+from shpb.trust.budget import COVERAGE_FACTOR
+
+if TYPE_CHECKING:
+    from shpb.trust.draws import Draws
 
 FORMAT = "shpb-shot"
 FORMAT_VERSION = 1
@@ -75,9 +79,24 @@ TRUST: tuple[Field, ...] = (
     Field("u_equilibrium_ratio", "", "Measurement floor of R", lambda r: r.response.equilibrium.floor),
     Field("u_true_strain", "", "Standard uncertainty of true strain", lambda r: r.budget.u_true_strain),
     Field("u_true_stress", "Pa", "Standard uncertainty of true stress", lambda r: r.budget.u_true_stress_pa),
+    Field(
+        "u_force_difference",
+        "",
+        "Standard uncertainty of R by all sources, as the signed 2 (F_in - F_out)/(F_in + F_out)",
+        lambda r: r.budget.u_force_difference,
+    ),
+    Field("equilibrium_ratio_low", "", "Lower end of the interval of R, k = 2", lambda r: _ratio_end(r, 0)),
+    Field("equilibrium_ratio_high", "", "Upper end of the interval of R, k = 2", lambda r: _ratio_end(r, 1)),
 )
 
+
+def _ratio_end(result: ShotResult, end: int) -> FloatArray:
+    """One end of the interval of R by the linear budget, folded at zero."""
+    return result.budget.interval("force_difference", result.response.equilibrium.ratio)[end]
+
+
 _UNITS = {"stress": "Pa", "strain": "", "strain_rate": "1/s"}
+_WAVES = {"1w": "one", "3w": "three"}
 
 
 def budget_fields(result: ShotResult) -> tuple[Field, ...]:
@@ -95,6 +114,40 @@ def budget_fields(result: ShotResult) -> tuple[Field, ...]:
         for item in budget.u_shared.items()
     ]
     return (*whole, *shared)
+
+
+def draw_fields(draws: Draws) -> tuple[Field, ...]:
+    """Mean, standard uncertainty and symmetric 95 % interval of every curve by the draws, on their own thinned grid."""
+    from shpb.trust.drawn_curves import CURVES
+
+    words = {
+        "mean": "Mean of the draws",
+        "u": "Standard uncertainty by the draws",
+        "low": "Lower end of the 95 % interval by the draws",
+        "high": "Upper end of the 95 % interval by the draws",
+    }
+
+    def field(name: str, units: str, label: str, array: FloatArray) -> Field:
+        return Field(name, units, label, lambda _: array)
+
+    found = [field("time", "s", "Time since the front reached the incident face", draws.time_s)]
+    for number, curve in enumerate(CURVES):
+        what, _, wave = curve.rpartition("_")
+        if wave in _WAVES:
+            units, name = _UNITS[what], f"{what.replace('_', ' ')}, {_WAVES[wave]}-wave"
+        elif curve == "equilibrium_ratio":
+            units, name = "", "R"
+        else:
+            units, name = _UNITS[curve.removeprefix("true_")], curve.replace("_", " ")
+        for which, label in words.items():
+            found.append(field(f"{which}_{curve}", units, f"{label}: {name}", getattr(draws, which)[number]))
+    return tuple(found)
+
+
+def draw_table(draws: Draws) -> FloatArray:
+    """Flow stresses by the draws, shape (points, 5): strain, then mean, u, low and high of true stress [Pa]."""
+    rows = [(point.at_strain, point.mean_pa, point.u_pa, point.low_pa, point.high_pa) for point in draws.flow]
+    return np.array(rows, dtype=float).reshape(-1, 5)
 
 
 class Attribute(NamedTuple):
@@ -146,6 +199,17 @@ RESPONSE_ATTRIBUTES: tuple[Attribute, ...] = (
     Attribute("reflected_work", lambda r: r.response.balance.reflected_work_j),
     Attribute("transmitted_work", lambda r: r.response.balance.transmitted_work_j),
     Attribute("specimen_work", lambda r: r.response.balance.specimen_work_j),
+)
+
+TRUST_ATTRIBUTES: tuple[Attribute, ...] = (
+    Attribute("coverage_factor", lambda _: COVERAGE_FACTOR),
+)  # k of intervals
+
+DRAW_ATTRIBUTES: tuple[Attribute, ...] = (
+    Attribute("draws", lambda r: r.draws and r.draws.draws),
+    Attribute("seed", lambda r: r.draws and r.draws.seed),
+    Attribute("probability", lambda r: r.draws and r.draws.probability),
+    Attribute("settled", lambda r: r.draws and r.draws.settled),  # adaptive alone
 )
 
 WAVE_ATTRIBUTES: tuple[Attribute, ...] = (

@@ -23,6 +23,7 @@ from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 from shpb.settings import Settings
 from shpb.store import layout
+from shpb.store.forward_run import write_closure, write_corrections
 from shpb.store.plain import from_plain, to_plain
 from shpb.trust.finding import Finding
 from shpb.version import VERSION
@@ -30,6 +31,8 @@ from shpb.whole_file import whole_file
 
 if TYPE_CHECKING:
     import h5py
+
+    from shpb.trust.draws import Draws
 
 _COMPRESSED = {"compression": "gzip", "compression_opts": 1, "shuffle": True, "fletcher32": True}
 
@@ -168,11 +171,25 @@ def _write(file: h5py.File, result: ShotResult) -> None:
     _write_attributes(response, layout.RESPONSE_ATTRIBUTES, result)
     table = response.create_dataset("flow_stress", data=layout.flow_table(result))
     table.attrs["columns"] = "strain, true stress [Pa], true strain rate [1/s]"
+    write_corrections(response, result)
     trust = _write_fields(
         file, "trust", (*layout.TRUST, *layout.budget_fields(result)), result, "u_true_stress"
     )
+    _write_attributes(trust, layout.TRUST_ATTRIBUTES, result)
+    write_closure(trust, result)
+    if result.draws is not None:
+        _write_draws(file, result, result.draws)
     trust["budget"] = json.dumps([to_plain(line) for line in result.budget.contributions])
     trust["findings"] = json.dumps([to_plain(finding) for finding in result.findings])
+
+
+def _write_draws(file: h5py.File, result: ShotResult, draws: Draws) -> None:
+    group = _write_fields(file, "trust/draws", layout.draw_fields(draws), result, "mean_true_stress")
+    _write_attributes(group, layout.DRAW_ATTRIBUTES, result)
+    table = group.create_dataset("flow_stress", data=layout.draw_table(draws))
+    table.attrs["columns"] = (
+        "strain, mean, standard uncertainty, lower and upper end of the interval of true stress [Pa]"
+    )
 
 
 def _write_record(file: h5py.File, record: Record) -> None:

@@ -45,6 +45,7 @@ class Input:
     shared: bool = False  # one error acts on all shots of a rig (wave speed), or each shot has its own
     distribution: Distribution = "normal"
     degrees_of_freedom: float = math.inf  # one or more; infinite where u is taken as exactly known
+    components: int = 1  # independent numbers of one kind, such as a noise; more than 1 for Monte Carlo alone
 
     def __post_init__(self) -> None:
         nu = self.degrees_of_freedom
@@ -62,6 +63,7 @@ class Input:
                 f"Choose one of {', '.join(DISTRIBUTIONS)}",
             ),
             (nu >= 1, f"its degrees of freedom are {nu}", "Give n - 1 of n observations, 1 or more"),
+            (self.components >= 1, f"it has {self.components} components", "Give 1 or more"),
             (
                 self.distribution != "t" or math.isfinite(nu),
                 "a t distribution needs its degrees of freedom",
@@ -370,6 +372,10 @@ def _scaled(sensitivities: Mapping[str, ArrayLike], inputs: Sequence[Input]) -> 
     names = [one.name for one in inputs]
     if not names:
         raise InputError("there are no inputs", where="inputs", mend="Give at least one")
+    for one in inputs:
+        if one.components > 1:
+            what, mend = f"it has {one.components} components", "Give each of them a name, or use Monte Carlo"
+            raise InputError(what, where=f"input {one.name!r}", mend=mend)
     if set(names) != set(sensitivities):
         missing = sorted(set(names) - set(sensitivities))
         stray = sorted(set(sensitivities) - set(names))

@@ -79,7 +79,8 @@ def monte_carlo(
     Parameters
     ----------
     model : callable
-        Takes a mapping of name to array, shape (draws,), gives shape (draws,) or (draws, samples).
+        Takes a mapping of name to array, shape (draws,), or (draws, components) where an input has several; gives shape
+        (draws,) or (draws, samples).
     inputs : sequence of Input
     correlations : mapping, Covariance, several, or None
         Correlated inputs must be normal: they are drawn from a multivariate normal (6.4.8).
@@ -213,6 +214,9 @@ class _Source:
                 raise InputError(
                     what, where=where, mend="Make it normal: only normal inputs may be correlated"
                 )
+            if i in self.linked and one.components > 1:
+                what = f"it is correlated, and has {one.components} components"
+                raise InputError(what, where=where, mend="Give each component a name of its own")
             if one.distribution == "t" and one.degrees_of_freedom <= 2:
                 what = f"a t distribution with {one.degrees_of_freedom:g} degrees of freedom has no variance"
                 raise InputError(what, where=where, mend="Take four or more observations, or pool them")
@@ -221,7 +225,10 @@ class _Source:
 
     def draw(self, n: int) -> dict[str, FloatArray]:
         """The next n draws of all inputs."""
-        deviates = [self._deviate(one, rng, n) for one, rng in zip(self.inputs, self.streams, strict=True)]
+        deviates = [
+            self._deviate(one, rng, n if one.components == 1 else (n, one.components))
+            for one, rng in zip(self.inputs, self.streams, strict=True)
+        ]
         if self.linked.size:
             mixed = np.einsum("ij,jk->ik", self.factor, np.array([deviates[i] for i in self.linked]))
             for row, i in enumerate(self.linked):
@@ -229,7 +236,7 @@ class _Source:
         return {one.name: one.value + one.u * z for one, z in zip(self.inputs, deviates, strict=True)}
 
     @staticmethod
-    def _deviate(one: Input, rng: np.random.Generator, n: int) -> FloatArray:
+    def _deviate(one: Input, rng: np.random.Generator, n: int | tuple[int, int]) -> FloatArray:
         """Draws of mean 0 and standard deviation 1, for t of scale 1 (6.4.2 to 6.4.9)."""
         if one.distribution == "normal":
             return rng.standard_normal(n)
@@ -426,7 +433,7 @@ def run_model(
         fine = np.isfinite(y.sum())
     if not fine and not np.all(np.isfinite(y)):
         run = int(np.argmin(np.isfinite(y.reshape(runs, -1)).all(axis=1)))
-        at = ", ".join(f"{name} = {float(x[run]):.6g}" for name, x in values.items())
+        at = ", ".join(f"{name} = {float(x[run]):.6g}" for name, x in values.items() if x.ndim == 1)
         raise InputError(
             f"the model is not finite at {at}",
             where="model",

@@ -7,6 +7,7 @@ figure of its own, without any interactive state of matplotlib, whose back end s
 from __future__ import annotations
 
 import io
+from collections.abc import Callable
 from contextlib import AbstractContextManager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -43,7 +44,7 @@ def shot_figure(result: ShotResult) -> Figure:
     """
     from matplotlib.figure import Figure
 
-    with _style():
+    with page_style():
         figure = Figure(figsize=(WIDTH, HEIGHT), dpi=DPI)
         page = Page(figure)
         _header(page, result)
@@ -78,7 +79,11 @@ def save_figure(result: ShotResult, path: Path) -> Path:
     >>> shpb.save_figure(result, folder / "W-02.svg").name
     'W-02.svg'
     """
-    path = Path(path)
+    return write_figure(lambda: shot_figure(result), Path(path))
+
+
+def write_figure(draw: Callable[[], Figure], path: Path) -> Path:
+    """Draw a page and write it as :func:`save_figure` does."""
     file_format = _SUFFIXES.get(path.suffix.lower())
     if file_format is None:
         raise InputError(
@@ -86,7 +91,6 @@ def save_figure(result: ShotResult, path: Path) -> Path:
             where=str(path),
             mend="Let the name end in .png, .pdf or .svg",
         )
-    figure = shot_figure(result)
     # No date, so that the same shot gives the same file. PNG: the fastest compression, half the time for
     # a file a little larger.
     every: dict[str, dict[str, Any]] = {
@@ -96,8 +100,8 @@ def save_figure(result: ShotResult, path: Path) -> Path:
     }
     options = every[file_format]
     content = io.BytesIO()
-    with _style():
-        figure.savefig(content, format=file_format, dpi=DPI, **options)
+    with page_style():
+        draw().savefig(content, format=file_format, dpi=DPI, **options)
     with whole_file(path) as part:
         part.write_bytes(content.getvalue())
     return path
@@ -108,10 +112,10 @@ def load_drawing() -> None:
     import matplotlib.backends.backend_agg
     import matplotlib.figure  # noqa: F401
 
-    _style()
+    page_style()
 
 
-def _style() -> AbstractContextManager[None]:
+def page_style() -> AbstractContextManager[None]:
     """Matplotlib's own defaults with ours on top, whatever the user's style; its back end is left alone."""
     import matplotlib
 
@@ -169,7 +173,7 @@ def _time_side(page: Page, result: ShotResult) -> None:
         page.axes(x, 5.24, width, 0.80), result, station=strain.transmitted, gauge=rig.transmitted_gauge,
         pulses=(pulses.transmitted,), side="transm.", last=True,
     )  # fmt: skip
-    page.key(x, 4.62, "Pulses at the faces", time_panels.PULSE_LINES)
+    page.key(x, 4.62, "Pulses at the faces", time_panels.pulse_lines(result))
     time_panels.draw_pulses(page.axes(x, 3.36, width, 1.20), result)
     page.key(x, 3.14, "Forces at the faces", time_panels.FORCE_LINES)
     if result.response.span is not None:
@@ -236,4 +240,4 @@ def _typeset(text: str) -> str:
     return text
 
 
-__all__ = ["DPI", "save_figure", "shot_figure"]
+__all__ = ["DPI", "save_figure", "shot_figure", "write_figure"]

@@ -9,6 +9,8 @@ from dataclasses import dataclass
 from shpb.pulse.front import UnusableShotError
 from shpb.reduction import ShotResult
 from shpb.trust.finding import Verdict, Weight
+from shpb.trust.repeats import RepeatShot, repeat_shot
+from shpb.view.repeats import repeat_lines
 from shpb.view.text import padded, printable, rounded, wrapped
 from shpb.view.wording import strain_text, telling
 
@@ -31,6 +33,8 @@ class ListRow:
         Flow stresses that are known; ``plastic`` says which strain it is.
     reasons : str
         Checks that say something, gravest first; the error where the shot could not be reduced.
+    repeat : RepeatShot or None
+        What its repeats are held against; None where the shot does not count.
     """
 
     shot_id: str
@@ -39,6 +43,7 @@ class ListRow:
     strain_span: tuple[float, float] | None = None
     flow: tuple[tuple[float, bool, float], ...] = ()
     reasons: str = ""
+    repeat: RepeatShot | None = None
 
 
 def list_row(result: ShotResult) -> ListRow:
@@ -54,6 +59,7 @@ def list_row(result: ShotResult) -> ListRow:
         strain_span=response.strain_span,
         flow=tuple((f.at_strain, f.plastic, f.stress_pa) for f in response.flow if f.stress_pa is not None),
         reasons=", ".join(f.check for f in grave),
+        repeat=repeat_shot(result),
     )
 
 
@@ -64,7 +70,7 @@ def list_row_of_error(shot_id: str, error: Exception) -> ListRow:
 
 
 def list_text(rows: Iterable[ListRow], *, width: int = 80) -> str:
-    """Return the table of several shots, a count of verdicts below it; no line passes ``width``."""
+    """Return the table of several shots, verdicts counted and repeats compared below it; no line passes ``width``."""
     rows = list(rows)
     if not rows:
         return "No shots."
@@ -107,4 +113,4 @@ def _legend(rows: list[ListRow], strain: float | None, width: int) -> list[str]:
         lines += wrapped(f"MPa: true flow stress at true plastic strain {strain:g}.", width)
     if any(not plastic for row in rows for e, plastic, _ in row.flow if e == strain):
         lines += wrapped("* at total true strain: no Young's modulus is stated for the specimen.", width)
-    return lines
+    return lines + repeat_lines((row.repeat for row in rows if row.repeat is not None), width)

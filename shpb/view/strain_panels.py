@@ -60,15 +60,21 @@ def draw_curve(axes: Axes, result: ShotResult) -> None:
 
 
 def _draw_band(axes: Axes, result: ShotResult) -> None:
-    """Expanded uncertainty of the curve put forward, k = 2, where it counts."""
-    response = result.response
+    """Interval of about 95 % of the curve put forward where it counts: by the draws, else k = 2."""
+    response, draws = result.response, result.draws
     if response.span is None:
         return
     index = np.arange(*response.span)[:: max((response.span[1] - response.span[0]) // 200, 1)]
-    curve, u = response.curve, 2e-6 * result.budget.u_true_stress_pa[index]
-    strain, stress = np.maximum.accumulate(curve.true_strain[index]), 1e-6 * curve.true_stress_pa[index]
-    axes.fill_between(strain, stress - u, stress + u, color=BAND, linewidth=0, zorder=0.5)
-    axes.text(0.05, 0.94, "band: stress, k = 2", fontsize=SMALL, parse_math=False, transform=axes.transAxes)
+    curve = response.curve
+    strain = np.maximum.accumulate(curve.true_strain[index])
+    if draws is None:
+        low, high = result.budget.interval("true_stress", curve.true_stress_pa)
+        said = "band: stress, k = 2"
+    else:
+        low, high = draws.of("low", "true_stress"), draws.of("high", "true_stress")
+        said = f"band: stress, {100 * draws.probability:.0f} % of {draws.draws} draws"
+    axes.fill_between(strain, 1e-6 * low[index], 1e-6 * high[index], color=BAND, linewidth=0, zorder=0.5)
+    axes.text(0.05, 0.94, said, fontsize=SMALL, parse_math=False, transform=axes.transAxes)
 
 
 def draw_rate(axes: Axes, result: ShotResult) -> None:

@@ -9,16 +9,21 @@ from __future__ import annotations
 import json
 import math
 from collections.abc import Mapping
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from shpb.errors import FileMistakes, ShpbError
+from shpb.limits import USUAL, set_by_lab
 from shpb.pulse.pulse import Pulse
 from shpb.record.record import Record, Source
 from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION, Equilibrium
-from shpb.trust.budget import OUTPUTS, flow_stress_uncertainty_pa
+from shpb.trust.budget import ALL_OUTPUTS, COVERAGE_FACTOR, flow_stress_uncertainty_pa
 from shpb.version import VERSION
+from shpb.view.forward_words import closure_json, corrections_json
 from shpb.view.wording import cutoff_fa_c0, formulas, verdict_sentence
+
+if TYPE_CHECKING:
+    from shpb.trust.draws import Draws
 
 SCHEMA_VERSION = 1
 
@@ -73,6 +78,11 @@ def shot_json(result: ShotResult) -> Json:
         "yield_back_extrapolated_pa": response.yield_back_extrapolated_pa,
         "apparent_slope_pa": response.apparent_slope_pa,
         "indentation_strain": float(response.indentation_strain[counted].max()),
+        "corrections": corrections_json(result),
+        "greatest_temperature_rise_k": None
+        if response.heating_k is None
+        else float(response.heating_k.max()),
+        "closure": closure_json(result),
         "work_at_faces_j": response.balance.work_j,
         "work_in_specimen_j": response.balance.specimen_work_j,
         "incident_impulse_n_s": response.balance.incident_impulse_n_s,
@@ -80,6 +90,10 @@ def shot_json(result: ShotResult) -> Json:
         "pulses": {pulse.name: _pulse(pulse) for pulse in result.pulses},
         "processing": _processing(result),
         "remarks": [*result.record.remarks, *result.pulses.remarks],
+        "limits_set_by_lab": {
+            name: {"limit": getattr(result.settings.limits, name), "usual": getattr(USUAL, name)}
+            for name in set_by_lab(result.settings.limits)
+        },
         "findings": [
             {
                 "check": f.check,
@@ -164,6 +178,7 @@ def _uncertainty(result: ShotResult) -> Json:
     """Standard uncertainties at the middle of what counts, of flow stresses, and the ranked budget."""
     span = result.response.span or result.response.loading
     middle, budget = (span[0] + span[1]) // 2, result.budget
+    ratio = result.response.equilibrium.ratio
     unit = {"stress": "_pa", "strain": "", "strain_rate": "_per_s"}
 
     def at_middle(values: Mapping[str, Any]) -> Json:
@@ -173,17 +188,58 @@ def _uncertainty(result: ShotResult) -> Json:
     return {
         "at_mid_span": at_middle(budget.u),
         "shared_by_all_shots_at_mid_span": at_middle(budget.u_shared),
-        "u_flow_stress_pa": list(flow_stress_uncertainty_pa(budget, result.response)),
+        "u_flow_stress_pa": list(
+            flow_stress_uncertainty_pa(budget, result.response, result.sheet.specimen.young_modulus_pa)
+        ),
+        "coverage_factor": COVERAGE_FACTOR,
+        "equilibrium_ratio_at_mid_span": {
+            "u_by_all_sources": float(budget.u_force_difference[middle]),
+            "interval": [float(end[middle]) for end in budget.interval("force_difference", ratio)],
+        },
+        "draws": None if result.draws is None else _draws(result.draws, middle),
         "budget": [
             {
                 "source": line.source,
                 "shared": line.shared,
                 "assumed": line.assumed,
+                "note": line.note,
                 "share_of_variance": {
-                    f"of_{name}": share for name, share in zip(OUTPUTS, line.share, strict=True)
+                    f"of_{name}": share for name, share in zip(ALL_OUTPUTS, line.share, strict=True)
                 },
             }
             for line in budget.contributions
+        ],
+    }
+
+
+def _draws(draws: Draws, middle: int) -> Json:
+    """What the draws give at mid-span, and for the flow stresses."""
+    from shpb.trust.drawn_curves import CURVES
+
+    units = {"stress": "_pa", "rate": "_per_s"}
+
+    def unit(curve: str) -> str:
+        return next((end for word, end in units.items() if word in curve.split("_")), "")
+
+    return {
+        "draws": draws.draws,
+        "seed": draws.seed,
+        "probability": draws.probability,
+        "settled": draws.settled,
+        "at_mid_span": {
+            f"{which}_{curve}{unit(curve)}": float(draws.of(which, curve)[middle])
+            for curve in CURVES
+            for which in ("mean", "u", "low", "high")
+        },
+        "flow": [
+            {
+                "at_strain": point.at_strain,
+                "mean_pa": point.mean_pa,
+                "u_pa": point.u_pa,
+                "low_pa": point.low_pa,
+                "high_pa": point.high_pa,
+            }
+            for point in draws.flow
         ],
     }
 

@@ -9,12 +9,14 @@ from __future__ import annotations
 from shpb.record.record import Record
 from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION, Equilibrium, Outcome
-from shpb.settings import Alignment, Analysis
-from shpb.trust.budget import OUTPUTS, flow_stress_uncertainty_pa
+from shpb.settings import Alignment
+from shpb.trust.budget import flow_stress_uncertainty_pa
 from shpb.trust.finding import Finding, Weight
+from shpb.view.forward_words import closure_lines, correction_lines, correction_table
 from shpb.view.listing import ListRow, list_row, list_row_of_error, list_text
 from shpb.view.summary import error_json, json_text, record_json, shot_json
 from shpb.view.text import NOT_KNOWN, printable, rounded, wrapped
+from shpb.view.uncertainty import budget_lines, budget_table, draw_lines
 from shpb.view.wording import (
     finding_named,
     misalignment_words,
@@ -30,6 +32,7 @@ from shpb.view.wording import (
 
 __all__ = [
     "ListRow",
+    "draws_text",
     "error_json",
     "json_text",
     "list_row",
@@ -54,7 +57,7 @@ def shot_text(result: ShotResult, *, width: int = 80, full: bool = False) -> str
     width : int
         Columns that no line passes, at least 50.
     full : bool
-        Whether to add the table of every check with what it measured, its limit and its source.
+        Whether to add the ranked uncertainty budget, and every check with what it measured, its limit and its source.
     """
     width = max(width, 50)
     lines = wrapped(verdict_sentence(result), width, f"{result.verdict.value.upper()}  ")
@@ -65,8 +68,14 @@ def shot_text(result: ShotResult, *, width: int = 80, full: bool = False) -> str
     for number, remark in enumerate(remarks_of(result)):
         lines += wrapped(remark + ".", width, ("" if number else "Remarks").ljust(_LABEL))
     if full:
+        lines += ["", *budget_table(result, width), "", *correction_table(result, width)]
         lines += ["", *_checks(result.findings, width)]
     return "\n".join(line.rstrip() for line in lines)
+
+
+def draws_text(result: ShotResult, *, width: int = 80) -> str:
+    """Return what the draws of a shot say, as the lines of :func:`shot_text`; empty where there are none."""
+    return "\n".join(draw_lines(result, max(width, 50), _LABEL))
 
 
 def record_text(record: Record, *, width: int = 80) -> str:
@@ -126,7 +135,8 @@ def _numbers(result: ShotResult, width: int) -> list[str]:
         say("", f"without the moved feet: {equilibrium_words(untuned)}")
     say("", R_DEFINITION + "; the floor is the least R that these gauges can see")
     lines += _flow_lines(result, width)
-    lines += _budget_lines(result, width)
+    lines += budget_lines(result, width, _LABEL)
+    lines += draw_lines(result, width, _LABEL)
     modulus = result.sheet.specimen.young_modulus_pa
     yield_pa = result.response.yield_back_extrapolated_pa
     if yield_pa is not None and modulus is not None:
@@ -170,7 +180,9 @@ def _flow_lines(result: ShotResult, width: int) -> list[str]:
         strains = ", ".join(f"{point.at_strain:g}" for point in flow)
         return wrapped(f"none at {strains} of {strain_kind(result)}: not in what counts", width, label)
     lines = wrapped(f"{result.response.analysis.value}, true, at {strain_kind(result)}", width, label)
-    for point, u in zip(flow, flow_stress_uncertainty_pa(result.budget, result.response), strict=True):
+    modulus = result.sheet.specimen.young_modulus_pa
+    uncertainties = flow_stress_uncertainty_pa(result.budget, result.response, modulus)
+    for point, u in zip(flow, uncertainties, strict=True):
         value = "not in what counts"
         if point.stress_pa is not None and u is not None:
             value = (
@@ -181,44 +193,14 @@ def _flow_lines(result: ShotResult, width: int) -> list[str]:
     return lines
 
 
-def _budget_lines(result: ShotResult, width: int) -> list[str]:
-    """Standard uncertainties at the middle of what counts, and what they come from."""
-    response, budget = result.response, result.budget
-    wave = "1w" if response.analysis is Analysis.ONE_WAVE else "3w"
-    span = response.span or response.loading
-    middle = (span[0] + span[1]) // 2
-    curve = response.curve
-    said = []
-    for word, name, values in (
-        ("stress", f"stress_{wave}", curve.stress_pa),
-        ("strain", f"strain_{wave}", curve.strain),
-        ("rate", f"strain_rate_{wave}", curve.strain_rate_per_s),
-    ):
-        share = budget.u[name][middle] / max(abs(float(values[middle])), 1e-300)
-        said.append(f"{word} {100 * share:.1f} %")
-    lines = wrapped(
-        f"standard, at mid-span: {', '.join(said)} (engineering, {response.analysis.value})",
-        width,
-        "Uncertainty".ljust(_LABEL),
-    )
-    column = OUTPUTS.index(f"stress_{wave}")
-    greatest = sorted(budget.contributions, key=lambda line: -line.share[column])[:3]
-    shares = ", ".join(
-        f"{line.source} {100 * line.share[column]:.0f} %{' (assumed)' if line.assumed else ''}"
-        for line in greatest
-    )
-    return lines + wrapped(f"of the variance of stress: {shares}", width, " " * _LABEL)
-
-
 def _balance_lines(result: ShotResult, width: int) -> list[str]:
     response, lines = result.response, []
 
     def say(label: str, text: str) -> None:
         lines.extend(wrapped(text, width, label.ljust(_LABEL)))
 
-    indentation = finding_named(result, "indentation")
-    if indentation is not None:
-        say("Indentation", printable(indentation.measured))
+    lines += correction_lines(result, width, _LABEL)
+    lines += closure_lines(result, width, _LABEL)
     work = response.balance
     say("Work", f"{rounded(work.work_j)} J at the faces, {rounded(work.specimen_work_j)} J in the specimen")
     length = finding_named(result, "final length")

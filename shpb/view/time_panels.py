@@ -40,6 +40,7 @@ PULSE_LINES = (
     Line("reflected", MIDDLE, DASHES),
     Line("transmitted", LIGHT, DASH_DOT, 1.3),
 )
+FORWARD = Line("forward run", INK, DOTS, 0.9)
 FORCE_LINES = (Line("F_in", DARK), Line("F_out", MIDDLE, DASHES))
 RATIO, FLOOR, LIMIT = (
     Line("R", DARK),
@@ -125,8 +126,13 @@ def loading_view_us(result: ShotResult) -> tuple[float, float]:
     return max(float(response.time_s[0]), -0.05 * end) * _US, min(float(response.time_s[-1]), 1.3 * end) * _US
 
 
+def pulse_lines(result: ShotResult) -> tuple[Line, ...]:
+    """The lines that :func:`draw_pulses` draws."""
+    return PULSE_LINES if result.closure is None else (*PULSE_LINES, FORWARD)
+
+
 def draw_pulses(axes: Axes, result: ShotResult) -> None:
-    """The three pulses at the specimen faces."""
+    """The three pulses at the specimen faces, and what a forward run of the reduced curve predicts of two of them."""
     faces = result.faces
     part, time_us = _time_part(result)
     highest, lowest = 0.0, 0.0
@@ -136,6 +142,10 @@ def draw_pulses(axes: Axes, result: ShotResult) -> None:
         picked = envelope(micro)
         axes.plot(time_us[picked], micro[picked], label=look.name, **look.style)
         highest, lowest = max(highest, float(micro.max())), min(lowest, float(micro.min()))
+    closure = result.closure
+    if closure is not None:
+        for strain in (closure.predicted_reflected, closure.predicted_transmitted):
+            axes.plot(closure.time_s * _US, 1e6 * strain, label=FORWARD.name, **FORWARD.style)
     room = highest - lowest
     frame(axes, scale(*loading_view_us(result), 8), scale(lowest - 0.05 * room, highest + 0.05 * room, 5),
            "", "strain (microstrain)")  # fmt: skip

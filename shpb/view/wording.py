@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from shpb.limits import USUAL, key_of, limit_in_words, set_by_lab
 from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION
 from shpb.settings import Alignment, Analysis, Dispersion
@@ -13,6 +14,9 @@ _DISPERSION = {
     Dispersion.PHASE: "dispersion by the phase of the Pochhammer-Chree first mode",
     Dispersion.FULL: "dispersion by phase and amplitude of the Pochhammer-Chree first mode",
 }
+
+
+_SHOWN_LIMITS = 4
 
 
 def verdict_sentence(result: ShotResult) -> str:
@@ -113,8 +117,16 @@ def processing_words(result: ShotResult) -> str:
             low_pass_words(result),
             alignment_words(result),
             f"put forward {formulas(result)}",
+            *([corrected] if (corrected := corrected_words(result)) else []),
+            *([own] if (own := lab_limits_words(result)) else []),
         )
     )
+
+
+def corrected_words(result: ShotResult) -> str:
+    """Corrections that change the curves; empty where there are none."""
+    names = [one.correction.value for one in result.response.corrections if one.applied and one.brief]
+    return f"corrected for {', '.join(names)}" if names else ""
 
 
 def rate_words(result: ShotResult) -> str:
@@ -133,6 +145,19 @@ def strain_kind(result: ShotResult) -> str:
 def finding_named(result: ShotResult, check: str) -> Finding | None:
     """The finding of one check, None where the check had nothing to look at."""
     return next((f for f in result.findings if f.check == check), None)
+
+
+def lab_limits_words(result: ShotResult) -> str:
+    """The limits that this lab sets in place of the usual ones, the first few with both; empty where there are none."""
+    limits, names = result.settings.limits, set_by_lab(result.settings.limits)
+    parts = [
+        f"{key_of(name)} {limit_in_words(name, getattr(limits, name))} "
+        f"(usual {limit_in_words(name, getattr(USUAL, name))})"
+        for name in names[:_SHOWN_LIMITS]
+    ]
+    more = len(names) - len(parts)
+    parts += [f"and {more} more"] if more else []
+    return f"limits set by this lab: {', '.join(parts)}" if parts else ""
 
 
 def remarks_of(result: ShotResult) -> tuple[str, ...]:

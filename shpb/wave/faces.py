@@ -2,20 +2,21 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from shpb.arrays import FloatArray, frozen
 from shpb.errors import InputError
 from shpb.pulse.foot import Foot, pick_foot
-from shpb.pulse.pulse import Pulse, Pulses
+from shpb.pulse.pulse import Pulses
 from shpb.pulse.pulses import TAPER_RADII
 from shpb.rig.bar import Bar
 from shpb.rig.rig import Rig
-from shpb.rig.sheet import Specimen
+from shpb.rig.sheet import ShotSheet
 from shpb.settings import Alignment, Settings
-from shpb.wave.propagation import BarTransfer, CarriedPulse, Grid, LowPass, bar_transfer, padded_length
+from shpb.wave.propagation import CarriedPulse, Grid, LowPass
+from shpb.wave.to_faces import ToFaces
 
 # The common clock begins this long before the front, in a/c0 of the incident bar.
 _BEFORE_RADII = 12.0
@@ -47,6 +48,8 @@ class FacePulses:
         The tuned part: what was added to the physical delay [s]; zero in physical time.
     untuned : FacePulses or None
         The same without the tuned part, where there is one.
+    face_impedance_ratio : float
+        Impedance of the incident bar at its face by that of the bar: other than 1 where a hot end is corrected.
     """
 
     time_s: FloatArray
@@ -63,6 +66,7 @@ class FacePulses:
     reflected_shift_s: float = 0.0
     transmitted_shift_s: float = 0.0
     untuned: FacePulses | None = None
+    face_impedance_ratio: float = 1.0
 
     def index(self, time_s: float) -> int:
         """Sample at or after a time since the front, kept on the grid."""
@@ -77,29 +81,23 @@ def low_pass_of(rig: Rig, settings: Settings) -> LowPass:
     return LowPass(settings.cutoff_fa_c0 * slower)
 
 
-def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Settings) -> FacePulses:
+def carry_to_faces(pulses: Pulses, rig: Rig, sheet: ShotSheet, settings: Settings) -> FacePulses:
     """Carry the pulses to the specimen faces: incident forward, reflected and transmitted back.
 
     All three pass the same zero-phase low-pass and the same dispersion step, to the same place, before
     any sum or difference is formed (Gorham 1983; Lifshitz & Leber 1994).
     """
     low_pass = low_pass_of(rig, settings)
-    x_i, x_t = rig.incident_gauge.to_specimen_m, rig.transmitted_gauge.to_specimen_m
-    bar_i = rig.incident_bar
+    transit = sheet.specimen.transit_time_s or 0.0
     grid = _common_grid(pulses, rig)
-
-    distances = {"incident": x_i, "reflected": -x_i, "transmitted": -x_t}
-    transfers = _transfers(pulses, distances, rig, grid, low_pass, settings)
-
-    def carried(pulse: Pulse, shift_s: float = 0.0) -> CarriedPulse:
-        transfer = transfers[pulse.name]
-        return transfer.carry(pulse.strain, pulse.start_s, grid, distances[pulse.name], shift_s)
-
-    incident, reflected, transmitted = (carried(pulse) for pulse in pulses)
+    to_faces = ToFaces(pulses, rig, sheet, settings, grid, low_pass)
+    at_faces = to_faces()
+    incident, reflected, transmitted, impedance_ratio = at_faces
     feet = _feet_at_faces(pulses, (incident, reflected, transmitted), grid, rig)
-    zero = feet[0].time_s if feet[0] is not None else pulses.arrivals.incident_s + x_i / bar_i.wave_speed_m_s
+    travel = _travel_s(rig.incident_gauge.to_specimen_m, rig.incident_bar)
+    zero = feet[0].time_s if feet[0] is not None else pulses.arrivals.incident_s + travel
     off_r = None if feet[1] is None else feet[1].time_s - zero
-    off_t = None if feet[2] is None else feet[2].time_s - zero - (specimen.transit_time_s or 0.0)
+    off_t = None if feet[2] is None else feet[2].time_s - zero - transit
     u_off = float(np.sqrt(sum(foot.u_time_s**2 for foot in feet if foot is not None)))
     physical = FacePulses(
         time_s=frozen(grid.time_s - zero),
@@ -113,46 +111,22 @@ def carry_to_faces(pulses: Pulses, rig: Rig, specimen: Specimen, settings: Setti
         transmitted_misalignment_s=off_t,
         u_misalignment_s=u_off,
         whole=_whole(grid, low_pass, rig),
+        face_impedance_ratio=impedance_ratio,
     )
     if settings.alignment is Alignment.PHYSICAL:
         return physical
     shift_r = -(off_r or 0.0)
-    shift_t = -(off_t + (specimen.transit_time_s or 0.0)) if off_t is not None else 0.0
-    return FacePulses(
-        time_s=physical.time_s,
-        interval_s=grid.interval_s,
-        record_time_of_zero_s=zero,
-        incident=incident,
-        reflected=carried(pulses.reflected, shift_r),
-        transmitted=carried(pulses.transmitted, shift_t),
-        low_pass=low_pass,
-        reflected_misalignment_s=off_r,
-        transmitted_misalignment_s=off_t,
-        u_misalignment_s=u_off,
-        whole=physical.whole,
+    shift_t = -(off_t + transit) if off_t is not None else 0.0
+    tuned = to_faces(shift_r, shift_t)
+    return replace(
+        physical,
+        incident=tuned.incident,
+        reflected=tuned.reflected,
+        transmitted=tuned.transmitted,
         reflected_shift_s=shift_r,
         transmitted_shift_s=shift_t,
         untuned=physical,
     )
-
-
-def _transfers(
-    pulses: Pulses, distances: dict[str, float], rig: Rig, grid: Grid, low_pass: LowPass, settings: Settings
-) -> dict[str, BarTransfer]:
-    """What the bars do to each pulse; one FFT length for all, so that equal bars are solved once."""
-    bars = {"incident": rig.incident_bar, "reflected": rig.incident_bar, "transmitted": rig.transmitted_bar}
-    length = max(
-        padded_length(pulse.strain.size, distances[pulse.name], bars[pulse.name], low_pass, grid.interval_s)
-        for pulse in pulses
-    )
-    solved: dict[tuple[float, float, float], BarTransfer] = {}
-    transfers = {}
-    for name, bar in bars.items():
-        kind = (float(bar.radius_m), float(bar.wave_speed_m_s), float(bar.poisson_ratio))
-        if kind not in solved:
-            solved[kind] = bar_transfer(bar, grid.interval_s, length, low_pass, settings.dispersion)
-        transfers[name] = solved[kind]
-    return transfers
 
 
 def _common_grid(pulses: Pulses, rig: Rig) -> Grid:

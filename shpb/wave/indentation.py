@@ -22,12 +22,17 @@ _K_RIGID = np.array(
 )  # fmt: skip
 
 
+def indentation_factor(radius_ratio: FloatArray, *, rigid: bool = False) -> FloatArray:
+    """K at specimen radius by bar radius, shape of ``radius_ratio``; zero where the specimen fills the bar."""
+    factor: FloatArray = np.interp(radius_ratio, _RADIUS_RATIO, _K_RIGID if rigid else _K_UNIFORM)
+    return factor
+
+
 def face_indentation_m(
     force_n: FloatArray, specimen_radius_m: FloatArray, bar: Bar, *, rigid: bool = False
 ) -> FloatArray:
     """Mean indentation of one bar face [m], shape of ``force_n``; zero where the specimen fills the bar."""
-    ratio = np.minimum(specimen_radius_m / bar.radius_m, 1.0)
-    factor = np.interp(ratio, _RADIUS_RATIO, _K_RIGID if rigid else _K_UNIFORM)
+    factor = indentation_factor(specimen_radius_m / bar.radius_m, rigid=rigid)
     stiffness = bar.young_modulus_pa / (1 - bar.poisson_ratio**2)
     indentation: FloatArray = factor * force_n / (stiffness * specimen_radius_m)
     return indentation

@@ -105,15 +105,27 @@ class BarTransfer:
     velocity_factor: FloatArray | None  # surface strain to v/c0
 
     def carry(
-        self, strain: FloatArray, start_s: float, grid: Grid, distance_m: float, shift_s: float = 0.0
+        self,
+        strain: FloatArray,
+        start_s: float,
+        grid: Grid,
+        distance_m: float,
+        shift_s: float = 0.0,
+        chain: FloatArray | None = None,
     ) -> CarriedPulse:
-        """Carry one windowed pulse; arguments as in :func:`carry_pulse`."""
+        """Carry one windowed pulse; arguments as in :func:`carry_pulse`.
+
+        ``chain`` is the gain of the recording chain at ``frequency_hz``, to be undone.
+        """
         delay = start_s + distance_m / self.bar.wave_speed_m_s + shift_s - grid.start_s
         whole = int(np.floor(delay / self.interval_s))
         rest = delay - whole * self.interval_s
         spectrum = np.fft.rfft(strain, self.length)
         phase = -2j * np.pi * self.frequency_hz * (rest + distance_m * self.slowness_s_m)
-        passed = spectrum[: self.frequency_hz.size] * (self.low_pass.gain(self.frequency_hz) * np.exp(phase))
+        gain = self.low_pass.gain(self.frequency_hz)
+        if chain is not None:
+            gain = gain / chain
+        passed = spectrum[: self.frequency_hz.size] * (gain * np.exp(phase))
 
         def on_grid(factor: FloatArray | None) -> FloatArray:
             carried = np.zeros_like(spectrum)

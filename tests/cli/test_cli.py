@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import re
 import shutil
 import subprocess
 import sys
@@ -125,27 +126,46 @@ def test_json(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
     assert first["verdict"] == "accept"
     assert first["files"] == [str(lab / "results" / "H-01.h5")]
     assert "swapped" in json.dumps(swapped["error"])
+    assert data["repeats"] == []  # no two shots of this list are the same test
 
 
 def test_choices_reach_the_reduction(lab: Path) -> None:
     sheet = lab / "records" / "W-02.toml"
     run(
         "reduce", sheet, "--figure", "none", "--dispersion", "full", "--alignment", "feet", "--analysis", "three-wave",
-        "--cutoff-khz", "90",
+        "--cutoff-khz", "90", "--corrections", "indentation,bar-mismatch",
     )  # fmt: skip
     settings = shpb.load(lab / "records" / "results" / "W-02.h5").settings
     assert (settings.dispersion.value, settings.alignment.value, settings.analysis.value, settings.cutoff_hz) == (
         "full", "feet", "three-wave", 90e3,
     )  # fmt: skip
+    assert [correction.value for correction in settings.corrections] == ["indentation", "bar-mismatch"]
+
+
+def test_repeats_are_compared_below_the_list(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    sheets = [lab / "records" / f"{name}.toml" for name in ("W-01", "W-02", "W-04", "W-09")]
+    assert run("reduce", *sheets, "--figure", "none", "--workers", "1") == 0
+    said = re.sub(r"\s+", " ", capsys.readouterr().out)
+    assert re.search(r"repeats: W-02, W-04, W-09 \([^)]*compression, 293 K, 15\d\d /s\): agree\.", said)
+    # The diameter of one misread by 0.7 of 12 mm: 12 % of area and stress, and the others name it.
+    text = sheets[2].read_text()
+    size = re.search(r"diameter_mm = \{ value = ([\d.]+)", text)
+    assert size is not None
+    sheets[2].write_text(text.replace(size[0], size[0].replace(size[1], f"{float(size[1]) - 0.7:.3f}")))
+    run("reduce", *sheets[1:], "--figure", "none", "--json", "--workers", "1")
+    (group,) = json.loads(capsys.readouterr().out)["repeats"]
+    assert group["shot_ids"] == ["W-02", "W-04", "W-09"]
+    assert [one["shot_ids"] for one in group["disagreements"]] == [["W-04"]]
 
 
 def test_settings_in_rig_file_and_sheet(lab: Path) -> None:
     sheet, rig = lab / "records" / "W-02.toml", lab / "calibration" / "bench_1.toml"
-    rig.write_text(rig.read_text() + "\n[settings]\ncutoff_kHz = 100.0\nequilibrium_limit = 0.06\n")
+    assert rig.read_text().rstrip().splitlines()[-2] == "[settings]"  # the demo rig ends with its settings
+    rig.write_text(rig.read_text() + "cutoff_kHz = 100.0\n[limits]\nequilibrium = 0.06\n")
     sheet.write_text(sheet.read_text() + "\n[settings]\ncutoff_kHz = 80.0\n")
     run("reduce", sheet, "--figure", "none")
     settings = shpb.load(lab / "records" / "results" / "W-02.h5").settings
-    assert (settings.cutoff_hz, settings.equilibrium_limit) == (80e3, 0.06)
+    assert (settings.cutoff_hz, settings.limits.equilibrium) == (80e3, 0.06)
 
 
 # --- bad input ---------------------------------------------------------------------------------

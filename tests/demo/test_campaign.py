@@ -85,6 +85,24 @@ def test_voltages_show_the_pulses_where_truth_has_them(campaign: DemoCampaign) -
             assert rms < (0.02 if shot.shot.peak_to_noise_db < 45 else 0.01), shot.shot.shot_id
 
 
+def test_the_two_gauges_of_a_bench_are_not_interchangeable(campaign: DemoCampaign) -> None:
+    # Taking one for the other must show: 64 % on bench 1, 5 % on bench 2.
+    for path in campaign.rig_files:
+        rig = read_rig(path)
+        factors = sorted((rig.incident_gauge.gauge_factor, rig.transmitted_gauge.gauge_factor))
+        assert factors[1] / factors[0] > 1.05
+
+
+def test_the_scope_ranges_are_well_used(campaign: DemoCampaign) -> None:
+    sheets = sheets_of(campaign)
+    for shot in campaign.shots:
+        if shot.shot.expected is Expected.GOOD:
+            record = read_record(sheets[shot.shot.shot_id].record_files, read_rig(shot.rig_file).record)
+            peaks = np.abs(record.voltage_v).max(axis=1)
+            assert (peaks > 0.2 * 5.0).all(), shot.shot.shot_id
+            assert (peaks < 0.9 * 5.0).all(), shot.shot.shot_id
+
+
 @pytest.mark.parametrize(("shot_id", "ratio"), [("W-01", 54.0), ("W-04", 40.0), ("W-05", 20.0)])
 def test_noise_is_as_the_shot_says(campaign: DemoCampaign, shot_id: str, ratio: float) -> None:
     shot = next(s for s in campaign.shots if s.shot.shot_id == shot_id)

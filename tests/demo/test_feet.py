@@ -89,9 +89,10 @@ def root_mean_square(values: np.ndarray) -> np.ndarray:
 def test_feet_are_right_to_the_samples_required(decibel: int, interval_us: float, samples: float) -> None:
     errors = campaign_errors(decibel, interval_us)[..., 0]
     assert (root_mean_square(errors) <= samples).all(), root_mean_square(errors)
-    # No pulse is picked early or late as a rule, and none is lost: three times the tolerance and a little.
+    # No pulse is picked early or late as a rule, and none is lost: the worst of some 200 picks is within three and a
+    # half times the tolerance.
     assert (np.abs(errors.mean(axis=0)) < samples / 2).all(), errors.mean(axis=0)
-    assert np.abs(errors).max() < 3.3 * samples
+    assert np.abs(errors).max() < 3.5 * samples
 
 
 def test_finer_sampling_of_a_very_noisy_record_is_no_worse_in_time() -> None:

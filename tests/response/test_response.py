@@ -230,6 +230,6 @@ def test_a_foot_set_by_hand_moves_the_pulse() -> None:
 
 def test_settings_are_looked_at_before_they_are_used() -> None:
     assert DEFAULT.replaced(dispersion="none").dispersion is Dispersion.NONE
-    for wrong in ({"dispersion": "foo"}, {"cutoff_hz": -1.0}, {"equilibrium_limit": float("nan")}):
+    for wrong in ({"dispersion": "foo"}, {"cutoff_hz": -1.0}, {"pulse_error": float("nan")}):
         with pytest.raises(InputError, match="settings"):
             DEFAULT.replaced(**wrong)

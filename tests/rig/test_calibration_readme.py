@@ -7,11 +7,13 @@ from pathlib import Path
 
 import pytest
 
+from shpb.docs import blocks, refreshed
 from shpb.errors import InputError
-from shpb.rig.docs import refreshed
+from shpb.limits import LIMIT_FACTS, key_of
 from shpb.rig.rig_file import rig_from_text
 from shpb.rig.sheet_file import check_sheet_fits_rig, sheet_from_text
 from shpb.rig.shot_list import shot_list_from_text
+from shpb.trust.judge import all_checks
 
 README = (Path(__file__).parents[2] / "calibration" / "README.md").read_text(encoding="utf-8")
 
@@ -21,7 +23,21 @@ def _example(name: str) -> str:
 
 
 def test_the_key_tables_are_those_of_the_code():
-    assert refreshed(README) == README, "run: python -m shpb.rig.docs calibration/README.md"
+    assert refreshed(README) == README, "run: python -m shpb.docs calibration/README.md"
+
+
+def test_the_table_of_checks_holds_every_check_with_its_keys() -> None:
+    rows = [line.split(" | ") for line in blocks()["checks"].splitlines()[2:]]
+    assert [row[0].removeprefix("| ") for row in rows] == [check.name for check in all_checks()]
+    overlap = next(row for row in rows if row[0] == "| overlap")
+    assert overlap[1:] == [
+        "The incident pulse must have died away before the reflected one begins",
+        "`overlap` 2 %",
+        "common practice",
+        "reject |",
+    ]
+    text = " ".join(row[2] for row in rows)
+    assert set(re.findall(r"`(\w+)`", text)) == {key_of(name) for name in LIMIT_FACTS} - {"repeat_scatter"}
 
 
 def test_a_missing_table_is_noticed():

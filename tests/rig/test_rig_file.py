@@ -14,6 +14,7 @@ from pathlib import Path
 import pytest
 
 from shpb.errors import FileMistakes, InputError
+from shpb.limits import Limits
 from shpb.quantity import Quantity
 from shpb.rig.gauge import Arrangement, TestKind
 from shpb.rig.overrides import hints_for, settings_for
@@ -134,17 +135,22 @@ def test_the_striker_is_as_the_incident_bar_where_nothing_is_said(rig_text):
 def test_settings_and_hints_of_the_rig_and_of_the_sheet_are_merged(rig_text, sheet_text):
     rig = rig_from_text(
         rig_text(("[striker]", "[record]\nsample_interval_us = 0.2\ntime_unit = 'µs'\n"
-                  "[settings]\ncutoff_kHz = 120\nnoise_limit = 0.06\ndispersion = 'full'\n[striker]")), "r"
+                  "[settings]\ncutoff_kHz = 120\ndispersion = 'full'\n[limits]\nnoise = 0.06\noverlap = 0.03\n[striker]")), "r"
     )  # fmt: skip
     sheet = sheet_from_text(
         sheet_text(("[specimen]", "[record]\nsample_interval_us = 0.1\n"
-                    "[settings]\nnoise_limit = 0.05\nincident_window_us = [-10, 150]\ncutoff_kHz = 'automatic'\n[specimen]")),
+                    "[settings]\nincident_window_us = [-10, 150]\ncutoff_kHz = 'automatic'\n[limits]\nnoise = 0.05\nmisalignment_us = 4\n[specimen]")),
         "s", "lab",
     )  # fmt: skip
     settings = settings_for(rig, sheet)
-    assert (settings.noise_limit, settings.dispersion.value, settings.cutoff_hz) == (0.05, "full", None)
+    assert (settings.dispersion.value, settings.cutoff_hz) == ("full", None)
+    assert settings.limits == Limits(noise=0.05, overlap=0.03, misalignment_s=4e-6)
     assert settings.incident_window_s == pytest.approx((-10e-6, 150e-6))
-    assert rig.settings == {"cutoff_hz": 120e3, "noise_limit": 0.06, "dispersion": "full"}
+    assert rig.settings == {
+        "cutoff_hz": 120e3,
+        "dispersion": "full",
+        "limits": {"noise": 0.06, "overlap": 0.03},
+    }
     hints = hints_for(rig, sheet)
     assert hints.sample_interval_s == pytest.approx(0.1e-6)
     assert hints.time_unit == "us"
@@ -363,3 +369,12 @@ def test_reading_files_loads_no_numpy():
 def test_mistakes_are_input_errors(error, rig_text):
     with pytest.raises(error):
         rig_from_text(rig_text(("gain = 500", "gain = 0")), "rig.toml")
+
+
+def test_a_bar_that_softens_when_hot(rig_text, rig_mistakes):
+    pair = ("wave_speed_m_s = 5000", "wave_speed_m_s = 5000\nmodulus_temperature_coefficient_per_K = -3.5e-4")
+    rig = rig_from_text(rig_text(pair), "r")
+    assert rig.incident_bar.modulus_temperature_coefficient_per_k == -3.5e-4
+    assert rig.transmitted_bar.modulus_temperature_coefficient_per_k is None
+    (found,) = rig_mistakes((pair[0], pair[1].replace("-3.5e-4", "-350")))
+    assert "expected a number in 1/K, -0.02 to 0.02 1/K. Steels lie between" in str(found)

@@ -9,10 +9,12 @@ from enum import StrEnum
 import pytest
 
 from shpb.errors import FileMistakes, InputError
+from shpb.limits import LIMIT_FACTS, Limits
 from shpb.rig.key import Kind
 from shpb.rig.overrides import settings_from
-from shpb.rig.setting_keys import FACTS, SETTING_KEYS, setting_key
-from shpb.settings import DEFAULT, Settings
+from shpb.rig.setting_keys import FACTS, LIMIT_KEYS, SETTING_KEYS, setting_key
+from shpb.rig.shot_list import shot_list_from_text
+from shpb.settings import DEFAULT, Correction, Settings
 
 
 class Colour(StrEnum):
@@ -21,11 +23,16 @@ class Colour(StrEnum):
 
 
 def test_every_field_has_a_key_and_a_meaning():
-    fields = [field.name for field in dataclasses.fields(Settings)]
+    fields = [field.name for field in dataclasses.fields(Settings) if field.name != "limits"]
     assert [key.field for key in SETTING_KEYS] == fields
     assert sorted(FACTS) == sorted(fields), (
         "describe every field of Settings in shpb/rig/setting_keys.py, no others"
     )
+    assert [key.field for key in LIMIT_KEYS] == [field.name for field in dataclasses.fields(Limits)]
+    for name, fact in LIMIT_FACTS.items():
+        assert fact.low < getattr(Limits(), name) < fact.high, name
+        assert fact.meaning, name
+        assert fact.source, name
 
 
 @pytest.mark.parametrize(
@@ -46,6 +53,7 @@ def test_every_field_has_a_key_and_a_meaning():
         ("names", tuple[str, ...], ("a",), ("names", Kind.TEXTS, 1.0)),
         ("label", str, "x", ("label", Kind.TEXT, 1.0)),
         ("colour", Colour, Colour.RED, ("colour", Kind.CHOICE, 1.0)),
+        ("colours", tuple[Colour, ...], (Colour.RED,), ("colours", Kind.CHOICES, 1.0)),
     ],
 )  # fmt: skip
 def test_the_rule_that_turns_a_field_into_a_key(name, hint, default, expected):
@@ -53,7 +61,7 @@ def test_the_rule_that_turns_a_field_into_a_key(name, hint, default, expected):
     assert (made.name, made.kind, made.units[0].factor) == expected
     assert made.automatic == (default is None)
     assert made.example  # something to put into the template
-    if made.kind is Kind.CHOICE:
+    if made.kind in {Kind.CHOICE, Kind.CHOICES}:
         assert made.choices == ("red", "blue")
 
 
@@ -89,8 +97,14 @@ def test_settings_from_takes_fields_in_si_or_keys_in_peoples_units():
 
 def test_settings_from_tells_all_mistakes():
     with pytest.raises(FileMistakes) as caught:
-        settings_from({"cutof_kHz": 3, "dispersion": "fulll", "cutoff_hz": -1.0, "flow_strains": "many"})
-    assert [m.key for m in caught.value.mistakes] == ["cutof_kHz", "dispersion", "cutoff_hz", "flow_strains"]
+        settings_from(
+            {"cutof_kHz": 3, "dispersion": "fulll", "cutoff_hz": -1.0, "flow_strains": "many",
+             "limits": {"overlapp": 0.1, "noise": 7}}
+        )  # fmt: skip
+    assert [m.key for m in caught.value.mistakes] == [
+        "cutof_kHz", "dispersion", "cutoff_hz", "flow_strains", "limits.overlapp", "limits.noise",
+    ]  # fmt: skip
+    assert "Did you mean overlap?" in str(caught.value)
     assert "Did you mean cutoff_kHz?" in str(caught.value)
     assert 'Did you mean "full"?' in str(caught.value)
 
@@ -100,5 +114,67 @@ def test_a_refusal_of_settings_itself_is_told_as_a_mistake_of_the_file(monkeypat
         raise InputError("hum is 3 Hz", mend="Give 50 or 60")
 
     monkeypatch.setattr(Settings, "replaced", refuse)
-    (found,) = sheet_mistakes(("[specimen]", "[settings]\nequilibrium_limit = 0.1\n[specimen]"))
-    assert str(found) == "shot.toml: settings.equilibrium_limit: found hum is 3 Hz, expected Give 50 or 60"
+    (found,) = sheet_mistakes(("[specimen]", "[settings]\npulse_error = 0.1\n[specimen]"))
+    assert str(found) == "shot.toml: settings.pulse_error: found hum is 3 Hz, expected Give 50 or 60"
+
+
+def test_limits_are_refused_outside_their_range_wherever_they_come_from(sheet_mistakes):
+    (found,) = sheet_mistakes(("[specimen]", "[limits]\nmisalignment_us = 4000\n[specimen]"))
+    assert str(found).startswith(
+        "shot.toml: limits.misalignment_us: found 4000 µs, expected a number in µs, 0.01 to 1000"
+    )
+    (found,) = sheet_mistakes(("[specimen]", "[limits]\noverlp = 0.1\n[specimen]"))
+    assert "Did you mean overlap?" in str(found)
+    for wrong in (0.0, -0.02, float("nan"), True, "2"):
+        with pytest.raises(InputError, match=r"limits.overlap: found .* Give a number from 0.0001 to 1"):
+            Limits(overlap=wrong)
+    with pytest.raises(InputError, match="settings.limits"):
+        Settings(limits={"overlap": 0.1})
+
+
+def test_limits_of_a_row_of_the_shot_list():
+    head = "shot_id,kind,record,material,diameter_mm,length_mm"
+    (sheet,) = shot_list_from_text(
+        f"{head},limit_noise,limit_misalignment_us,corrections\n"
+        "1,tension,r,m,9,5,0.03,4,indentation | friction\n",
+        "l", ".",
+    )  # fmt: skip
+    settings = settings_from(sheet.overrides)
+    assert settings.limits == Limits(noise=0.03, misalignment_s=4e-6)
+    assert settings.corrections == (Correction.INDENTATION, Correction.FRICTION)
+
+
+@pytest.mark.parametrize(
+    ("written", "meant"),
+    [
+        (["indentation", "friction"], (Correction.INDENTATION, Correction.FRICTION)),
+        ("indentation, friction", (Correction.INDENTATION, Correction.FRICTION)),  # as on a command line
+        ("heating", (Correction.HEATING,)),
+        ([], ()),
+        ("none", ()),
+    ],
+)
+def test_a_list_of_choices(written, meant):
+    assert settings_from({"corrections": written}).corrections == meant
+    assert all(isinstance(one, Correction) for one in settings_from({"corrections": written}).corrections)
+
+
+@pytest.mark.parametrize(
+    ("written", "told"),
+    [
+        (["indentatoin"], 'found "indentatoin", expected a list of any of "indentation", "inertia"'),
+        (["friction", "friction"], 'found "friction" twice, expected each at most once'),
+        (3, "found 3, expected a list of any of"),
+        ([["friction"]], "found a list of 1, expected a list of any of"),
+    ],
+)
+def test_a_list_of_choices_is_checked(written, told):
+    with pytest.raises(FileMistakes) as caught:
+        settings_from({"corrections": written})
+    assert told in str(caught.value)
+
+
+@pytest.mark.parametrize("wrong", [("friction", "friction"), ("frictoin",), "friction", 3])
+def test_settings_refuse_such_corrections_too(wrong):
+    with pytest.raises(InputError, match="Give each at most once, in a list: indentation, inertia"):
+        Settings(corrections=wrong)

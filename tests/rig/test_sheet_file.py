@@ -175,3 +175,27 @@ def test_a_sheet_is_the_same_from_its_stored_text(sheet_text):
     two = sheet_from_text(one.text, "shot.toml", "lab")
     assert repr(one) == repr(two)
     assert one.overrides["transmitted_window_s"] == pytest.approx((310.5e-6, 480.25e-6), rel=1e-14)
+
+
+def test_hot_shots_weighed_specimens_and_friction(sheet_text):
+    text = sheet_text(
+        ('record = "S-1.csv"', 'record = "S-1.csv"\ntemperature_C = 400\nincident_face_temperature_C = { value = 110, u = 5 }\n'
+         "transmitted_face_temperature_K = 373.15\nheated_length_mm = 80"),
+        ("length_mm = 6.0", "length_mm = 6.0\nmass_g = 4.2\nfriction_coefficient = 0.05"),
+    )  # fmt: skip
+    sheet = sheet_from_text(text, "shot.toml", "lab")
+    assert sheet.incident_face_temperature_k == pytest.approx(383.15)
+    assert sheet.incident_face_temperature_k.u == 5
+    assert sheet.transmitted_face_temperature_k == pytest.approx(373.15)
+    assert sheet.heated_length_m == pytest.approx(0.08)
+    assert sheet.specimen.mass_kg == pytest.approx(4.2e-3)
+    assert sheet.specimen.friction_coefficient == 0.05
+    plain = sheet_from_text(sheet_text(), "shot.toml", "lab")
+    assert plain.incident_face_temperature_k is plain.heated_length_m is plain.specimen.mass_kg is None
+
+
+def test_a_friction_coefficient_in_per_cent_is_refused(sheet_mistakes):
+    (found,) = sheet_mistakes(("length_mm = 6.0", "length_mm = 6.0\nfriction_coefficient = 5"))
+    assert str(found).startswith(
+        "shot.toml: specimen.friction_coefficient: found 5, expected a number, 0 to 0.5"
+    )

@@ -12,6 +12,7 @@ import numpy as np
 import pytest
 
 from shpb.errors import StoreError
+from shpb.limits import Limits
 from shpb.quantity import Quantity
 from shpb.record.record import Record, Source
 from shpb.reduction import ShotResult, reduce
@@ -52,7 +53,16 @@ def a_record() -> Record:
 
 
 @pytest.fixture(
-    scope="module", params=[DEFAULT, DEFAULT.replaced(dispersion=Dispersion.FULL, alignment=Alignment.FEET)]
+    scope="module",
+    params=[
+        DEFAULT,
+        DEFAULT.replaced(
+            dispersion=Dispersion.FULL,
+            alignment=Alignment.FEET,
+            corrections=(),
+            limits=Limits(noise=0.1 + 0.2),
+        ),
+    ],
 )
 def result(request: pytest.FixtureRequest) -> ShotResult:
     settings: Settings = request.param

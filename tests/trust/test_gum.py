@@ -441,3 +441,32 @@ def test_models_that_misbehave() -> None:
 def test_tolerance_of_nothing(u: float, digits: int) -> None:
     with pytest.raises(InputError, match="zero or more"):
         numerical_tolerance(u, digits)
+
+
+# --- inputs of many components
+
+
+def test_a_noise_is_one_input_of_many_components() -> None:
+    """Sum of n independent numbers of standard deviation s: s sqrt(n), whatever the chunks; beside a plain input."""
+    noise = Input("noise", 0.0, 0.5, components=16)
+
+    def total(values: Mapping[str, FloatArray]) -> FloatArray:
+        assert values["noise"].shape == (values["a"].size, 16)
+        return np.asarray(values["noise"].sum(axis=1) + values["a"])
+
+    one, other = (monte_carlo(total, [A, noise], draws=20_000, seed=2, chunk=chunk) for chunk in (64, 4096))
+    assert float(one.u) == pytest.approx(math.hypot(0.5 * 4, 0.3), rel=0.02)
+    assert float(one.mean) == pytest.approx(3.0, abs=0.05)
+    np.testing.assert_array_equal(one.values, other.values)
+
+
+def test_what_cannot_be_done_with_many_components() -> None:
+    with pytest.raises(InputError, match="'noise': it has 0 components"):
+        Input("noise", 0.0, 0.5, components=0)
+    noise = Input("noise", 0.0, 0.5, components=3)
+    with pytest.raises(InputError, match="'noise': it has 3 components"):
+        propagate({"noise": 1.0}, [noise])
+    with pytest.raises(InputError, match="it is correlated, and has 3 components"):
+        monte_carlo(lambda v: v["a"], [A, noise], {("a", "noise"): 0.5}, draws=300, seed=1)
+    with pytest.raises(InputError, match=r"the model is not finite at a = "):
+        monte_carlo(lambda v: v["a"] + np.where(v["a"] > 3, np.nan, 0), [A, noise], draws=300, seed=1)

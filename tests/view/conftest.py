@@ -16,6 +16,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
+from shpb.limits import Limits
 from shpb.pulse.bridge import strain_from_voltage
 from shpb.quantity import Quantity
 from shpb.record.record import Record, Source
@@ -80,7 +81,7 @@ def _rig(name: str) -> Rig:
     )  # fmt: skip
     return Rig(
         name=name, incident_bar=_bar(), transmitted_bar=_bar(), incident_gauge=_gauge("A"),
-        transmitted_gauge=_gauge("B"), striker=striker,
+        transmitted_gauge=_gauge("B"), striker=striker, calibration_date="2031-02-03",
     )  # fmt: skip
 
 
@@ -88,7 +89,7 @@ def _specimen(material: str) -> Specimen:
     return Specimen(
         material=material, diameter_m=Quantity(8e-3), length_m=Quantity(6e-3),
         young_modulus_pa=Quantity(MODULUS_PA), density_kg_m3=Quantity(2700.0),
-        length_after_m=Quantity(4.445e-3),
+        length_after_m=Quantity(4.445e-3), friction_coefficient=Quantity(0.03),
     )  # fmt: skip
 
 
@@ -157,7 +158,7 @@ def _shot(
         specimen = dataclasses.replace(specimen, young_modulus_pa=None)
     sheet = ShotSheet(
         shot_id=name, kind=kind, specimen=specimen, striker_speed_m_s=Quantity(15.0), remarks=name,
-        record_files=(Path(name.replace("/", "_")),),
+        record_files=(Path(name.replace("/", "_")),), date="2031-02-17",
     )  # fmt: skip
     return reduce(record, _rig(name), sheet, settings)
 
@@ -194,7 +195,7 @@ def shots(shot: Callable[..., ShotResult]) -> dict[str, ShotResult]:
     """Shots of every sort that the texts and the figure must cope with."""
     feet = Settings(dispersion=Dispersion.NONE, alignment=Alignment.FEET, analysis=Analysis.THREE_WAVE)
     by_hand = Settings(
-        incident_window_s=(-40e-6, 350e-6), reflected_foot_s=401e-6, equilibrium_late_strain=1e-4
+        incident_window_s=(-40e-6, 350e-6), reflected_foot_s=401e-6, limits=Limits(late_strain=1e-4)
     )
     return {
         "good": shot(),

@@ -352,7 +352,7 @@ def test_a_figure_needs_no_interactive_state() -> None:
     loaded = _modules_after(
         "import io; import shpb.view.figure as f; from matplotlib.figure import Figure\n"
         "from shpb.view.page import Page\n"
-        "with f._style():\n"
+        "with f.page_style():\n"
         "    g = Figure(); Page(g).text(1, 1, 'x'); g.savefig(io.BytesIO(), format='png')"
     )
     assert "matplotlib.figure" in loaded

@@ -11,7 +11,7 @@ import pytest
 from shpb.errors import FileMistakes, InputError, Mistake
 from shpb.pulse.front import UnusableShotError
 from shpb.reduction import ShotResult
-from shpb.trust.budget import OUTPUTS
+from shpb.trust.budget import ALL_OUTPUTS
 from shpb.view.summary import SCHEMA_VERSION, error_json, json_text, record_json, shot_json
 
 
@@ -75,7 +75,9 @@ def test_keys_with_a_dimension_carry_its_unit(shots: dict[str, ShotResult]) -> N
         "schema_version", "limit", "mean_ratio", "floor", "true_strain_at_start", "share_within", "nrms",
         "impulse_ratio", "reverberations", "variation", "slope", "from_true_strain", "to_true_strain",
         "at_strain", "indentation_strain", "noise_strain", "low_pass_cutoff_fa_c0", "u_strain_1w", "u_strain_3w",
-        *(f"of_{name}" for name in OUTPUTS),
+        "coverage_factor", "u_by_all_sources", "interval", "greatest_strain_off",
+        "misfit", "expected_misfit", "scale", "excess_standard_uncertainties",
+        *(f"of_{name}" for name in ALL_OUTPUTS),
     }  # fmt: skip
 
     def numbers(value: object, key: str = "") -> None:

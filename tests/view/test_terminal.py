@@ -9,9 +9,12 @@ from collections.abc import Callable
 
 import pytest
 
+from shpb.limits import Limits
 from shpb.reduction import ShotResult, reduce
 from shpb.response.equilibrium import R_DEFINITION
+from shpb.view.summary import shot_json
 from shpb.view.terminal import record_text, shot_text
+from shpb.view.wording import processing_words
 
 
 @pytest.mark.parametrize("full", [False, True])
@@ -32,14 +35,16 @@ def test_the_verdict_comes_first_in_words(shots: dict[str, ShotResult]) -> None:
     span = shots["good"].response.strain_span
     assert span is not None
     assert good.startswith(f"ACCEPT  The shot counts from true strain {span[0]:.4f} to {span[1]:.3f}.\n")
-    assert bad.startswith("REJECT  The shot does not count. Against it: force equilibrium not reached.\n")
+    assert re.sub(r"\s+", " ", bad).startswith(
+        "REJECT The shot does not count. Against it: momentum balance, force equilibrium not reached."
+    )
     # The reason comes before any number, with what to do.
     assert bad.index("Use a pulse shaper") < bad.index("Strain rate")
 
 
 def test_a_late_equilibrium_restricts(shots: dict[str, ShotResult]) -> None:
     feet = shots["feet"]
-    late = dataclasses.replace(feet.settings, equilibrium_late_strain=0.01)
+    late = feet.settings.replaced(limits=Limits(late_strain=0.01))
     result = reduce(feet.record, feet.rig, feet.sheet, late)
     first = shot_text(result).splitlines()[0]
     assert re.fullmatch(r"RESTRICT  The shot counts only from true strain 0\.0\d+ to 0\.31\d\.", first)
@@ -129,3 +134,17 @@ def test_a_record_is_described_in_80_columns(shots: dict[str, ShotResult]) -> No
     # The incident pulse, 0.0015 high, on half a bridge of factor 2.1 with 5 V and gain 100: below zero.
     peak = 0.0015 * 2.1 * 5.0 / 2 * 100
     assert re.search(rf"^Channel 1 +A\\x1b\[2J, -{peak:.3f} V to 0\.\d+ V$", text, re.MULTILINE)
+
+
+def test_limits_of_this_lab_are_said_without_asking_for_more(shots: dict[str, ShotResult]) -> None:
+    good = shots["good"]
+    assert "limits set by this lab" not in shot_text(good, full=True)
+    own = good.settings.replaced(limits=Limits(overlap=0.03, misalignment_s=4e-6))
+    result = reduce(good.record, good.rig, good.sheet, own)
+    short, full = (re.sub(r"\s+", " ", shot_text(result, full=more)) for more in (False, True))
+    assert "limits set by this lab: overlap 3 % (usual 2 %), misalignment 4 us (usual 3 us)." in short
+    assert "source: set by this lab (usual: 2 %, common practice) ([limits] overlap)" in full
+    assert "overlap 3 % (usual 2 %)" in processing_words(result)  # as the figure shows them too
+    many = good.settings.replaced(limits=Limits(overlap=0.03, noise=0.03, work=0.1, bending=0.2, striker=0.1))
+    assert processing_words(reduce(good.record, good.rig, good.sheet, many)).endswith("and 1 more")
+    assert shot_json(result)["limits_set_by_lab"]["overlap"] == {"limit": 0.03, "usual": 0.02}

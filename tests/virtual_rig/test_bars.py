@@ -46,7 +46,7 @@ def test_transmitted_against_incident_bars_together(together: VirtualShot) -> No
     specimen = together.sheet.specimen
     strain = gauge_strain(together.record, together.rig, together.sheet.kind)
     pulses = find_pulses(strain, together.rig, specimen, DEFAULT)
-    faces = carry_to_faces(pulses, together.rig, specimen, DEFAULT)
+    faces = carry_to_faces(pulses, together.rig, together.sheet, DEFAULT)
     incident, transmitted = faces.incident.strain, faces.transmitted.strain
     # While the bars are pressed together: later the tensile overshoot of the trailing edge parts them.
     pulse = (faces.time_s > -10e-6) & (faces.time_s < 135e-6)
@@ -63,7 +63,7 @@ def test_plateau_is_half_the_striker_speed_by_c0(together: VirtualShot) -> None:
     # (data/README.md).
     strain = gauge_strain(together.record, together.rig, together.sheet.kind)
     pulses = find_pulses(strain, together.rig, together.sheet.specimen, DEFAULT)
-    faces = carry_to_faces(pulses, together.rig, together.sheet.specimen, DEFAULT)
+    faces = carry_to_faces(pulses, together.rig, together.sheet, DEFAULT)
     # Middle of a plateau of 2 x 0.35 m/c0 = 136 us.
     plateau = faces.incident.strain[(faces.time_s > 40e-6) & (faces.time_s < 105e-6)].mean()
     assert plateau * 2 * together.c0 / 10.0 == pytest.approx(0.998, abs=0.004)

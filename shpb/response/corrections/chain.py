@@ -1,0 +1,80 @@
+"""The corrections of one shot in their order: what each would change, and the curves after those that are applied."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import replace
+from typing import NamedTuple
+
+import numpy as np
+
+from shpb.arrays import FloatArray, frozen
+from shpb.response.bar_analysis import Curve, FaceMotion, curve_from
+from shpb.response.corrections.correction import Curves, Loading, Off, Report
+from shpb.response.corrections.friction import friction
+from shpb.response.corrections.heating import heating, heating_k
+from shpb.response.corrections.indentation import indentation
+from shpb.response.corrections.inertia import inertia
+from shpb.response.corrections.rig_side import bar_mismatch, bar_temperature, gauge_rise
+from shpb.rig.gauge import TestKind
+from shpb.rig.rig import Rig
+from shpb.rig.sheet import ShotSheet
+from shpb.settings import Settings
+from shpb.wave.faces import FacePulses
+
+# Strain first, because radius and length follow from it; then what inertia and friction have added to the stress;
+# heat last, because it is made by the specimen's own stress.
+_ON_THE_CURVES: tuple[Callable[[Loading], Report], ...] = (indentation, inertia, friction, heating)
+
+
+class Corrected(NamedTuple):
+    """Curves after the corrections that are applied, and what each correction did or would have done."""
+
+    curves: Curves
+    reports: tuple[Report, ...]
+    heating_k: FloatArray | None  # temperature rise along the three-wave curve
+
+
+def correct(
+    faces: FacePulses,
+    motion: FaceMotion,
+    curves: Curves,
+    rig: Rig,
+    sheet: ShotSheet,
+    loading: tuple[int, int],
+    settings: Settings,
+) -> Corrected:
+    """Work out every correction, and apply those that the settings switch on and that hold for this shot."""
+    shot = Loading(faces=faces, motion=motion, curves=curves, rig=rig, sheet=sheet, loading=loading)
+
+    def asked(report: Report) -> Report:
+        return replace(report, switched_on=report.correction in settings.corrections)
+
+    reports = [
+        asked(one) for one in (gauge_rise(rig, faces.low_pass), bar_temperature(shot), bar_mismatch(shot))
+    ]
+    warm = None
+    for step in _ON_THE_CURVES:
+        if step is heating:
+            warm = heating_k(shot, shot.curves.three_wave)
+        report = asked(step(shot))
+        for array in report.off:
+            if isinstance(array, np.ndarray):
+                frozen(array)
+        reports.append(report)
+        if report.applied:
+            shot = replace(shot, curves=taken_off(shot.curves, report.off, faces.interval_s, sheet.kind))
+    return Corrected(shot.curves, tuple(reports), warm)
+
+
+def taken_off(curves: Curves, off: Off, interval_s: float, kind: TestKind) -> Curves:
+    """The three curves less a correction."""
+    stresses = (off.stress_1w_pa, off.stress_2w_pa, off.stress_3w_pa)
+    rate = np.gradient(off.strain, interval_s) if isinstance(off.strain, np.ndarray) else 0.0
+
+    def less(curve: Curve, stress: FloatArray | float) -> Curve:
+        return curve_from(
+            curve.strain_rate_per_s - rate, curve.strain - off.strain, curve.stress_pa - stress, kind
+        )
+
+    return Curves(*(less(curve, stress) for curve, stress in zip(curves, stresses, strict=True)))

@@ -1,0 +1,312 @@
+"""What makes a shot uncertain: every source with its size, whom it belongs to, and what it acts on.
+
+One list serves both ways of propagation. The linear budget (:mod:`shpb.trust.budget`) asks what a small change of each
+quantity does to the curves; the draws (:mod:`shpb.trust.draws`) change all quantities at once, by any amount. A source
+acts on one or several of these quantities:
+
+strain of a pulse (relative), its zero level [1] and slope [1/s], its window, its white noise [1], its delay [s]; wave
+speed, density, diameter, gauge distance (relative) and Poisson's ratio of either bar; the specimen's diameter and
+length (relative); the band limit; the strain of the indentation (relative).
+
+Windows and band limit have no true value. Their lines say what another choice, as good as the one made, would have
+changed: both ends of a window drawn in by their soft length, and a cut-off lower by a fifth.
+
+References
+----------
+JCGM 100:2008 (GUM), 4.3.7 (limits: rectangular distribution), F.2.2.1 (resolution of a digital instrument).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from shpb.arrays import FloatArray
+from shpb.pulse.bridge import bridge_form
+from shpb.pulse.pulse import Pulse
+from shpb.rig.bar import Bar
+from shpb.rig.gauge import Arrangement, Gauge
+from shpb.settings import Alignment
+from shpb.trust.evidence import Evidence
+from shpb.trust.gum import Distribution
+
+PULSES = ("incident", "reflected", "transmitted")
+BARS = ("in", "out")  # the incident and the transmitted bar
+
+# Acted on by a factor (1 + change), so that several sources multiply; all else is added to.
+RELATIVE = frozenset(
+    (
+        *(f"strain_{pulse}" for pulse in PULSES),
+        *(f"{what}_{bar}" for what in ("speed", "density", "diameter", "distance") for bar in BARS),
+        "specimen_diameter",
+        "specimen_length",
+    )
+)
+
+# Where nobody has stated an uncertainty (common practice; relative standard uncertainties).
+ASSUMED = {
+    "gauge factor": 0.005,
+    "excitation": 0.001,
+    "gain": 0.002,
+    "density": 0.002,
+    "wave speed": 0.002,
+    "bar diameter": 0.0005,
+    "specimen diameter": 0.001,
+    "specimen length": 0.002,
+    "gauge distance": 0.001,
+    "Poisson's ratio": 0.03,
+}
+# Common practice: a cut-off may as well be a fifth lower.
+BAND_SHARE = 0.2
+# Common practice: the static indentation holds for a dynamic force within 15 %.
+INDENTATION_SHARE = 0.15
+_SAMPLES_FOR_A_STEP = 4096
+
+
+Way = tuple[tuple[str, float], ...]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Source:
+    """One source of uncertainty.
+
+    Attributes
+    ----------
+    name : str
+        Unique within a shot.
+    shared : bool
+        By all shots of the rig, or this shot's own.
+    assumed : bool
+        Nobody has stated it: the size is common practice.
+    u : float
+        Standard uncertainty of the quantity, in the unit of what it acts on; relative where that is.
+    acts : mapping of str to float
+        On what, and with which power (relative) or factor (else).
+    distribution : str
+        For the draws.
+    note : str
+        What a reader of the line should know besides.
+    """
+
+    name: str
+    shared: bool
+    u: float
+    acts: Mapping[str, float]
+    assumed: bool = False
+    distribution: Distribution = "normal"
+    note: str = field(default="")
+
+    @property
+    def way(self) -> Way:
+        """On what it acts, whatever its size: alike for sources that do the same."""
+        return tuple(sorted(self.acts.items()))
+
+
+def sources_of(evidence: Evidence) -> tuple[Source, ...]:
+    """Every source of one shot, also those that are zero here but would be looked for."""
+    return (
+        *_rig_sources(evidence),
+        *_specimen_sources(evidence),
+        *_pulse_sources(evidence),
+        *_feet(evidence),
+    )
+
+
+def laid_on_feet(evidence: Evidence) -> tuple[bool, bool]:
+    """Whether the reflected and the transmitted pulse were laid on the incident foot: no distance moves them then."""
+    if evidence.settings.alignment is not Alignment.FEET:
+        return False, False
+    faces = evidence.faces
+    return faces.reflected_misalignment_s is not None, faces.transmitted_misalignment_s is not None
+
+
+# --- the rig ---------------------------------------------------------------------------------------
+
+
+def _relative(value: float, name: str) -> tuple[float, bool]:
+    """Relative standard uncertainty of a quantity, and whether it had to be assumed."""
+    u = getattr(value, "u", None)
+    return (ASSUMED[name], True) if u is None else (u / abs(value) if value else 0.0, False)
+
+
+def _rig_sources(evidence: Evidence) -> Iterator[Source]:
+    rig = evidence.rig
+    yield from _gauge("incident", rig.incident_gauge, "in", PULSES[:2])
+    yield from _gauge("transmitted", rig.transmitted_gauge, "out", PULSES[2:])
+    if rig.incident_bar == rig.transmitted_bar or _one_stock(rig.incident_bar, rig.transmitted_bar):
+        # Bars of one stock: what was measured once acts on both.
+        yield from _bar(evidence, "bars", rig.incident_bar, BARS)
+    else:
+        yield from _bar(evidence, "incident bar", rig.incident_bar, BARS[:1])
+        yield from _bar(evidence, "transmitted bar", rig.transmitted_bar, BARS[1:])
+
+
+def _one_stock(a: Bar, b: Bar) -> bool:
+    names = ("material", "density_kg_m3", "wave_speed_m_s", "diameter_m", "poisson_ratio")
+    return all(getattr(a, name) == getattr(b, name) for name in names)
+
+
+def _gauge(side: str, gauge: Gauge, bar: str, pulses: tuple[str, ...]) -> Iterator[Source]:
+    """Strain is inverse to gauge factor, excitation and gain; the distance shifts pulses against each other."""
+    for name, value in (
+        ("gauge factor", gauge.gauge_factor),
+        ("excitation", gauge.excitation_v),
+        ("gain", gauge.gain),
+    ):
+        u, assumed = _relative(value, name)
+        acts = {f"strain_{pulse}": -1.0 for pulse in pulses}
+        yield Source(name=f"{side} {name}", shared=True, assumed=assumed, u=u, acts=acts)
+    u, assumed = _relative(gauge.to_specimen_m, "gauge distance")
+    acts = {f"distance_{bar}": 1.0}
+    yield Source(name=f"{side} gauge distance", shared=True, assumed=assumed, u=u, acts=acts)
+
+
+def _bar(evidence: Evidence, name: str, bar: Bar, sides: tuple[str, ...]) -> Iterator[Source]:
+    for what, key, value in (
+        ("density", "density", bar.density_kg_m3),
+        ("bar diameter", "diameter", bar.diameter_m),
+        ("wave speed", "speed", bar.wave_speed_m_s),
+    ):
+        u, assumed = _relative(value, what)
+        acts = {f"{key}_{side}": 1.0 for side in sides}
+        yield Source(
+            name=f"{name}: {what.removeprefix('bar ')}", shared=True, assumed=assumed, u=u, acts=acts
+        )
+    u, assumed = _relative(bar.poisson_ratio, "Poisson's ratio")
+    nu = float(bar.poisson_ratio)
+    acts = {f"poisson_{side}": 1.0 for side in sides}
+    for side, gauge, pulses in (
+        ("in", evidence.rig.incident_gauge, PULSES[:2]),
+        ("out", evidence.rig.transmitted_gauge, PULSES[2:]),
+    ):
+        # Transverse gauges: the bridge gives (1 + nu) times the axial strain.
+        if side in sides and gauge.arrangement in (Arrangement.HALF_POISSON, Arrangement.FULL_POISSON):
+            acts |= {f"strain_{pulse}": -1.0 / (1.0 + nu) for pulse in pulses}
+    yield Source(name=f"{name}: Poisson's ratio", shared=True, assumed=assumed, u=u * nu, acts=acts)
+
+
+# --- the shot's own ----------------------------------------------------------------------------------
+
+
+def _specimen_sources(evidence: Evidence) -> Iterator[Source]:
+    specimen = evidence.sheet.specimen
+    for name, value in (("diameter", specimen.diameter_m), ("length", specimen.length_m)):
+        u, assumed = _relative(value, f"specimen {name}")
+        acts = {f"specimen_{name}": 1.0}
+        yield Source(name=f"specimen {name}", shared=False, assumed=assumed, u=u, acts=acts)
+    acts = {"indentation": 1.0}
+    if _indentation_taken_off(evidence):
+        yield Source(name="indentation taken off", shared=False, u=INDENTATION_SHARE, acts=acts)
+    else:
+        yield Source(
+            name="indentation left in",
+            shared=False,
+            u=1 / np.sqrt(3),
+            acts=acts,
+            distribution="rectangular",
+            note="a known error to one side, of the size of the estimate",
+        )
+
+
+def _indentation_taken_off(evidence: Evidence) -> bool:
+    """Whether the curves have it: switched on, and not refused for this shot."""
+    for report in getattr(evidence.response, "corrections", ()):
+        if report.correction == "indentation":
+            return bool(report.applied)
+    return "indentation" in getattr(evidence.settings, "corrections", ())
+
+
+def _pulse_sources(evidence: Evidence) -> Iterator[Source]:
+    """What each pulse has on its own: linearity, bending and dispersion; zero line, window, noise and digits."""
+    error, interval = evidence.settings.pulse_error, evidence.pulses.sample_interval_s
+    for pulse in evidence.pulses:
+        name = pulse.name
+        for what, u, act in (
+            ("pulse", error, "strain"),
+            ("zero level", pulse.zero.u_level, "level"),
+            ("zero slope", pulse.zero.u_slope / interval, "slope"),
+        ):
+            yield Source(name=f"{name} {what}", shared=False, u=u, acts={f"{act}_{name}": 1.0})
+        yield Source(
+            name=f"{name} window", shared=False, u=1 / np.sqrt(3), acts={f"window_{name}": 1.0},
+            distribution="rectangular", note="both ends drawn in by up to their soft length",
+        )  # fmt: skip
+        yield from _digits_and_noise(evidence, pulse)
+    yield Source(
+        name="band limit",
+        shared=False,
+        u=1.0,
+        acts={"band": 1.0},
+        note=f"a cut-off {100 * BAND_SHARE:.0f} % lower",
+    )
+
+
+def _digits_and_noise(evidence: Evidence, pulse: Pulse) -> Iterator[Source]:
+    """Noise as measured holds the rounding of the digitiser, as long as it is more than half a step."""
+    step = _step_strain(evidence, pulse)
+    rounding = step / np.sqrt(12.0)
+    name = pulse.name
+    if pulse.noise >= 0.5 * step:
+        rest = float(np.sqrt(max(pulse.noise**2 - rounding**2, 0.0)))
+        note = "" if step else "the step of the digitiser is too small to be seen, and not stated"
+        yield Source(
+            name=f"{name} quantisation", shared=False, u=rounding, acts={f"noise_{name}": 1.0}, note=note
+        )
+    else:
+        # A quiet signal stays in one step: its rounding is the same from sample to sample, and no filter helps.
+        rest = pulse.noise
+        yield Source(
+            name=f"{name} quantisation", shared=False, u=rounding, acts={f"level_{name}": 1.0},
+            distribution="rectangular", note="noise below half a step: not white, one level through the pulse",
+        )  # fmt: skip
+    yield Source(name=f"{name} noise", shared=False, u=rest, acts={f"noise_{name}": 1.0})
+
+
+def _step_strain(evidence: Evidence, pulse: Pulse) -> float:
+    """One step of the digitiser as strain at the gauge; from range and bits, else from the record; 0 if unseen."""
+    at_incident = pulse.name != "transmitted"
+    rig, strain = evidence.rig, evidence.strain
+    gauge, bar, station = (
+        (rig.incident_gauge, rig.incident_bar, strain.incident)
+        if at_incident
+        else (rig.transmitted_gauge, rig.transmitted_bar, strain.transmitted)
+    )
+    if gauge.scope_range_v is not None and gauge.scope_bits is not None:
+        step = (gauge.scope_range_v[1] - gauge.scope_range_v[0]) / 2**gauge.scope_bits
+    else:
+        start = strain.index(pulse.window_s[0])
+        step = _least_step(station.voltage_v[0, start : start + _SAMPLES_FOR_A_STEP])
+    form = bridge_form(gauge.arrangement, bar.poisson_ratio)
+    per_volt = form.n / (form.B * gauge.effective_gauge_factor * gauge.excitation_v * gauge.gain)
+    # The mean of two channels rounds twice, independently.
+    return float(step * per_volt / np.sqrt(len(gauge.channels)))
+
+
+def _least_step(voltage_v: FloatArray) -> float:
+    """Smallest step between the values of a trace [V]; what is no more than rounding of decimals does not count."""
+    steps = np.diff(np.unique(voltage_v))
+    steps = steps[steps > 1e-6 * max(float(np.ptp(voltage_v)), 1e-300)]
+    return float(steps.min()) if steps.size else 0.0
+
+
+def _feet(evidence: Evidence) -> Iterator[Source]:
+    """Only where pulses are laid on the incident foot: that foot moves both, the others their own pulse."""
+    laid = dict(zip(PULSES[1:], laid_on_feet(evidence), strict=True))
+    moved = [name for name, is_laid in laid.items() if is_laid]
+    if not moved:
+        return
+    u_feet = _u_feet_s(evidence)
+    acts = {f"delay_{name}": -1.0 for name in moved}
+    yield Source(name="incident foot", shared=False, u=u_feet["incident"], acts=acts)
+    for name in moved:
+        yield Source(name=f"{name} foot", shared=False, u=u_feet[name], acts={f"delay_{name}": 1.0})
+
+
+def _u_feet_s(evidence: Evidence) -> dict[str, float]:
+    """Standard uncertainty of each foot at the face [s]: together as the faces have it, shared out as at the gauges."""
+    at_gauge = {p.name: 0.0 if p.foot is None else float(p.foot.u_time_s) for p in evidence.pulses}
+    together = float(np.sqrt(sum(u**2 for u in at_gauge.values())))
+    share = evidence.faces.u_misalignment_s / together if together > 0 else 0.0
+    return {name: u * share for name, u in at_gauge.items()}
