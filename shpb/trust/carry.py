@@ -20,7 +20,7 @@ from shpb.rig.gauge import TestKind
 from shpb.settings import Analysis, Correction
 from shpb.trust.changes import SCALES, IntArray, PulseChanges, Scene, scale_changes
 from shpb.trust.evidence import Evidence
-from shpb.trust.sources import PULSES, Way
+from shpb.trust.sources import PULSES, STRESS_CORRECTIONS, Way
 
 # Engineering curves of both analyses.
 OUTPUTS = ("stress_1w", "strain_rate_1w", "strain_1w", "stress_3w", "strain_rate_3w", "strain_3w")
@@ -60,6 +60,13 @@ class PerUnit(NamedTuple):
             float(specimen.area_m2),
             float(specimen.length_m),
         )
+
+
+_STRESS_CORRECTIONS = frozenset(which.value for which in STRESS_CORRECTIONS)
+
+
+def _at(change: FloatArray | float, at: IntArray) -> FloatArray | float:
+    return change if isinstance(change, float) else change[at]
 
 
 class Carrier:
@@ -104,6 +111,7 @@ class Carrier:
             pulses: list[FloatArray | float] = [0.0, 0.0, 0.0]
             by = dict.fromkeys(SCALES, 0.0)
             added_rate: FloatArray | float = 0.0
+            added: tuple[FloatArray | float, FloatArray | float] = (0.0, 0.0)
             for parameter, power in way:
                 for pulse, change in self.pulse_changes(parameter).items():
                     pulses[pulse] = pulses[pulse] + power * change
@@ -112,7 +120,12 @@ class Carrier:
                 if parameter == "indentation":
                     indentation = scene.evidence.response.indentation_strain[scene.at]
                     added_rate = -power * np.gradient(indentation, scene.interval_s)
+                elif parameter in _STRESS_CORRECTIONS:
+                    off = scene.evidence.response.correction(Correction(parameter)).off
+                    added = -power * _at(off.stress_1w_pa, scene.at), -power * _at(off.stress_3w_pa, scene.at)
             self._at_faces(rows, pulses, by, added_rate)
+            rows[0] += added[0]
+            rows[3] += added[1]
         self._along_time(out)
         return dict(zip(ways, out, strict=True))
 

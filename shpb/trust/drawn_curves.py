@@ -21,6 +21,7 @@ from shpb.settings import Analysis, Correction
 from shpb.trust.budget import Budget
 from shpb.trust.drawn_faces import Drawn, FaceStrains
 from shpb.trust.evidence import Evidence
+from shpb.trust.sources import STRESS_CORRECTIONS
 
 # Curves that draws give, in this order.
 CURVES = (
@@ -65,6 +66,14 @@ class DrawnCurves:
             return on_grid
 
         self._indentation = np.gradient(laid(response.indentation_strain), self._interval_s)
+        self._stress_off = {
+            report.correction.value: tuple(
+                laid(change) if isinstance(change, np.ndarray) else np.zeros(time_s.size)
+                for change in (report.off.stress_1w_pa, report.off.stress_3w_pa)
+            )
+            for report in response.corrections
+            if report.applied and report.correction in STRESS_CORRECTIONS
+        }
         one, three = response.one_wave, response.three_wave
         reduced = Faces(
             *(
@@ -130,12 +139,16 @@ class DrawnCurves:
                 closing_1w = closing_1w + force_out * by_z_out - speed_out * transmitted
         closing_3w = speed_in * (incident - reflected) - speed_out * transmitted
         added = drawn.sum("indentation") * self._indentation
+        stress_1w, stress_3w = force_out / area, 0.5 * (force_in + force_out) / area
+        for name, (off_1w, off_3w) in self._stress_off.items():
+            stress_1w = stress_1w - drawn.sum(name) * off_1w
+            stress_3w = stress_3w - drawn.sum(name) * off_3w
         return Faces(
             force_in,
             force_out,
-            force_out / area,
+            stress_1w,
             closing_1w / length - added,
-            0.5 * (force_in + force_out) / area,
+            stress_3w,
             closing_3w / length - added,
         )
 

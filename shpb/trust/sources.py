@@ -6,7 +6,7 @@ acts on one or several of these quantities:
 
 strain of a pulse (relative), its zero level [1] and slope [1/s], its window, its white noise [1], its delay [s]; wave
 speed, density, diameter, gauge distance (relative) and Poisson's ratio of either bar; the specimen's diameter and
-length (relative); the band limit; the strain of the indentation (relative).
+length (relative); the band limit; the strain of the indentation and the stress of every other correction (relative).
 
 Windows and band limit have no true value. Their lines say what another choice, as good as the one made, would have
 changed: both ends of a window drawn in by their soft length, and a cut-off lower by a fifth.
@@ -28,7 +28,7 @@ from shpb.pulse.bridge import bridge_form
 from shpb.pulse.pulse import Pulse
 from shpb.rig.bar import Bar
 from shpb.rig.gauge import Arrangement, Gauge
-from shpb.settings import Alignment
+from shpb.settings import Alignment, Correction
 from shpb.trust.evidence import Evidence
 from shpb.trust.gum import Distribution
 
@@ -62,6 +62,8 @@ ASSUMED = {
 BAND_SHARE = 0.2
 # Common practice: the static indentation holds for a dynamic force within 15 %.
 INDENTATION_SHARE = 0.15
+# Common practice, where such a correction is applied and the sheet does not say how well its input is known.
+STRESS_CORRECTIONS = {Correction.INERTIA: 0.2, Correction.FRICTION: 0.3, Correction.HEATING: 0.2}
 _SAMPLES_FOR_A_STEP = 4096
 
 
@@ -109,6 +111,7 @@ def sources_of(evidence: Evidence) -> tuple[Source, ...]:
     return (
         *_rig_sources(evidence),
         *_specimen_sources(evidence),
+        *_correction_sources(evidence),
         *_pulse_sources(evidence),
         *_feet(evidence),
     )
@@ -210,12 +213,22 @@ def _specimen_sources(evidence: Evidence) -> Iterator[Source]:
         )
 
 
+def _correction_sources(evidence: Evidence) -> Iterator[Source]:
+    """How well the corrections of stress are known, where they are applied; what is left in is only reported."""
+    mu = evidence.sheet.specimen.friction_coefficient
+    for report in evidence.response.corrections:
+        if not report.applied or report.correction not in STRESS_CORRECTIONS:
+            continue
+        u, assumed = STRESS_CORRECTIONS[report.correction], True
+        if report.correction is Correction.FRICTION and mu is not None and mu.u is not None and mu > 0:
+            u, assumed = mu.u / mu, False
+        name = report.correction.value
+        yield Source(name=f"{name} taken off", shared=False, assumed=assumed, u=u, acts={name: 1.0})
+
+
 def _indentation_taken_off(evidence: Evidence) -> bool:
     """Whether the curves have it: switched on, and not refused for this shot."""
-    for report in getattr(evidence.response, "corrections", ()):
-        if report.correction == "indentation":
-            return bool(report.applied)
-    return "indentation" in getattr(evidence.settings, "corrections", ())
+    return evidence.response.correction(Correction.INDENTATION).applied
 
 
 def _pulse_sources(evidence: Evidence) -> Iterator[Source]:
