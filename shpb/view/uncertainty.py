@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 from shpb.arrays import FloatArray
 from shpb.reduction import ShotResult
-from shpb.settings import Analysis
+from shpb.settings import Analysis, Correction
 from shpb.trust.budget import ALL_OUTPUTS, COVERAGE_FACTOR, Contribution
 from shpb.view.text import rounded, wrapped
 
@@ -58,6 +58,15 @@ def budget_lines(result: ShotResult, width: int, label: int) -> list[str]:
         for line in greatest
     )
     lines += wrapped(f"of the variance of stress: {shares}", width, " " * label)
+    left = [
+        f"{report.correction.value} {report.brief}"
+        for report in response.corrections
+        if report.correction in (Correction.INERTIA, Correction.FRICTION)
+        and report.brief
+        and not report.applied
+    ]
+    if left:
+        lines += wrapped(f"not in it, because left in the curve: {', '.join(left)}", width, " " * label)
     low, high = budget.interval("force_difference", response.equilibrium.ratio)
     ratio = response.equilibrium.ratio[middle]
     return lines + wrapped(

@@ -151,6 +151,56 @@ def test_faults_are_caught(campaign: DemoCampaign, shot_id: str, fault: str) -> 
     assert finding(result).weight in (Weight.NOTE, Weight.REJECT), worst(result)
 
 
+def bars_of_another_diameter(factor: float) -> Fault:
+    def fault(rig: Rig, sheet: ShotSheet) -> tuple[Rig, ShotSheet]:
+        bars = {
+            name: dataclasses.replace(
+                getattr(rig, name), diameter_m=Quantity(factor * getattr(rig, name).diameter_m)
+            )
+            for name in ("incident_bar", "transmitted_bar")
+        }
+        return dataclasses.replace(rig, **bars), sheet  # type: ignore[arg-type]
+
+    return fault
+
+
+def diameter_as_radius(rig: Rig, sheet: ShotSheet) -> tuple[Rig, ShotSheet]:
+    specimen = dataclasses.replace(sheet.specimen, diameter_m=Quantity(2 * sheet.specimen.diameter_m))
+    return rig, dataclasses.replace(sheet, specimen=specimen)
+
+
+def one_arm_too_many_on_both(rig: Rig, sheet: ShotSheet) -> tuple[Rig, ShotSheet]:
+    return one_arm_too_many("transmitted")(*one_arm_too_many("incident")(rig, sheet))
+
+
+@pytest.mark.parametrize(
+    ("fault", "named"),
+    [
+        (bars_of_another_diameter(0.5), "incident against striker"),
+        (bars_of_another_diameter(2.0), "incident against striker"),
+        (diameter_as_radius, "specimen mass"),
+        (one_arm_too_many_on_both, "incident against striker"),
+    ],
+    ids=[
+        "bars' radius as diameter",
+        "bars' diameter as radius",
+        "diameter as radius",
+        "an arm too many on both",
+    ],
+)
+@pytest.mark.parametrize("shot_id", ["W-03", "H-02", "H-03"])
+def test_what_scales_everything_is_for_other_checks(
+    campaign: DemoCampaign, shot_id: str, fault: Fault, named: str
+) -> None:
+    record, rig, sheet = load(campaign, shot_id)
+    settings = settings_for(rig, sheet)
+    rig, sheet = fault(rig, sheet)
+    rejecting = [
+        one.check for one in reduce(record, rig, sheet, settings).findings if one.weight is Weight.REJECT
+    ]
+    assert rejecting[0] == named  # the cause before what follows from it
+
+
 @pytest.mark.parametrize("shot_id", GOOD)
 def test_a_reflected_pulse_one_microsecond_late(
     campaign: DemoCampaign, shot_id: str, monkeypatch: pytest.MonkeyPatch

@@ -1,0 +1,158 @@
+"""The least-squares problem of a law and its points: search variables, residuals, slopes.
+
+Variables are the free parameters in units of their usual size (logarithms where a parameter spans orders of
+magnitude), then one relative scale error d for each shared error:
+
+    own residual     (measured - (1 + sum of d) law) / own uncertainty
+    shared residual  d / its relative uncertainty
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from shpb.arrays import BoolArray, FloatArray
+from shpb.merge.adiabatic import PathsOfPoints
+from shpb.merge.derivatives import differences
+from shpb.merge.least_squares import LeastSquaresFit, Problem, polish, summary, walk
+from shpb.merge.models.model import Model
+from shpb.merge.points import FlowPoints
+
+_LEAST = 1e-3  # of its usual size, for which a parameter's step is chosen where it is smaller
+_TOLERANCE = 1e-10  # of the variables
+_SCATTERED = 6
+_SEED = 1983
+
+
+class FitProblem:
+    """Residuals of a law at points, with some parameters held.
+
+    Parameters
+    ----------
+    model : Model
+    points : FlowPoints
+    base : float array, shape (parameters,)
+        Values of the held parameters, and a start for the free ones.
+    free : bool array, shape (parameters,)
+    widened : float
+        Factor on the own uncertainties.
+    """
+
+    def __init__(
+        self, model: Model, points: FlowPoints, base: FloatArray, free: BoolArray, widened: float = 1.0
+    ) -> None:
+        self.model, self.points, self.base, self.free = model, points, base, free
+        self.u_own_pa = widened * points.u_own_pa
+        self.members = np.array([e.members for e in points.shared], dtype=float).reshape(-1, len(points))
+        self.prior_u = np.array([e.relative_u for e in points.shared])
+        self.by_ratio = np.array([p.by_ratio for p in model.parameters])[free]
+        self.sizes = np.where(self.by_ratio, 1.0, model.sizes(points)[free])
+        self._paths = PathsOfPoints(model, points)
+        low, high = self._inward(model.lower[free]), self._inward(model.upper[free])
+        open_ended = np.full(self.prior_u.size, np.inf)
+        self.problem = Problem(
+            residuals=self.residuals,
+            lower=np.concatenate((low, -open_ended)),
+            upper=np.concatenate((high, open_ended)),
+            least=np.concatenate((np.full(self.count, _LEAST), self.prior_u)),
+            jacobian=self.slopes,
+        )
+
+    @property
+    def count(self) -> int:
+        """Number of free parameters."""
+        return int(self.free.sum())
+
+    def _inward(self, values: FloatArray) -> FloatArray:
+        ratio = np.where(self.by_ratio, np.maximum(values, 1e-300), 1.0)
+        return np.where(self.by_ratio, np.log(ratio), values / self.sizes)
+
+    def variables(self, parameters: FloatArray, errors: FloatArray | None = None) -> FloatArray:
+        """Search variables of full parameters and scale errors (none where None); shape (variables,)."""
+        scale_errors = np.zeros(self.prior_u.size) if errors is None else errors
+        return np.concatenate((self._inward(np.asarray(parameters)[self.free]), scale_errors))
+
+    def parameters(self, variables: FloatArray) -> FloatArray:
+        """Full parameters of search variables, shape (parameters,)."""
+        inner = variables[: self.count]
+        full = self.base.copy()
+        full[self.free] = np.where(
+            self.by_ratio, np.exp(np.where(self.by_ratio, inner, 0.0)), inner * self.sizes
+        )
+        return full
+
+    def per_variable(self, variables: FloatArray) -> FloatArray:
+        """D parameter/d variable of the free ones, shape (free parameters,)."""
+        return np.where(self.by_ratio, self.parameters(variables)[self.free], self.sizes)
+
+    def law_pa(self, variables: FloatArray) -> FloatArray:
+        """Stress of the law at the points [Pa], without scale errors."""
+        return self._paths.stress_pa(self.parameters(variables))
+
+    def temperature_k(self, variables: FloatArray) -> FloatArray:
+        """Temperature at the points [K]."""
+        return self._paths.temperature_k(self.parameters(variables))
+
+    def factors(self, variables: FloatArray) -> FloatArray:
+        """1 + sum of the scale errors of each point, shape (points,)."""
+        return np.asarray(1.0 + variables[self.count :] @ self.members)
+
+    def residuals(self, variables: FloatArray) -> FloatArray:
+        """Own residuals, then those of the scale errors, shape (points + shared,)."""
+        law = self.law_pa(variables) * self.factors(variables)
+        own = (self.points.stress_pa - law) / self.u_own_pa
+        return np.concatenate((own, variables[self.count :] / self.prior_u))
+
+    def slopes(self, variables: FloatArray, fine: bool) -> FloatArray:
+        """Jacobian of the residuals, shape (points + shared, variables)."""
+        errors = variables[self.count :]
+        low, high = self.problem.lower[: self.count], self.problem.upper[: self.count]
+
+        def law(inner: FloatArray) -> FloatArray:
+            return self.law_pa(np.concatenate((inner, errors)))
+
+        inner = variables[: self.count]
+        by_parameter = differences(law, inner, low, high, fine=fine, least=_LEAST)
+        weight = self.factors(variables) / self.u_own_pa
+        by_error = -(self.members * (law(inner) / self.u_own_pa)).T
+        top = np.hstack((-by_parameter * weight[:, None], by_error))
+        below = np.hstack((np.zeros((self.prior_u.size, self.count)), np.diag(1 / self.prior_u)))
+        return np.vstack((top, below))
+
+    def solve(self, start: FloatArray, *, search: bool = True) -> LeastSquaresFit:
+        """Fit from full parameters ``start``; seeded other starts around it where that ends badly."""
+        first = self.problem.inside(self.variables(start))
+        best = self._from(first)
+        if search and not best.sound:
+            random = np.random.default_rng(_SEED)
+            for _ in range(_SCATTERED):
+                moved = first.copy()
+                near = np.maximum(np.abs(moved[: self.count]), 0.1)
+                moved[: self.count] += near * random.normal(0.0, 0.4, self.count)
+                other = self._from(self.problem.inside(moved))
+                if (other.sum_of_squares, not other.sound) < (
+                    best.sum_of_squares * (1 - 1e-9),
+                    not best.sound,
+                ):
+                    best = other
+        return best
+
+    def again(self, variables: FloatArray) -> LeastSquaresFit:
+        """Fit from variables that are near the minimum: no walk unless the short way fails."""
+        point, converged = polish(self.problem, variables, tolerance=_TOLERANCE)
+        fit = summary(self.problem, point, converged, "absolute")
+        return fit if converged else self._from(variables)
+
+    def roughly(self, variables: FloatArray) -> FloatArray | None:
+        """Variables at the minimum near ``variables`` to a thousandth of their uncertainty; None if it is not found."""
+        point, converged = polish(self.problem, variables, tolerance=np.inf, near=1e-3, fine=False)
+        if not converged:
+            found = self._from(variables)
+            point, converged = found.parameters, found.converged
+        return point if converged else None
+
+    def _from(self, variables: FloatArray) -> LeastSquaresFit:
+        point, converged = polish(
+            self.problem, walk(self.problem, variables, evaluations=300), tolerance=_TOLERANCE
+        )
+        return summary(self.problem, point, converged, "absolute")
