@@ -50,9 +50,6 @@ class Response:
         Over the span that counts, or over the loading where nothing does.
     corrections : tuple of Report
         What each correction did to the curves, or would have done.
-    heating_k : float array or None
-        Adiabatic rise of the specimen's temperature along the three-wave curve [K]; None without density or heat
-        capacity.
     """
 
     time_s: FloatArray
@@ -68,7 +65,6 @@ class Response:
     rate: RateSummary
     balance: Balance
     corrections: tuple[Report, ...]
-    heating_k: FloatArray | None
     flow: tuple[FlowStress, ...]
     yield_back_extrapolated_pa: float | None
     apparent_slope_pa: float | None
@@ -86,6 +82,15 @@ class Response:
     def indentation_strain(self) -> FloatArray:
         """Estimate of the engineering strain that the bar faces add [1], taken off or not, shape (samples,)."""
         return np.broadcast_to(self.correction(Correction.INDENTATION).off.strain, self.time_s.shape)
+
+    @property
+    def heating_k(self) -> FloatArray | None:
+        """Adiabatic rise of the specimen's temperature along the three-wave curve [K], shape (samples,).
+
+        None without its density or heat capacity.
+        """
+        report = self.correction(Correction.HEATING)
+        return None if report.rise_k is None else report.laid(report.rise_k)
 
     @property
     def elastic_faces_strain(self) -> FloatArray:
@@ -127,9 +132,9 @@ def specimen_response(
             where="response",
             mend="Check polarity, channels and windows in the rig file and the shot sheet",
         )
-    corrected = correct(faces, motion, raw, rig, sheet, loading, settings)
-    one, two, three = corrected.curves
-    for array in (*motion, *(getattr(c, f.name) for c in corrected.curves for f in dataclasses.fields(c))):
+    curves, reports = correct(faces, motion, raw, rig, sheet, loading, settings)
+    one, two, three = curves
+    for array in (*motion, *(getattr(c, f.name) for c in curves for f in dataclasses.fields(c))):
         frozen(array)
     curve = one if settings.analysis is Analysis.ONE_WAVE else three
     equilibrium = judge_equilibrium(
@@ -154,8 +159,7 @@ def specimen_response(
         span=span,
         rate=rate_summary(three.strain_rate_per_s, three.true_strain_rate_per_s, span or loading),
         balance=work_balance(pulses, faces, three, rig, specimen, loading, sheet.striker_speed_m_s),
-        corrections=corrected.reports,
-        heating_k=corrected.heating_k,
+        corrections=reports,
         flow=flow_stresses(
             curve.true_strain, curve.true_stress_pa, curve.true_strain_rate_per_s, span, modulus,
             settings.flow_strains,

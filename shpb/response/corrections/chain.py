@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import replace
-from typing import NamedTuple
 
 import numpy as np
 
@@ -12,7 +11,7 @@ from shpb.arrays import FloatArray, frozen
 from shpb.response.bar_analysis import Curve, FaceMotion, curve_from
 from shpb.response.corrections.correction import Curves, Loading, Off, Report
 from shpb.response.corrections.friction import friction
-from shpb.response.corrections.heating import heating, heating_k
+from shpb.response.corrections.heating import heating
 from shpb.response.corrections.indentation import indentation
 from shpb.response.corrections.inertia import inertia
 from shpb.response.corrections.rig_side import bar_mismatch, bar_temperature, gauge_rise
@@ -27,14 +26,6 @@ from shpb.wave.faces import FacePulses
 _ON_THE_CURVES: tuple[Callable[[Loading], Report], ...] = (indentation, inertia, friction, heating)
 
 
-class Corrected(NamedTuple):
-    """Curves after the corrections that are applied, and what each correction did or would have done."""
-
-    curves: Curves
-    reports: tuple[Report, ...]
-    heating_k: FloatArray | None  # temperature rise along the three-wave curve
-
-
 def correct(
     faces: FacePulses,
     motion: FaceMotion,
@@ -43,28 +34,40 @@ def correct(
     sheet: ShotSheet,
     loading: tuple[int, int],
     settings: Settings,
-) -> Corrected:
-    """Work out every correction, and apply those that the settings switch on and that hold for this shot."""
-    shot = Loading(faces=faces, motion=motion, curves=curves, rig=rig, sheet=sheet, loading=loading)
+) -> tuple[Curves, tuple[Report, ...]]:
+    """Work out every correction, and apply those that the settings switch on and that hold for this shot.
+
+    Returns
+    -------
+    Curves
+        After the corrections that are applied.
+    tuple of Report
+        What each did, or would have done.
+    """
+    shot = Loading.of(faces, motion, curves, rig, sheet, loading)
 
     def asked(report: Report) -> Report:
-        return replace(report, switched_on=report.correction in settings.corrections)
+        return replace(
+            report,
+            switched_on=report.correction in settings.corrections,
+            thinned_time_s=shot.time_s,
+            time_s=faces.time_s,
+        )
 
     reports = [
         asked(one) for one in (gauge_rise(rig, faces.low_pass), bar_temperature(shot), bar_mismatch(shot))
     ]
-    warm = None
     for step in _ON_THE_CURVES:
-        if step is heating:
-            warm = heating_k(shot, shot.curves.three_wave)
         report = asked(step(shot))
-        for array in report.off:
-            if isinstance(array, np.ndarray):
-                frozen(array)
         reports.append(report)
         if report.applied:
-            shot = replace(shot, curves=taken_off(shot.curves, report.off, faces.interval_s, sheet.kind))
-    return Corrected(shot.curves, tuple(reports), warm)
+            curves = taken_off(curves, report.off, faces.interval_s, sheet.kind)
+            shot = Loading.of(faces, motion, curves, rig, sheet, loading)
+    for report in reports:
+        for array in (*report.thinned, report.rise_k):
+            if isinstance(array, np.ndarray):
+                frozen(array)
+    return curves, tuple(reports)
 
 
 def taken_off(curves: Curves, off: Off, interval_s: float, kind: TestKind) -> Curves:

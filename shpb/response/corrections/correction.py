@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field, fields
 from typing import NamedTuple
 
 import numpy as np
@@ -15,6 +15,7 @@ from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet, Specimen
 from shpb.settings import Correction
 from shpb.wave.faces import FacePulses
+from shpb.wave.propagation import LowPass
 
 
 class Curves(NamedTuple):
@@ -27,14 +28,41 @@ class Curves(NamedTuple):
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
 class Loading:
-    """A shot as the corrections see it: faces, motion, and the curves as the corrections before left them."""
+    """A shot as the corrections see it: the curves as the corrections before left them, on a thinned grid.
 
-    faces: FacePulses
+    Ten points in the shortest period that passes the low-pass: corrections are as smooth as the pulses.
+    """
+
+    time_s: FloatArray
+    low_pass: LowPass
     motion: FaceMotion
     curves: Curves
     rig: Rig
     sheet: ShotSheet
-    loading: tuple[int, int]  # samples from the front to the end of loading
+    loading: tuple[int, int]  # thinned samples from the front to the end of loading
+
+    @classmethod
+    def of(
+        cls,
+        faces: FacePulses,
+        motion: FaceMotion,
+        curves: Curves,
+        rig: Rig,
+        sheet: ShotSheet,
+        loading: tuple[int, int],
+    ) -> Loading:
+        """Thin a shot."""
+        stride = max(int(0.1 / faces.low_pass.stop_hz / faces.interval_s), 1)
+        at = slice(None, None, stride)
+        return cls(
+            time_s=faces.time_s[at],
+            low_pass=faces.low_pass,
+            motion=FaceMotion(*(values[at] for values in motion)),
+            curves=Curves(*(_thinned(curve, at) for curve in curves)),
+            rig=rig,
+            sheet=sheet,
+            loading=(-(-loading[0] // stride), max(-(-loading[1] // stride), -(-loading[0] // stride) + 2)),
+        )
 
     @property
     def specimen(self) -> Specimen:
@@ -65,7 +93,7 @@ class Loading:
 
     def greatest(self, change: FloatArray | float) -> float:
         """Greatest size of a change over the loading."""
-        values = np.broadcast_to(change, self.faces.time_s.shape)[slice(*self.loading)]
+        values = np.broadcast_to(change, self.time_s.shape)[slice(*self.loading)]
         return float(np.abs(values).max())
 
     def share_of_stress(self, change: FloatArray | float) -> float:
@@ -73,8 +101,12 @@ class Loading:
         part = slice(*self.loading)
         stress = self.curves.three_wave.stress_pa[part]
         flows = stress > 0.5 * stress.max()
-        values = np.broadcast_to(change, self.faces.time_s.shape)[part]
+        values = np.broadcast_to(change, self.time_s.shape)[part]
         return float(np.abs(values[flows] / stress[flows]).max())
+
+
+def _thinned(curve: Curve, at: slice) -> Curve:
+    return Curve(**{field.name: getattr(curve, field.name)[at] for field in fields(Curve)})
 
 
 class Off(NamedTuple):
@@ -101,8 +133,12 @@ class Report:
     correction : Correction
     brief, size : str
         How much it changes, in a few words and in full, with units; brief is empty where that is not known.
-    off : Off
-        What it takes off the curves (whether applied or not); zero where it acts on the pulses.
+    thinned : Off
+        What it takes off the curves (whether applied or not), on ``thinned_time_s``; zero where it acts on the pulses.
+    rise_k : float array or None
+        Heating alone: rise of the temperature along the curve [K], on ``thinned_time_s``.
+    thinned_time_s, time_s : float array
+        Thinned grid, and time axis of the response [s].
     refused : str
         Why it cannot be applied here; empty where it can.
     switched_on : bool
@@ -112,9 +148,26 @@ class Report:
     correction: Correction
     brief: str
     size: str
-    off: Off = NOTHING
+    thinned: Off = NOTHING
+    rise_k: FloatArray | None = None
     refused: str = ""
     switched_on: bool = False
+    thinned_time_s: FloatArray = field(default_factory=lambda: np.zeros(0))
+    time_s: FloatArray = field(default_factory=lambda: np.zeros(0))
+
+    @property
+    def off(self) -> Off:
+        """What it takes off the curves, on the time axis of the response."""
+        return Off(
+            *(self.laid(change) if isinstance(change, np.ndarray) else change for change in self.thinned)
+        )
+
+    def laid(self, values: FloatArray) -> FloatArray:
+        """Thinned values on the time axis of the response, by straight lines."""
+        if self.thinned_time_s.size == self.time_s.size:
+            return values
+        laid: FloatArray = np.interp(self.time_s, self.thinned_time_s, values)
+        return laid
 
     @property
     def fact(self) -> Fact:

@@ -59,6 +59,6 @@ def friction(shot: Loading) -> Report:
         brief=f"{100 * shot.greatest(share):.1f} % of stress" if shot.compressed else "",
         size=f"up to {100 * shot.greatest(share):.1f} % of stress with a coefficient of {mu:g}"
         + ("" if stated else " (assumed)"),
-        off=off,
+        thinned=off,
         refused=refused,
     )

@@ -42,7 +42,7 @@ def heating_k(shot: Loading, curve: Curve) -> FloatArray | None:
     plastic = plastic_strain(curve.true_strain[part], curve.true_stress_pa[part], specimen.young_modulus_pa)
     # Plastic strain cannot go back: what looks like it is elastic, or noise.
     work = adiabatic_work_j_m3(np.maximum(np.maximum.accumulate(plastic), 0.0), curve.true_stress_pa[part])
-    rise = np.zeros_like(shot.faces.time_s)
+    rise = np.zeros_like(shot.time_s)
     rise[part] = share * work / (specimen.density_kg_m3 * specimen.heat_capacity_j_kg_k)
     rise[last:] = rise[last - 1]
     return rise
@@ -98,6 +98,7 @@ def heating(shot: Loading) -> Report:
         correction=Correction.HEATING,
         brief=brief,
         size=size,
-        off=off,
+        thinned=off,
+        rise_k=rise,
         refused=refused,
     )

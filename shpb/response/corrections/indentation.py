@@ -25,7 +25,7 @@ def indentation(shot: Loading) -> Report:
         correction=Correction.INDENTATION,
         brief=f"{shot.greatest(strain):.4f} of strain" if shot.compressed else "",
         size=f"up to {shot.greatest(strain):.4f} of strain",
-        off=Off(strain=strain),
+        thinned=Off(strain=strain),
         refused=refused,
     )
 
@@ -33,7 +33,7 @@ def indentation(shot: Loading) -> Report:
 def indentation_strain(shot: Loading) -> FloatArray:
     """Engineering strain that both bar faces add by giving way, shape (samples,); zero in tension."""
     if not shot.compressed:
-        return np.zeros_like(shot.faces.time_s)
+        return np.zeros_like(shot.time_s)
     radius, rig, motion = shot.radius_m, shot.rig, shot.motion
     total = face_indentation_m(motion.force_in_n, radius, rig.incident_bar) + face_indentation_m(
         motion.force_out_n, radius, rig.transmitted_bar

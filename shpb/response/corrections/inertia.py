@@ -65,7 +65,7 @@ def inertia(shot: Loading) -> Report:
     elif density is None:
         refused = "it needs the specimen's density in the shot sheet"
     else:
-        time, stretch = shot.faces.time_s, shot.stretch
+        time, stretch = shot.time_s, shot.stretch
         rate = np.clip(shot.curves.three_wave.strain_rate_per_s / stretch, -1e6, 1e6)
         stress = inertia_stress(
             density,
@@ -89,6 +89,6 @@ def inertia(shot: Loading) -> Report:
         correction=Correction.INERTIA,
         brief=brief,
         size=size,
-        off=off,
+        thinned=off,
         refused=refused,
     )

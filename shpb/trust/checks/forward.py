@@ -65,10 +65,10 @@ def inertia(evidence: Evidence) -> Answer | None:
     response = evidence.response
     report = response.correction(Correction.INERTIA)
     span = slice(*(response.span or response.loading))
-    stress, taken = response.one_wave.stress_pa[span], report.off.stress_1w_pa
-    if isinstance(taken, float):
+    stress, thinned = response.one_wave.stress_pa[span], report.thinned.stress_1w_pa
+    if isinstance(thinned, float):
         return None
-    share = float(abs(taken[span]).max()) / max(float(stress.max()), 1.0)
+    share = float(abs(report.laid(thinned)[span]).max()) / max(float(stress.max()), 1.0)
     done = " (taken off)" if report.applied else ""
     return graded(
         0.0 if report.applied else share,

@@ -131,7 +131,8 @@ def test_isothermal_stress_is_higher_where_heat_softens(faces: FaceStrains) -> N
     # Taylor-Quinney share 0.9 by default; the first samples, before any plastic strain, hold nothing.
     assert warm[at] == pytest.approx(0.9 * work / (8900 * 385), rel=2e-3)
     ratio = with_.response.one_wave.stress_pa[at] / without.response.one_wave.stress_pa[at]
-    assert ratio == pytest.approx(1 / (1 - 8e-4 * warm[at]), rel=1e-9)
+    # Laid on the time axis from a thinned grid, where the end of the loading is a corner.
+    assert ratio == pytest.approx(1 / (1 - 8e-4 * warm[at]), rel=2e-5)
     assert np.all(np.diff(warm[part]) >= 0)
 
 
