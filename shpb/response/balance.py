@@ -52,7 +52,9 @@ def work_balance(
     volume = specimen.area_m2 * specimen.length_m
     own = float((curve.stress_pa[span] * curve.strain_rate_per_s[span]).sum() * dt * volume)
     # At the gauge, over its whole window: dispersion keeps the impulse, a short record cuts the faces' clock.
-    impulse = float(rig.incident_bar.force_per_strain_n * pulses.incident.strain.sum() * dt)
+    impulse = float(
+        rig.incident_bar.force_per_strain_n * pulses.incident.strain.sum() * pulses.sample_interval_s
+    )
     momentum = None
     if rig.striker is not None and striker_speed_m_s is not None:
         momentum = rig.striker.mass_kg * striker_speed_m_s

@@ -95,12 +95,11 @@ def force_uncertainties(
     What scales a whole force (E A, gauge factor, gain) is left out: it belongs to the budget, not
     to the floor of R... except that both gauges may differ, which ``pulse_error`` is to hold.
     """
-    interval = faces.interval_s
-    u_time = max(faces.u_misalignment_s, 0.2 * interval)
+    u_time = max(faces.u_misalignment_s, 0.2 * pulses.sample_interval_s)
+    band = faces.low_pass.noise_share(pulses.sample_interval_s)
 
     def variance(strain: FloatArray, noise: float, u_zero: float) -> FloatArray:
-        slope = np.gradient(strain, interval)
-        band = faces.low_pass.noise_share(interval)
+        slope = np.gradient(strain, faces.interval_s)
         return (settings.pulse_error * strain) ** 2 + (slope * u_time) ** 2 + (noise * band) ** 2 + u_zero**2
 
     u_in = rig.incident_bar.force_per_strain_n * np.sqrt(

@@ -176,8 +176,9 @@ class Carrier:
         scene, per = self.scene, self.per
         faces = scene.evidence.faces
         pulse = PULSES.index(way[0][0].removeprefix("noise_"))
-        passed = faces.low_pass.noise_share(faces.interval_s) ** 2
-        summed = (scene.time_s - scene.time_s[0]) * faces.interval_s
+        sampled = scene.evidence.pulses.sample_interval_s
+        passed = faces.low_pass.noise_share(sampled) ** 2
+        summed = (scene.time_s - scene.time_s[0]) * sampled
         # What one unit of strain in this pulse is in each output.
         force, speed = (
             (per.force_out_n, per.speed_out_m_s) if pulse == 2 else (per.force_in_n, per.speed_in_m_s)
@@ -203,7 +204,8 @@ class Carrier:
         faces = self.scene.evidence.faces
         frequency = np.linspace(0.0, faces.low_pass.stop_hz, 200)
         passed = (faces.low_pass.gain(frequency) * np.sinc(frequency * self.mean_s)) ** 2
-        return min(float(2 * faces.interval_s * passed.mean() * faces.low_pass.stop_hz), 1.0)
+        sampled = self.scene.evidence.pulses.sample_interval_s
+        return min(float(2 * sampled * passed.mean() * faces.low_pass.stop_hz), 1.0)
 
 
 def _running_mean(values: FloatArray, width: int) -> FloatArray:

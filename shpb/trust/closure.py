@@ -236,7 +236,7 @@ def _noise(evidence: Evidence) -> tuple[float, float]:
     own noise at another time.
     """
     pulses, rig = evidence.pulses, evidence.rig
-    share = evidence.faces.low_pass.noise_share(evidence.faces.interval_s)
+    share = evidence.faces.low_pass.noise_share(evidence.pulses.sample_interval_s)
     across = rig.transmitted_bar.force_per_strain_n / rig.incident_bar.force_per_strain_n
     i, r, t = (pulse.noise * share for pulse in pulses)
     return float(np.sqrt(i**2 + r**2 + (across * t) ** 2)), float(np.sqrt(2) * t)

@@ -80,7 +80,7 @@ class DrawnFaces:
 
     def __init__(self, evidence: Evidence, spread: Mapping[str, tuple[float, float]]) -> None:
         faces, rig = evidence.faces, evidence.rig
-        dt, low_pass = faces.interval_s, faces.low_pass
+        dt, low_pass = evidence.pulses.sample_interval_s, faces.low_pass
         self.evidence, self.low_pass = evidence, low_pass
         self._ways = (rig.incident_gauge.to_specimen_m, rig.transmitted_gauge.to_specimen_m)
         self._laid = laid_on_feet(evidence)
@@ -120,7 +120,7 @@ class DrawnFaces:
     def _length(self, dt: float) -> int:
         """FFT length for which nothing that wraps around comes onto the grid."""
         faces = self.evidence.faces
-        low, high = 0.0, faces.time_s.size * dt
+        low, high = 0.0, faces.time_s.size * faces.interval_s
         bars = (self.evidence.rig.incident_bar, self.evidence.rig.transmitted_bar)
         slow = max(
             _slowest_residual(bar, self.low_pass) * way for bar, way in zip(bars, self._ways, strict=True)

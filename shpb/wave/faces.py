@@ -21,6 +21,8 @@ from shpb.wave.to_faces import ToFaces
 # The common clock begins this long before the front, in a/c0 of the incident bar.
 _BEFORE_RADII = 12.0
 _SMOOTHING_RADII = 0.5
+# The faces' clock need not be finer than this many points in the shortest period that passes.
+_POINTS_IN_A_PERIOD = 50
 _PICK_RADII = 60.0  # feet are sought this long after the front
 
 
@@ -32,6 +34,8 @@ class FacePulses:
     ----------
     time_s : float array, shape (samples,)
         Time since the loading front reached the incident face [s].
+    interval_s : float
+        Of ``time_s`` [s]: the record's own, or a whole multiple where that is much finer than need be.
     record_time_of_zero_s : float
         Where time zero lies on the record's own clock [s].
     incident, reflected, transmitted : CarriedPulse
@@ -89,7 +93,7 @@ def carry_to_faces(pulses: Pulses, rig: Rig, sheet: ShotSheet, settings: Setting
     """
     low_pass = low_pass_of(rig, settings)
     transit = sheet.specimen.transit_time_s or 0.0
-    grid = _common_grid(pulses, rig)
+    grid = _common_grid(pulses, rig, low_pass)
     to_faces = ToFaces(pulses, rig, sheet, settings, grid, low_pass)
     at_faces = to_faces()
     incident, reflected, transmitted, impedance_ratio = at_faces
@@ -129,8 +133,11 @@ def carry_to_faces(pulses: Pulses, rig: Rig, sheet: ShotSheet, settings: Setting
     )
 
 
-def _common_grid(pulses: Pulses, rig: Rig) -> Grid:
-    """From a little before the front to where the first of the three windows ends, at the faces."""
+def _common_grid(pulses: Pulses, rig: Rig, low_pass: LowPass) -> Grid:
+    """From a little before the front to where the first of the three windows ends, at the faces.
+
+    A record sampled much faster than anything that passes is laid on every second, third, ... of its samples.
+    """
     travel_i = rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
     travel_t = rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s
     front = pulses.arrivals.incident_s + travel_i
@@ -140,14 +147,16 @@ def _common_grid(pulses: Pulses, rig: Rig) -> Grid:
         pulses.reflected.window_s[1] - travel_i,
         pulses.transmitted.window_s[1] - travel_t,
     )
-    samples = int((stop - start) / pulses.sample_interval_s)
+    every = max(int(1.0 / (_POINTS_IN_A_PERIOD * low_pass.stop_hz * pulses.sample_interval_s)), 1)
+    interval = every * pulses.sample_interval_s
+    samples = int((stop - start) / interval)
     if samples < 32 or stop <= front:
         raise InputError(
             f"the three windows have only {max(stop - front, 0) * 1e6:.1f} us in common at the specimen",
             where="pulse windows",
             mend="Widen the windows in the shot sheet, lengthen the record, or check gauge distances",
         )
-    return Grid(start, pulses.sample_interval_s, samples)
+    return Grid(start, interval, samples)
 
 
 def _whole(grid: Grid, low_pass: LowPass, rig: Rig) -> int:
@@ -180,5 +189,7 @@ def _feet_at_faces(
         else:
             smoothing, sign = _SMOOTHING_RADII * unit, pulse.foot.sign
             strain = at_face.strain[:stop]
-            feet.append(pick_foot(strain, grid.start_s, grid.interval_s, pulse.noise, smoothing, sign))
+            # The picker smooths over samples: of fewer, each must count for as many as it stands for.
+            noise = pulse.noise * float(np.sqrt(pulses.sample_interval_s / grid.interval_s))
+            feet.append(pick_foot(strain, grid.start_s, grid.interval_s, noise, smoothing, sign))
     return tuple(feet)

@@ -115,11 +115,13 @@ class BarTransfer:
     ) -> CarriedPulse:
         """Carry one windowed pulse; arguments as in :func:`carry_pulse`.
 
-        ``chain`` is the gain of the recording chain at ``frequency_hz``, to be undone.
+        ``chain`` is the gain of the recording chain at ``frequency_hz``, to be undone. The interval of ``grid`` may be
+        a whole multiple of that of the strain, if the FFT length is one too: nothing that passes is lost.
         """
+        every = round(grid.interval_s / self.interval_s)
         delay = start_s + distance_m / self.bar.wave_speed_m_s + shift_s - grid.start_s
-        whole = int(np.floor(delay / self.interval_s))
-        rest = delay - whole * self.interval_s
+        whole = int(np.floor(delay / grid.interval_s))
+        rest = delay - whole * grid.interval_s
         spectrum = np.fft.rfft(strain, self.length)
         phase = -2j * np.pi * self.frequency_hz * (rest + distance_m * self.slowness_s_m)
         gain = self.low_pass.gain(self.frequency_hz)
@@ -128,10 +130,13 @@ class BarTransfer:
         passed = spectrum[: self.frequency_hz.size] * (gain * np.exp(phase))
 
         def on_grid(factor: FloatArray | None) -> FloatArray:
-            carried = np.zeros_like(spectrum)
+            coarse = self.length // every
+            carried = np.zeros(coarse // 2 + 1, dtype=np.complex128)
             carried[: passed.size] = passed if factor is None else passed * factor
-            circular = np.fft.irfft(carried, self.length)
-            return _placed(circular, whole, self.low_pass, self.interval_s, grid.samples)
+            circular = np.fft.irfft(carried, coarse)
+            if every > 1:
+                circular /= every
+            return _placed(circular, whole, self.low_pass, grid.interval_s, grid.samples)
 
         surface = on_grid(None)
         return CarriedPulse(

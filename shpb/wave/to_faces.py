@@ -13,7 +13,15 @@ from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 from shpb.settings import Correction, Settings
 from shpb.wave.hot_bar import HotEnd, hot_ends, through_hot_end, whole_slices, why_no_hot_ends
-from shpb.wave.propagation import BarTransfer, CarriedPulse, Grid, LowPass, bar_transfer, padded_length
+from shpb.wave.propagation import (
+    BarTransfer,
+    CarriedPulse,
+    Grid,
+    LowPass,
+    bar_transfer,
+    fast_length,
+    padded_length,
+)
 from shpb.wave.recording_chain import chain_delay_s, chain_gain, why_no_chain
 
 
@@ -121,15 +129,18 @@ def _transfers(
 ) -> dict[str, BarTransfer]:
     """What the bars do to each pulse; one FFT length for all, so that equal bars are solved once."""
     bars = {"incident": rig.incident_bar, "reflected": rig.incident_bar, "transmitted": rig.transmitted_bar}
+    interval = pulses.sample_interval_s
+    every = round(grid.interval_s / interval)
     length = max(
-        padded_length(pulse.strain.size, distances[pulse.name], bars[pulse.name], low_pass, grid.interval_s)
+        padded_length(pulse.strain.size, distances[pulse.name], bars[pulse.name], low_pass, interval)
         for pulse in pulses
     )
+    length = every * fast_length(-(-length // every))
     solved: dict[tuple[float, float, float], BarTransfer] = {}
     transfers = {}
     for name, bar in bars.items():
         kind = (float(bar.radius_m), float(bar.wave_speed_m_s), float(bar.poisson_ratio))
         if kind not in solved:
-            solved[kind] = bar_transfer(bar, grid.interval_s, length, low_pass, settings.dispersion)
+            solved[kind] = bar_transfer(bar, interval, length, low_pass, settings.dispersion)
         transfers[name] = solved[kind]
     return transfers

@@ -13,9 +13,11 @@ from shpb.wave.propagation import (
     AMPLITUDE_NONE_FA_C0,
     Grid,
     LowPass,
+    bar_transfer,
     capped_factor,
     carry_pulse,
     fast_length,
+    padded_length,
 )
 from tests.synthetic import smooth_pulse, steel_bar
 
@@ -133,3 +135,20 @@ def test_fast_length(samples: int) -> None:
         while length % prime == 0:
             length //= prime
     assert length == 1
+
+
+@pytest.mark.parametrize("dispersion", list(Dispersion))
+@pytest.mark.parametrize("every", [2, 5, 12])
+def test_a_coarser_clock_holds_the_same_values(every: int, dispersion: Dispersion) -> None:
+    # Nothing above the low-pass comes to the faces, so every nth sample of the fine result is the coarse one.
+    bar, low_pass, fine = steel_bar(), LowPass(120e3), 0.02e-6
+    time = np.arange(0.0, 150e-6, fine)
+    strain = smooth_pulse(time - 20e-6, 1e-3, 60e-6, 8e-6)
+    length = every * fast_length(-(-padded_length(strain.size, 0.9, bar, low_pass, fine) // every))
+    transfer = bar_transfer(bar, fine, length, low_pass, dispersion)
+    start = 171.3e-6
+    whole = transfer.carry(strain, 0.0, Grid(start, fine, 1200 * every), 0.9)
+    thinned = transfer.carry(strain, 0.0, Grid(start, every * fine, 1200), 0.9)
+    for a, b in zip(whole, thinned, strict=True):
+        np.testing.assert_allclose(b, a[::every], atol=1e-12)
+    assert whole.strain.max() > 0.9e-3

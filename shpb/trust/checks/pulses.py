@@ -104,7 +104,7 @@ def tuned_shift(evidence: Evidence) -> Answer | None:
         return None
     transit = sheet.specimen.transit_time_s or 0.0
     # The transmitted foot may be moved by the specimen's transit besides what the picker cannot tell.
-    open_s = transit + faces.interval_s + 2 * faces.u_misalignment_s
+    open_s = transit + evidence.pulses.sample_interval_s + 2 * faces.u_misalignment_s
     moved = max(abs(faces.reflected_shift_s), abs(faces.transmitted_shift_s))
     untuned = evidence.response.untuned_equilibrium
     beside = "" if untuned is None else f"; R {100 * untuned.mean_ratio:.1f} % without it"

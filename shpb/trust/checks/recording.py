@@ -175,7 +175,7 @@ def _steps(evidence: Evidence, pulse: Pulse, gauge: Gauge) -> int:
 @check("noise", gravest=Weight.NOTE)
 def noise(evidence: Evidence) -> Answer | None:
     """Noise that is left in each pulse after the low-pass, against its peak."""
-    share = evidence.faces.low_pass.noise_share(evidence.faces.interval_s)
+    share = evidence.faces.low_pass.noise_share(evidence.pulses.sample_interval_s)
     levels = {pulse.name: pulse.noise * share / _peak(pulse) for pulse in evidence.pulses}
     worst = max(levels, key=lambda name: levels[name])
     return graded(
@@ -189,7 +189,7 @@ def noise(evidence: Evidence) -> Answer | None:
 @check("oversampling", gravest=Weight.REJECT)
 def sampling_rate(evidence: Evidence) -> Answer | None:
     """The sampling rate must carry the whole pass band with room to spare."""
-    rate, low_pass = 1 / evidence.faces.interval_s, evidence.faces.low_pass
+    rate, low_pass = 1 / evidence.pulses.sample_interval_s, evidence.faces.low_pass
     wanted = evidence.settings.limits.oversampling
     gravest = Weight.REJECT if rate < 2 * low_pass.stop_hz else Weight.NOTE
     return Answer(
