@@ -256,3 +256,40 @@ def test_comparison_loss(case: dict[str, Any]) -> None:
     linear = propagate(numerical_sensitivities(loss, inputs), inputs)
     # First order misses the curvature: 0 at the origin.
     assert float(linear.u) == pytest.approx(case["GUM_first_order"]["u"], rel=1e-9, abs=1e-15)
+
+
+def test_mass_calibration() -> None:
+    # JCGM 101:2008, 9.3 (numbers from memory; the two standard uncertainties follow in closed form below): a weight of
+    # 100 g against one whose conventional mass is 100 000.000 mg (u 0.050), difference 1.234 mg (u 0.020), air density
+    # rectangular 1.10 to 1.30, densities of the weights 7 to 9 and 7.95 to 8.05 g/cm3. First order u = 0.0539 mg; the
+    # density terms are of second order and bring the draws to 0.0754 mg, 95 % from 1.0834 to 1.3825 mg.
+    root = math.sqrt(3)
+    inputs = [
+        Input("reference", 100_000.0, 0.050),
+        Input("difference", 1.234, 0.020),
+        Input("air", 1.20, 0.10 / root, distribution="rectangular"),
+        Input("weight", 8000.0, 1000.0 / root, distribution="rectangular"),
+        Input("standard", 8000.0, 50.0 / root, distribution="rectangular"),
+    ]
+
+    def deviation(values: Mapping[str, FloatArray]) -> FloatArray:
+        buoyancy = 1 + (values["air"] - 1.2) * (1 / values["weight"] - 1 / values["standard"])
+        return (values["reference"] + values["difference"]) * buoyancy - 100_000.0
+
+    linear = propagate(numerical_sensitivities(deviation, inputs), inputs)
+    assert f"{float(linear.u):.4f}" == "0.0539"
+    found = monte_carlo(deviation, inputs, draws=1_000_000, seed=93)
+    assert float(found.mean) == pytest.approx(1.2340, abs=4e-4)
+
+    # Independent factors of mean zero: the variances of the buoyancy term multiply; 1/rho of a rectangular rho has
+    # variance 1/(a b) - (ln(b/a)/(b - a))^2 and a mean that is not 1/8000.
+    def inverse(a: float, b: float) -> tuple[float, float]:
+        mean = math.log(b / a) / (b - a)
+        return mean, 1 / (a * b) - mean**2
+
+    (m1, v1), (m2, v2) = inverse(7000, 9000), inverse(7950, 8050)
+    air = 0.10**2 / 3
+    exact = math.sqrt(0.050**2 + 0.020**2 + 100_001.234**2 * air * (v1 + v2 + (m1 - m2) ** 2))
+    assert float(found.u) == pytest.approx(exact, rel=3e-3)
+    assert exact == pytest.approx(0.0754, abs=1e-4)
+    assert (float(found.low), float(found.high)) == pytest.approx((1.0834, 1.3825), abs=1.5e-3)
