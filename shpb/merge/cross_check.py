@@ -83,8 +83,7 @@ def _left_out(problem: FitProblem, variables: FloatArray, of: BoolArray) -> tupl
     ]
     if lost:
         return None, f"without it the points cannot tell {', '.join(lost)}"
-    widened = float(problem.u_own_pa[0] / points.u_own_pa[0])
-    without = FitProblem(model, rest, problem.base, problem.free, widened)
+    without = FitProblem(model, rest, problem.base, problem.free, problem.widened)
     kept = [k for k, error in enumerate(points.shared) if error.members[~of].any()]
     # Each problem has units of its own: what passes between them are parameters.
     near = without.variables(problem.parameters(variables), variables[problem.count :][kept])

@@ -35,7 +35,7 @@ from shpb.merge.rise import rise_with_temperature
 from shpb.merge.statements import about_parameters, about_points, about_residuals
 
 _ONE_TEMPERATURE_K = 10.0
-_WIDENINGS = 4
+_WIDENINGS = 6
 
 
 def fit_model(
@@ -81,14 +81,14 @@ def fit_model(
             where="points",
             mend=f"Give at least {int(free.sum()) + 1} points, or fix parameters",
         )
-    problem, found, chi2, widened = _solved(model, points, base, free)
+    problem, found = _solved(model, points, base, free)
     if not np.isfinite(found.sum_of_squares):
         raise InputError("the law has no finite stress near any start", where=model.key)
     silent = silent_directions(problem, found)
     covariance, correlation = covariance_and_correlation(problem, found)
     estimates = estimates_of(problem, found, fixed=values, held=held, silent=silent)
     shared = shared_estimates(problem, found)
-    variables = found.parameters
+    variables, widened, chi2 = found.parameters, problem.widened, problem.chi2(found.parameters)
     conditions = residuals_by_condition(problem, variables, leave_out=leave_out)
     if not found.converged:
         warnings += ("the fit did not converge: its numbers are the best found, not the best there are",)
@@ -182,17 +182,25 @@ def _held(
 
 def _solved(
     model: Model, points: FlowPoints, base: FloatArray, free: BoolArray
-) -> tuple[FitProblem, LeastSquaresFit, float, float]:
-    """Problem, minimum, chi2 over the stated uncertainties, and the widening of the own ones."""
+) -> tuple[FitProblem, LeastSquaresFit]:
+    """Problem and minimum, with own uncertainties as wide as the scatter about the law.
+
+    Wider own uncertainties leave less to the shared errors, so the minimum moves with them: they are found together,
+    roughly first, since a law that does not hold makes a stiff problem of the stated ones.
+    """
     problem = FitProblem(model, points, base, free)
-    found = problem.solve(base)
-    chi2, widened = found.sum_of_squares, 1.0
+    variables = problem.walked(problem.variables(base))
     for _ in range(_WIDENINGS):
-        own = found.residuals[: len(points)]
-        before, widened = widened, max(1.0, widened * float(np.sqrt(own @ own / found.degrees_of_freedom)))
-        if abs(widened / before - 1) < 1e-3:
+        wider = problem.widened_for(variables)
+        if wider is None:
             break
-        # Wider own uncertainties leave less to the shared errors: the minimum moves if there are any.
-        problem = FitProblem(model, points, base, free, widened)
+        problem = wider
+        variables = problem.walked(variables)
+    found = problem.solve(variables)
+    for _ in range(_WIDENINGS):
+        wider = problem.widened_for(found.parameters)
+        if wider is None:
+            break
+        problem = wider
         found = problem.again(found.parameters)
-    return problem, found, chi2, widened
+    return problem, found

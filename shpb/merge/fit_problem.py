@@ -9,6 +9,8 @@ magnitude), then one relative scale error d for each shared error:
 
 from __future__ import annotations
 
+from functools import partial
+
 import numpy as np
 
 from shpb.arrays import BoolArray, FloatArray
@@ -19,8 +21,12 @@ from shpb.merge.models.model import Model
 from shpb.merge.points import FlowPoints
 
 _LEAST = 1e-3  # of its usual size, for which a parameter's step is chosen where it is smaller
-_TOLERANCE = 1e-10  # of the variables
-_SCATTERED = 6
+_TOLERANCE = 1e-10  # of the variables, to which the last steps go where they still get shorter
+_NEARLY, _ROUGHLY = 1e-3, 1e-2  # relative offset: in units of the parameters' own uncertainty
+_FLAT = 1e-10
+_SAME_WIDTH = 1e-4
+_EVALUATIONS, _STEPS = 100, 25
+_SCATTERED, _TRIED = 60, 3
 _SEED = 1983
 
 
@@ -42,7 +48,7 @@ class FitProblem:
         self, model: Model, points: FlowPoints, base: FloatArray, free: BoolArray, widened: float = 1.0
     ) -> None:
         self.model, self.points, self.base, self.free = model, points, base, free
-        self.u_own_pa = widened * points.u_own_pa
+        self.widened, self.u_own_pa = widened, widened * points.u_own_pa
         self.members = np.array([e.members for e in points.shared], dtype=float).reshape(-1, len(points))
         self.prior_u = np.array([e.relative_u for e in points.shared])
         self.by_ratio = np.array([p.by_ratio for p in model.parameters])[free]
@@ -119,40 +125,62 @@ class FitProblem:
         below = np.hstack((np.zeros((self.prior_u.size, self.count)), np.diag(1 / self.prior_u)))
         return np.vstack((top, below))
 
-    def solve(self, start: FloatArray, *, search: bool = True) -> LeastSquaresFit:
-        """Fit from full parameters ``start``; seeded other starts around it where that ends badly."""
-        first = self.problem.inside(self.variables(start))
-        best = self._from(first)
-        if search and not best.sound:
-            random = np.random.default_rng(_SEED)
-            for _ in range(_SCATTERED):
-                moved = first.copy()
-                near = np.maximum(np.abs(moved[: self.count]), 0.1)
-                moved[: self.count] += near * random.normal(0.0, 0.4, self.count)
-                other = self._from(self.problem.inside(moved))
-                if (other.sum_of_squares, not other.sound) < (
-                    best.sum_of_squares * (1 - 1e-9),
-                    not best.sound,
-                ):
-                    best = other
+    def chi2(self, variables: FloatArray) -> float:
+        """Sum of squares over the stated uncertainties, own and shared."""
+        residuals = self.residuals(variables)
+        residuals[: len(self.points)] *= self.widened
+        return float(residuals @ residuals)
+
+    def widened_for(self, variables: FloatArray) -> FitProblem | None:
+        """The problem with own uncertainties as wide as the scatter (Birge ratio, never below 1); None if they are."""
+        own = self.residuals(variables)[: len(self.points)]
+        freedom = max(len(self.points) - self.count, 1)
+        wider = max(1.0, self.widened * float(np.sqrt(own @ own / freedom)))
+        if not np.isfinite(wider) or abs(wider / self.widened - 1) < _SAME_WIDTH:
+            return None
+        return FitProblem(self.model, self.points, self.base, self.free, wider)
+
+    def solve(self, first: FloatArray) -> LeastSquaresFit:
+        """Fit from variables ``first``; seeded other starts around them where that ends badly."""
+        best = self.from_(first)
+        if best.sound:
+            return best
+        random = np.random.default_rng(_SEED)
+        near = np.maximum(np.abs(first[: self.count]), 0.1)
+        moved = np.tile(first, (_SCATTERED, 1))
+        moved[:, : self.count] += near * random.normal(0.0, 0.4, (_SCATTERED, self.count))
+        moved = np.clip(moved, self.problem.lower, self.problem.upper)
+        for one in sorted(moved, key=self.problem.cost)[:_TRIED]:
+            other = self.from_(one)
+            if (other.sum_of_squares, not other.sound) < (best.sum_of_squares * (1 - 1e-6), not best.sound):
+                best = other
         return best
 
     def again(self, variables: FloatArray) -> LeastSquaresFit:
         """Fit from variables that are near the minimum: no walk unless the short way fails."""
-        point, converged = polish(self.problem, variables, tolerance=_TOLERANCE)
-        fit = summary(self.problem, point, converged, "absolute")
-        return fit if converged else self._from(variables)
+        fit = self._polished(variables)
+        return fit if fit.converged else self.from_(variables)
 
     def roughly(self, variables: FloatArray) -> FloatArray | None:
-        """Variables at the minimum near ``variables`` to a thousandth of their uncertainty; None if it is not found."""
-        point, converged = polish(self.problem, variables, tolerance=np.inf, near=1e-3, fine=False)
+        """Variables at the minimum near ``variables`` to a hundredth of their uncertainty; None if it is not found."""
+        polished = partial(
+            polish, self.problem, tolerance=np.inf, near=_ROUGHLY, fine=False, most_steps=_STEPS
+        )
+        point, converged = polished(variables)
         if not converged:
-            found = self._from(variables)
-            point, converged = found.parameters, found.converged
+            point, converged = polished(self.walked(point))
         return point if converged else None
 
-    def _from(self, variables: FloatArray) -> LeastSquaresFit:
+    def from_(self, variables: FloatArray) -> LeastSquaresFit:
+        """Fit from any variables."""
+        return self._polished(self.walked(variables))
+
+    def walked(self, variables: FloatArray) -> FloatArray:
+        """Variables near the minimum, as far as the walk from ``variables`` gets."""
+        return walk(self.problem, variables, evaluations=_EVALUATIONS, tolerance=_FLAT)
+
+    def _polished(self, variables: FloatArray) -> LeastSquaresFit:
         point, converged = polish(
-            self.problem, walk(self.problem, variables, evaluations=300), tolerance=_TOLERANCE
+            self.problem, variables, tolerance=_TOLERANCE, near=_NEARLY, most_steps=_STEPS
         )
         return summary(self.problem, point, converged, "absolute")

@@ -146,7 +146,9 @@ def _sum_of_squares(residuals: FloatArray) -> float:
     return total if np.isfinite(total) else np.inf
 
 
-def walk(problem: Problem, start: FloatArray, *, evaluations: int = 2000) -> FloatArray:
+def walk(
+    problem: Problem, start: FloatArray, *, evaluations: int = 2000, tolerance: float = 1e-14
+) -> FloatArray:
     """Lowest point that the library's methods reach from ``start``; ``start`` itself where they find none."""
     from scipy.optimize import least_squares
 
@@ -168,7 +170,7 @@ def walk(problem: Problem, start: FloatArray, *, evaluations: int = 2000) -> Flo
             with np.errstate(all="ignore"):
                 found = least_squares(
                     residuals, start / scale, slopes, limits, method=method, x_scale="jac",
-                    ftol=1e-14, xtol=1e-14, gtol=1e-14, max_nfev=evaluations,
+                    ftol=tolerance, xtol=tolerance, gtol=tolerance, max_nfev=evaluations,
                 )  # fmt: skip
         except (ValueError, np.linalg.LinAlgError):
             continue  # it stepped where the residuals are no numbers; the other method, or another start, goes on
@@ -195,7 +197,13 @@ def _held(problem: Problem, parameters: FloatArray, slopes: FloatArray, residual
 
 
 def polish(
-    problem: Problem, start: FloatArray, *, tolerance: float = 1e-12, near: float = _OFFSET, fine: bool = True
+    problem: Problem,
+    start: FloatArray,
+    *,
+    tolerance: float = 1e-12,
+    near: float = _OFFSET,
+    fine: bool = True,
+    most_steps: int = _MOST_STEPS,
 ) -> tuple[FloatArray, bool]:
     """Gauss-Newton steps until the last is below ``tolerance`` of the parameters.
 
@@ -204,7 +212,7 @@ def polish(
     here = problem.inside(start)
     residuals = problem.at(here)
     cost, last = _sum_of_squares(residuals), np.inf
-    for _ in range(_MOST_STEPS):
+    for _ in range(most_steps):
         slopes = problem.slopes(here, fine=fine)
         if not (np.isfinite(slopes).all() and np.isfinite(residuals).all()):
             return here, False

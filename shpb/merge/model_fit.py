@@ -156,7 +156,7 @@ class ModelFit:
         Directions in which the parameters can move without a point noticing.
     shared : tuple of SharedEstimate
     chi2 : float
-        Sum of squares over the stated uncertainties, shared errors' own included.
+        Sum of squares over the stated uncertainties, own and shared, at these parameters.
     degrees_of_freedom : int
     scatter_factor : float
         Own uncertainties were widened by this, where the points scatter about the law by more than they state

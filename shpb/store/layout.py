@@ -80,6 +80,18 @@ TRUST: tuple[Field, ...] = (
     Field("u_true_strain", "", "Standard uncertainty of true strain", lambda r: r.budget.u_true_strain),
     Field("u_true_stress", "Pa", "Standard uncertainty of true stress", lambda r: r.budget.u_true_stress_pa),
     Field(
+        "u_true_stress_at_strain",
+        "Pa",
+        "Standard uncertainty of true stress at a given true strain",
+        lambda r: r.budget.u_of("true_stress_at_strain"),
+    ),
+    Field(
+        "u_shared_true_stress_at_strain",
+        "Pa",
+        "The part of it that all shots of the rig share",
+        lambda r: r.budget.u_shared_of("true_stress_at_strain"),
+    ),
+    Field(
         "u_force_difference",
         "",
         "Standard uncertainty of R by all sources, as the signed 2 (F_in - F_out)/(F_in + F_out)",

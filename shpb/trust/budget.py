@@ -79,7 +79,7 @@ class Budget:
     @property
     def u_shared(self) -> dict[str, FloatArray]:
         """The part that all shots of the rig share (wave speed, density, bar diameters, gauges)."""
-        return {name: self._laid(self.shared[ALL_OUTPUTS.index(name)]) for name in OUTPUTS}
+        return {name: self.u_shared_of(name) for name in OUTPUTS}
 
     @property
     def u_true_strain(self) -> FloatArray:
@@ -99,6 +99,10 @@ class Budget:
     def u_of(self, name: str) -> FloatArray:
         """Standard uncertainty of one of ``ALL_OUTPUTS`` on the response's time axis, shape (samples,)."""
         return self._laid(self.total[ALL_OUTPUTS.index(name)])
+
+    def u_shared_of(self, name: str) -> FloatArray:
+        """The part of it that all shots of the rig share, as :meth:`u_of`."""
+        return self._laid(self.shared[ALL_OUTPUTS.index(name)])
 
     def interval(self, name: str, value: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Ends of the coverage interval of about 95 %, ``value`` -+ k u with k = 2, shape (samples,) each.
