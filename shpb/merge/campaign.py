@@ -20,6 +20,7 @@ from shpb.merge.points import FlowPoints
 from shpb.merge.prepare import from_quasistatic
 from shpb.merge.quasistatic import QuasistaticTest
 from shpb.merge.repeats import Repeats, average_repeats, group_repeats
+from shpb.merge.scope import points_for
 from shpb.merge.sensitivity import RangeSensitivities, rate_point, sensitivities_by_range
 from shpb.merge.settings import MergeSettings
 from shpb.merge.temperature import TemperatureCourse, temperature_course
@@ -77,7 +78,8 @@ class MergedMaterial:
     points : FlowPoints or None
         What the laws were fitted to.
     fits, not_fitted
-        One entry for each law that was asked for, best corrected Akaike criterion first.
+        One entry for each law that was asked for. Those fitted to most points first, of these the best corrected Akaike
+        criterion first: it compares laws on the same points only.
     """
 
     material: str
@@ -210,9 +212,8 @@ def _material(
             not_fitted.append(NotFitted(model=model, why=why_no_points))
         else:
             try:
-                fits.append(
-                    fit_model(_with_facts(model, specimens, settings), points, leave_out=settings.leave_out)
-                )
+                law = _with_facts(model, specimens, settings)
+                fits.append(fit_model(law, points_for(law, points), leave_out=settings.leave_out))
             except InputError as error:
                 not_fitted.append(NotFitted(model=model, why=str(error)))
         step()
@@ -226,7 +227,9 @@ def _material(
         shift=shift,
         why_no_shift=why_no_shift,
         points=points,
-        fits=tuple(sorted(fits, key=lambda fit: fit.aicc if fit.aicc is not None else np.inf)),
+        fits=tuple(
+            sorted(fits, key=lambda fit: (-len(fit.points), fit.aicc if fit.aicc is not None else np.inf))
+        ),
         not_fitted=tuple(not_fitted),
     )
 
