@@ -35,6 +35,15 @@ _COLUMNS: tuple[tuple[str, Callable[[ShotResult], FloatArray]], ...] = (
 )
 
 
+def _columns(result: ShotResult) -> tuple[tuple[str, FloatArray], ...]:
+    """Every column that this shot has: the temperature only where its heating is known."""
+    columns = tuple((name, of(result)) for name, of in _COLUMNS)
+    rise = result.response.heating_k
+    if rise is None:
+        return columns
+    return (*columns, ("temperature_K", rise + result.sheet.temperature_k))
+
+
 def _counts(result: ShotResult) -> FloatArray:
     """1 where a sample lies in the span that counts, else 0."""
     counts = np.zeros(result.response.time_s.size)
@@ -64,9 +73,10 @@ def export_csv(result: ShotResult, path: Path | str) -> Path:
     target = Path(path)
     response = result.response
     stop = min(response.loading[1] + (response.loading[1] - response.loading[0]) // 10, response.time_s.size)
-    values = np.column_stack([of(result)[:stop] for _, of in _COLUMNS])
+    columns = _columns(result)
+    values = np.column_stack([column[:stop] for _, column in columns])
     with whole_file(target) as part, part.open("w", encoding="utf-8", newline="") as file:
         writer = csv.writer(file)
-        writer.writerow([name for name, _ in _COLUMNS])
+        writer.writerow([name for name, _ in columns])
         writer.writerows([f"{value:.8g}" for value in row] for row in values.tolist())
     return target

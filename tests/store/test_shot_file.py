@@ -206,3 +206,21 @@ def test_plain_form_refuses_what_it_does_not_know() -> None:
     assert from_plain(Settings, json.loads(json.dumps(data))) == DEFAULT
     with pytest.raises(StoreError, match="Settings has no from_the_future"):
         from_plain(Settings, {**data, "from_the_future": 1})
+
+
+def test_csv_holds_the_temperature_where_it_is_known(tmp_path: Path) -> None:
+    faces, _ = uniform_plastic_shot(rig(), copper())
+    record = record_of(faces, rig())
+    warm = reduce(record, rig(), sheet(copper(heat_capacity_j_kg_k=Quantity(385.0))))
+    plain = reduce(record, rig(), sheet())
+
+    def table(result: ShotResult, name: str) -> tuple[list[str], list[str]]:
+        lines = export_csv(result, tmp_path / name).read_text().splitlines()
+        return lines[0].split(","), lines[-1].split(",")
+
+    names, last = table(warm, "warm.csv")
+    assert names[-1] == "temperature_K"
+    rise = warm.response.heating_k
+    assert rise is not None
+    assert float(last[-1]) == pytest.approx(293.15 + rise.max(), abs=1e-3)
+    assert "temperature_K" not in table(plain, "plain.csv")[0]
