@@ -179,6 +179,9 @@ class Limits:
     rate_variation: float = _limit(
         0.10, 1e-3, 10, "Largest variation of the strain rate (standard deviation over mean)"
     )
+    analyses: float = _limit(
+        0.03, 1e-3, 1, "Largest difference of the strains by one-wave and three-wave analysis, as a share"
+    )
     work: float = _limit(
         0.05, 1e-3, 1, "Largest difference between work at the faces and work in the specimen, as a share"
     )

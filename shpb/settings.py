@@ -76,7 +76,9 @@ class Settings:
     transmitted_foot_s: float | None = None
     analysis: Analysis = Analysis.ONE_WAVE  # the curve put forward; all are stored
     # All are computed and reported; these are applied too.
-    corrections: tuple[Correction, ...] = (Correction.MISMATCH,)
+    corrections: tuple[Correction, ...] = ()
+    # The formulas for equal bars whatever the bars are: without the term that two different ones need.
+    equal_bars: bool = False
     # Relative error that each pulse has on its own (gauge linearity, bending, rest of dispersion): what
     # keeps F_in, a difference of two large pulses, from being better known. Common practice: 0.5 %.
     pulse_error: float = 0.005
@@ -118,6 +120,12 @@ class Settings:
                     where=f"settings.{name}",
                     mend="Give the start before the end",
                 )
+
+    def switched_on(self, correction: Correction) -> bool:
+        """Whether a correction is asked for; that for unequal bars is, unless ``equal_bars`` says otherwise."""
+        if correction is Correction.MISMATCH:
+            return not self.equal_bars
+        return correction in self.corrections
 
     def replaced(self, **changes: object) -> Settings:
         """Return a copy with the given fields changed."""

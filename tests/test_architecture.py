@@ -33,11 +33,11 @@ ALLOWED: dict[str, set[str]] = {
     "reduction": {"trust", "response", "wave", "pulse", "record", "rig", "settings"},
     "forward": {"wave", "rig", "settings"},
     "merge": {"record", "response", "rig", "settings"},
-    "store": {"reduction", "trust", "response", "wave", "pulse", "record", "rig", "settings"},
-    "view": {"reduction", "trust", "response", "wave", "pulse", "record", "rig", "settings"},
+    "store": {"merge", "reduction", "trust", "response", "wave", "pulse", "record", "rig", "settings"},
+    "view": {"merge", "reduction", "trust", "response", "wave", "pulse", "record", "rig", "settings"},
     "demo": {"forward", "wave", "rig", "record", "settings"},
     "docs": {"response", "trust", "rig"},
-    "cli": {"demo", "view", "store", "reduction", "record", "rig", "settings"},
+    "cli": {"demo", "view", "store", "merge", "reduction", "record", "rig", "settings"},
 }
 
 

@@ -11,16 +11,20 @@ DESCRIPTION = """\
 Write a complete working folder of an invented lab (rig files, records in
 several formats, shot sheets, a shot list, quasi-static curves) and reduce
 every shot. Good shots and bad: out of equilibrium, clipped, overlapping,
-swapped channels, a loose gauge, a bar that yields."""
+swapped channels, a loose gauge, a bar that yields.
+With --merge it is a larger campaign: two alloys at three rates and five
+temperatures, with repeats and slow tests, to be merged; no figures."""
 EXAMPLE = """\
-example:
+examples:
   shpb demo first-campaign
+  shpb demo two-alloys --merge
 """
 
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
     """Declare the arguments."""
     verb.add_argument("folder", type=Path, metavar="FOLDER", help="new or empty folder")
+    verb.add_argument("--merge", action="store_true", help="a larger campaign, made to be merged")
     verb.add_argument("--write-only", action="store_true", help="write the folder, reduce nothing")
     verb.add_argument("--json", action="store_true", help="print JSON for other programs")
 
@@ -39,7 +43,7 @@ def run(options: argparse.Namespace) -> int:
     # While the records are computed the workers load what they need.
     pool = None if options.write_only else start_workers(workers, load_what_workers_need)
     try:
-        campaign = write_demo(options.folder)
+        campaign = write_demo(options.folder, to_merge=options.merge)
     except BaseException:
         if pool is not None:
             pool.shutdown(wait=False, cancel_futures=True)
@@ -51,11 +55,13 @@ def run(options: argparse.Namespace) -> int:
     tasks, _ = gather([*sheets, campaign.shot_list], rig_file=None)
     status = reduce_all(
         tasks,
-        Outputs(folder=campaign.folder / "results", figure="png"),
+        Outputs(folder=campaign.folder / "results", figure="none" if options.merge else "png"),
         as_json=options.json,
         full=False,
         workers=workers,
         pool=pool,
     )
+    if options.merge:
+        print(f"next: shpb merge {printable(campaign.folder)}", file=sys.stderr)
     # Rejected shots are part of the demo: it is done when all is as planned.
     return DONE if status == REJECTED else status

@@ -11,12 +11,12 @@ import os
 import sys
 from collections.abc import Sequence
 
-from shpb.cli import demo, forms, record, reduce
+from shpb.cli import demo, forms, merge, record, reduce
 from shpb.cli.status import BAD_INPUT, FAILED
 from shpb.errors import InputError, ShpbError
 from shpb.version import VERSION
 
-_VERBS = (reduce, record, forms, demo)
+_VERBS = (reduce, merge, record, forms, demo)
 
 _EPILOG = """\
 A verdict speaks about data, never about safety: do not go near the rig because

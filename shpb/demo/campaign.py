@@ -13,6 +13,7 @@ from importlib import resources
 from pathlib import Path, PurePosixPath
 
 from shpb.demo.materials import WRENMOOR
+from shpb.demo.merge_files import MERGE_BENCHES, merge_files, merge_truth
 from shpb.demo.paper import quasistatic_files, shot_list, shot_sheet
 from shpb.demo.record_files import record_files
 from shpb.demo.scenario import BENCHES, DemoShot, bench_text, demo_shots
@@ -48,8 +49,10 @@ class DemoCampaign:
     quasistatic_files: tuple[Path, ...]
 
 
-def write_demo(folder: str | Path, *, progress: Progress | None = None) -> DemoCampaign:
-    """Write the demo campaign: rig files, records, shot sheets, shot list, quasi-static curves.
+def write_demo(
+    folder: str | Path, *, to_merge: bool = False, progress: Progress | None = None
+) -> DemoCampaign:
+    """Write a demo campaign: rig files, records, shot sheets, shot list, quasi-static curves.
 
     The files are made beside ``folder`` and moved in at the end, so that a crash leaves nothing half
     done. A folder that holds a demo campaign already is brought back to its first state; other
@@ -59,6 +62,9 @@ def write_demo(folder: str | Path, *, progress: Progress | None = None) -> DemoC
     ----------
     folder : str or Path
         Made if it is not there.
+    to_merge : bool
+        The larger campaign of the same two alloys over rates and temperatures, in place of the one with a shot of
+        every kind.
     progress : callable or None
         Told in a few words what is being done.
 
@@ -69,7 +75,7 @@ def write_demo(folder: str | Path, *, progress: Progress | None = None) -> DemoC
     Raises
     ------
     InputError
-        If the folder holds files but no demo campaign, or a file of the campaign was changed since,
+        If the folder holds files but no demo campaign, or the other one, or a file of it was changed since,
         or it cannot be written to. Nothing is changed then.
 
     Examples
@@ -80,11 +86,14 @@ def write_demo(folder: str | Path, *, progress: Progress | None = None) -> DemoC
     """
     folder = Path(folder)
     say = progress if progress is not None else _silent
-    earlier = _earlier_files(folder)
+    earlier = _earlier_files(folder, to_merge=to_merge)
     say("firing the shots")
-    truths = campaign_truth()
+    truths = merge_truth() if to_merge else campaign_truth()
     say("writing the records")
-    files, shots = _campaign_files(truths, folder)
+    if to_merge:
+        files, shots = _to_merge_files(truths, folder)
+    else:
+        files, shots = _campaign_files(truths, folder)
     _refuse_changed(folder, files, earlier)
     say("moving the files into place")
     try:
@@ -99,7 +108,7 @@ def write_demo(folder: str | Path, *, progress: Progress | None = None) -> DemoC
         folder=folder,
         shots=shots,
         shot_list=folder / LIST_NAME,
-        rig_files=tuple(folder / _rig_name(bench) for bench in BENCHES),
+        rig_files=tuple(folder / _rig_name(bench) for bench in (MERGE_BENCHES if to_merge else BENCHES)),
         quasistatic_files=tuple(folder / name for name in files if name.startswith("quasistatic/")),
     )
 
@@ -144,19 +153,39 @@ def _campaign_files(
     return files, tuple(shots)
 
 
+def _to_merge_files(
+    truths: dict[str, DemoTruth], folder: Path
+) -> tuple[dict[str, bytes], tuple[WrittenShot, ...]]:
+    """The same for the campaign to merge: every shot stands in the list."""
+    files = {_rig_name(bench): bench_text(bench).encode() for bench in MERGE_BENCHES}
+    files.update(merge_files(truths, LIST_NAME))
+    shots = tuple(
+        WrittenShot(
+            shot=truth.shot,
+            record_files=(folder / "records" / f"{truth.shot.shot_id}.npz",),
+            rig_file=folder / _rig_name(truth.shot.bench),
+            sheet=None,
+        )
+        for truth in truths.values()
+    )
+    files[MARKER] = _marker(files, to_merge=True)
+    return files, shots
+
+
 def _readme() -> str:
     text = resources.files("shpb.demo").joinpath("texts", "README.txt").read_text(encoding="utf-8")
     lines = (f"  {shot.shot_id}  {shot.special}\n        expected: {shot.expected}" for shot in demo_shots())
     return text.replace("{shots}", "\n".join(lines))
 
 
-def _marker(files: dict[str, bytes]) -> bytes:
+def _marker(files: dict[str, bytes], *, to_merge: bool = False) -> bytes:
     """What tells a demo folder from others, and a changed file from one as it was written."""
     digests = {name: hashlib.sha256(content).hexdigest() for name, content in sorted(files.items())}
-    return (json.dumps({"format": _FORMAT, "version": 1, "files": digests}, indent=1) + "\n").encode()
+    head = {"format": _FORMAT, "version": 1, **({"to_merge": True} if to_merge else {})}
+    return (json.dumps({**head, "files": digests}, indent=1) + "\n").encode()
 
 
-def _earlier_files(folder: Path) -> dict[str, str]:
+def _earlier_files(folder: Path, *, to_merge: bool) -> dict[str, str]:
     """Digests of an earlier demo's files; empty for a new or an empty folder."""
     if folder.exists() and not folder.is_dir():
         raise InputError("this is a file", where=str(folder), mend="Give the name of a folder")
@@ -164,10 +193,18 @@ def _earlier_files(folder: Path) -> dict[str, str]:
         return {}
     try:
         marker = json.loads((folder / MARKER).read_text(encoding="utf-8"))
-        if marker["format"] == _FORMAT:
-            return {str(name): str(digest) for name, digest in marker["files"].items()}
+        files = {str(name): str(digest) for name, digest in marker["files"].items()}
+        known, other = marker["format"] == _FORMAT, bool(marker.get("to_merge")) != to_merge
     except (OSError, ValueError, KeyError, TypeError, AttributeError):
-        pass
+        known = False
+    if known and other:
+        raise InputError(
+            "the folder holds the other demo campaign",
+            where=str(folder),
+            mend="Give a new or an empty folder; nothing was written",
+        )
+    if known:
+        return files
     raise InputError(
         "the folder holds files and is no demo campaign",
         where=str(folder),

@@ -86,12 +86,16 @@ QUASISTATIC_RATES_PER_S = (1e-4, 1e-3, 1e-1)
 
 
 def quasistatic_curve(
-    alloy: Alloy, rate_per_s: float, temperature_k: float, random: np.random.Generator
+    alloy: Alloy,
+    rate_per_s: float,
+    temperature_k: float,
+    random: np.random.Generator,
+    noise: float = 0.0015,
 ) -> tuple[FloatArray, FloatArray]:
     """Engineering strain and stress [Pa] of a slow compression test: isothermal, with reading noise.
 
     The true plastic rate is the nominal rate; the elastic strain is that of the true modulus, as an
-    extensometer on the specimen gives it.
+    extensometer on the specimen gives it. ``noise`` is that of each reading, by the largest stress.
     """
     plastic = np.concatenate((np.zeros(1), np.geomspace(2e-5, 0.35, 160)))
     true_stress = alloy.law.stress_pa(plastic, rate_per_s, temperature_k)
@@ -102,8 +106,9 @@ def quasistatic_curve(
     true_stress = np.concatenate((rise * true_stress[0], true_stress))
     strain = -np.expm1(-true_strain)
     stress = true_stress / (1.0 - strain)
-    noise = 0.0015 * float(stress.max())
-    return strain, stress + noise * random.standard_normal(stress.size) * np.minimum(1.0, 50 * strain)
+    return strain, stress + noise * float(stress.max()) * random.standard_normal(stress.size) * np.minimum(
+        1.0, 50 * strain
+    )
 
 
 def rate_words(rate_per_s: float) -> str:

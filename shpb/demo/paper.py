@@ -27,7 +27,8 @@ class Readings:
 def readings(truth: DemoTruth) -> Readings:
     """Striker speed within its uncertainty, length to 0.01 mm, mass to 1 mg; seeded by the shot's id."""
     shot = truth.shot
-    volume_mm3 = math.pi / 4 * shot.diameter_mm**2 * shot.length_mm
+    fired = shot.really
+    volume_mm3 = math.pi / 4 * fired.diameter_mm**2 * fired.length_mm
     error = float(random_for(f"{shot.shot_id} readings").standard_normal())
     return Readings(
         striker_speed_m_s=round(shot.striker_speed_m_s * (1 + SPEED_U * error), 2),
@@ -87,14 +88,19 @@ _COLUMNS = (
 )  # fmt: skip
 
 
-def shot_list(shots: list[tuple[DemoTruth, str]]) -> str:
-    """Text of the shot list: one row for each shot, with its record as seen from the list."""
+def shot_list(shots: list[tuple[DemoTruth, str]], u_temperature_k: float | None = None) -> str:
+    """Text of the shot list: one row for each shot, with its record as seen from the list.
+
+    With ``u_temperature_k`` there is a column of that uncertainty [K], too.
+    """
+    more = {} if u_temperature_k is None else {"u_temperature_C": f"{u_temperature_k:g}"}
+    place = _COLUMNS.index("temperature_C") + 1
     out = io.StringIO()
     out.write("# Shot list of the demo campaign. Every value is invented.\n")
-    table = csv.DictWriter(out, _COLUMNS, lineterminator="\n")
+    table = csv.DictWriter(out, [*_COLUMNS[:place], *more, *_COLUMNS[place:]], lineterminator="\n")
     table.writeheader()
     for truth, record in shots:
-        table.writerow(_row(truth, record))
+        table.writerow({**_row(truth, record), **more})
     return out.getvalue()
 
 
@@ -140,6 +146,7 @@ def quasistatic_files() -> dict[str, bytes]:
                 strain, stress = quasistatic_curve(alloy, rate, kelvin, random_for(name))
                 lines = [
                     f"# material: {alloy.name}",
+                    "# kind: compression",
                     "# test: quasi-static compression, extensometer on the specimen (invented)",
                     f"# temperature_C: {celsius}",
                     f"# strain_rate_per_s: {rate:g}",

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections import defaultdict
+from collections.abc import Sequence
 from contextlib import suppress
 from dataclasses import dataclass
 from functools import cache
@@ -102,14 +103,26 @@ def demo_truth(shot_id: str) -> DemoTruth:
 @cache
 def campaign_truth() -> dict[str, DemoTruth]:
     """Return the truth of every demo shot by its id."""
+    return truths_of(demo_shots(), _END_S)
+
+
+def truths_of(shots: Sequence[DemoShot], end_s: float) -> dict[str, DemoTruth]:
+    """Fire shots side by side and return the truth of each by its id.
+
+    Parameters
+    ----------
+    shots : sequence of DemoShot
+    end_s : float
+        When all their records are over, in the forward model's time [s].
+    """
     groups: dict[int, list[DemoShot]] = defaultdict(list)
-    for shot in demo_shots():
+    for shot in shots:
         groups[shot.elements].append(shot)
     found = {}
-    for elements, shots in groups.items():
-        fired = fire([shot.plan for shot in shots], _END_S, elements=elements, courant=_COURANT)
-        found.update({shot.shot_id: _truth(shot, one) for shot, one in zip(shots, fired, strict=True)})
-    return {shot.shot_id: found[shot.shot_id] for shot in demo_shots()}
+    for elements, group in groups.items():
+        fired = fire([shot.plan for shot in group], end_s, elements=elements, courant=_COURANT)
+        found.update({shot.shot_id: _truth(shot, one) for shot, one in zip(group, fired, strict=True)})
+    return {shot.shot_id: found[shot.shot_id] for shot in shots}
 
 
 def _truth(shot: DemoShot, fired: ForwardShot) -> DemoTruth:

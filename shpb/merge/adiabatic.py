@@ -25,7 +25,7 @@ from shpb.errors import InputError
 from shpb.merge.models.model import Model, State
 from shpb.merge.points import FlowPoints, IntArray
 
-_NODES = 32
+_NODES = 20
 _POWER = 3  # strain = greatest strain * x^3
 _ROUNDS = 60
 _SETTLED_K = 1e-9

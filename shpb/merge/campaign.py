@@ -22,7 +22,7 @@ from shpb.merge.quasistatic import QuasistaticTest
 from shpb.merge.repeats import Repeats, average_repeats, group_repeats
 from shpb.merge.scope import points_for
 from shpb.merge.sensitivity import RangeSensitivities, rate_point, sensitivities_by_range
-from shpb.merge.settings import MergeSettings
+from shpb.merge.settings import NO_MODELS, MergeSettings
 from shpb.merge.temperature import TemperatureCourse, temperature_course
 from shpb.merge.upturn import Upturn, upturn
 from shpb.response.corrections.heating import USUAL_HEAT_SHARE
@@ -185,6 +185,8 @@ def merge_campaign(
 
 
 def _models(settings: MergeSettings) -> tuple[Model, ...]:
+    if settings.models == NO_MODELS:
+        return ()
     return tuple(model_named(key) for key in settings.models) if settings.models else all_models()
 
 
@@ -245,7 +247,7 @@ def _heat_k_m3_j(specimens: Sequence[Specimen]) -> float | None:
 
 def _with_facts(model: Model, specimens: Sequence[Specimen], settings: MergeSettings) -> Model:
     """The law with what is stated of the material, of the merge, or of both."""
-    stated = dict(settings.facts)
+    stated = {"reference_rate_per_s": settings.reference_rate_per_s, **settings.facts}
     for one in specimens:
         if one.melting_temperature_k is not None:
             stated.setdefault("melting_temperature_k", float(one.melting_temperature_k))
@@ -290,7 +292,7 @@ def _rates(conditions: tuple[Repeats, ...], settings: MergeSettings) -> tuple[Ra
 def _courses(
     rows: tuple[FlowRow, ...], conditions: tuple[Repeats, ...], settings: MergeSettings
 ) -> tuple[CourseAtRate, ...]:
-    """Flow stress against temperature, by rate: rates of one range within a third of a decade are one rate."""
+    """Flow stress against temperature, by rate: rates of one range within ``course_decades`` are one rate."""
     found = []
     for name in dict.fromkeys(c.range for c in conditions):
         members = [i for i, c in enumerate(conditions) if c.range is name]

@@ -88,8 +88,8 @@ def _left_out(problem: FitProblem, variables: FloatArray, of: BoolArray) -> tupl
     # Each problem has units of its own: what passes between them are parameters.
     near = without.variables(problem.parameters(variables), variables[problem.count :][kept])
     found = without.roughly(near)
-    if found is None:
-        return None, "the fit without it does not converge"
+    if not np.isfinite(without.problem.cost(found)):
+        return None, "the fit without it finds no finite stress"
     errors = np.zeros(len(points.shared))
     errors[kept] = found[without.count :]
     predicted = problem.variables(without.parameters(found), errors)

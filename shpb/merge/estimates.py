@@ -7,13 +7,15 @@ from collections.abc import Mapping
 import numpy as np
 
 from shpb.arrays import FloatArray
-from shpb.merge.fit_problem import FitProblem
+from shpb.merge.fit_problem import WALL, FitProblem
 from shpb.merge.least_squares import LeastSquaresFit, null_directions
 from shpb.merge.model_fit import ParameterEstimate, SharedEstimate, Standing
 from shpb.merge.models.model import Model, Parameter
 from shpb.merge.statements import bound_reason
 
 _TINY = 1e-300
+_ENOUGH_SHARED = 3
+_STOPPED = 0.9 * WALL
 _MOVES = 1e-9  # share of a silent direction below which a parameter does not take part in it
 
 
@@ -23,6 +25,7 @@ def covariance_inside(problem: FitProblem, found: LeastSquaresFit) -> FloatArray
     size, per = len(problem.model.parameters), problem.per_variable(found.parameters)
     covariance = np.zeros((size, size))
     covariance[np.ix_(free, free)] = found.covariance_inside[:count, :count] * np.outer(per, per)
+    covariance *= shared_factor(problem, found) ** 2
     return covariance
 
 
@@ -35,10 +38,18 @@ def covariance_and_correlation(problem: FitProblem, found: LeastSquaresFit) -> t
     covariance, correlation = np.zeros((size, size)), np.eye(size)
     correlation[np.ix_(free, free)] = found.correlation[:count, :count]
     known = np.where(np.isfinite(found.covariance), found.covariance, 0.0)[:count, :count]
-    covariance[np.ix_(free, free)] = known * np.outer(per, per)
+    covariance[np.ix_(free, free)] = known * np.outer(per, per) * shared_factor(problem, found) ** 2
     open_ones = free[~found.determined[:count] & ~found.at_bound[:count]]
     covariance[open_ones, open_ones] = np.inf
     return covariance, correlation
+
+
+def shared_factor(problem: FitProblem, found: LeastSquaresFit) -> float:
+    """By how much the covariance is widened because the scale errors are larger than stated, never below 1.
+
+    Root mean square of their pulls; from three on, since of one or two it says nothing.
+    """
+    return max(1.0, problem.pull(found.parameters)) if problem.prior_u.size >= _ENOUGH_SHARED else 1.0
 
 
 def silent_directions(problem: FitProblem, found: LeastSquaresFit) -> FloatArray:
@@ -69,6 +80,7 @@ def estimates_of(
     """Estimate of every parameter of the law: ``fixed`` by the user, ``held`` for a reason, or fitted."""
     values = problem.parameters(found.parameters)
     moves = np.abs(silent) / _sizes(problem, found)
+    factor = shared_factor(problem, found)
     place, estimates = 0, []
     for k, parameter in enumerate(problem.model.parameters):
         value = float(values[k])
@@ -82,7 +94,7 @@ def estimates_of(
             elif not found.determined[place]:
                 one = _without_u(parameter, Standing.NOT_DETERMINED, None, _instead(problem.model, moves, k))
             else:
-                one = _fitted(parameter, value, problem, found, place)
+                one = _fitted(parameter, value, problem, found, place, factor)
             place += 1
         estimates.append(one)
     return tuple(estimates)
@@ -113,15 +125,16 @@ def _instead(model: Model, moves: FloatArray, k: int) -> str:
 
 
 def _fitted(
-    parameter: Parameter, value: float, problem: FitProblem, found: LeastSquaresFit, place: int
+    parameter: Parameter, value: float, problem: FitProblem, found: LeastSquaresFit, place: int, factor: float
 ) -> ParameterEstimate:
     from scipy.special import stdtrit
 
-    inner = float(found.u_parameters[place])
+    inner = factor * float(found.u_parameters[place])
     u = inner * float(problem.per_variable(found.parameters)[place])
-    reach = float(stdtrit(found.degrees_of_freedom, 0.975))
+    reach = float(stdtrit(problem.freedom(found), 0.975))
     if parameter.by_ratio:
-        low, high = value * float(np.exp(-reach * inner)), value * float(np.exp(reach * inner))
+        wide = float(np.exp(min(reach * inner, 700.0)))  # beyond it a factor is infinite for all purposes
+        low, high = value / wide, value * wide
     else:
         low, high = value - reach * u, value + reach * u
     return ParameterEstimate(
@@ -134,6 +147,11 @@ def shared_estimates(problem: FitProblem, found: LeastSquaresFit) -> tuple[Share
     """What the fit found for each shared error."""
     errors, u = found.parameters[problem.count :], found.u_parameters[problem.count :]
     return tuple(
-        SharedEstimate(name=one.name, d=float(d), u=float(spread), prior_u=one.relative_u)
+        SharedEstimate(
+            name=one.name,
+            d=float(d),
+            u=float(spread) if abs(d) < _STOPPED * one.relative_u else None,
+            prior_u=one.relative_u,
+        )
         for one, d, spread in zip(problem.points.shared, errors, u, strict=True)
     )

@@ -13,6 +13,7 @@ where the scatter exceeds the stated uncertainty).
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
@@ -24,6 +25,7 @@ from shpb.merge.estimates import (
     covariance_inside,
     estimates_of,
     shared_estimates,
+    shared_factor,
     silent_directions,
 )
 from shpb.merge.fit_problem import FitProblem
@@ -35,7 +37,7 @@ from shpb.merge.rise import rise_with_temperature
 from shpb.merge.statements import about_parameters, about_points, about_residuals
 
 _ONE_TEMPERATURE_K = 10.0
-_WIDENINGS = 6
+_WIDENINGS = 20
 
 
 def fit_model(
@@ -74,6 +76,12 @@ def fit_model(
     _refuse(model, points)
     warnings = _across_peak(model, points, across_peak)
     base, free, held = _held(model, points, values)
+    if not free.any():
+        reasons = "; ".join(f"{name} is {why}" for name, why in held.items())
+        raise InputError(
+            f"nothing is left to fit: the others are fixed, and {reasons}", where=model.key,
+            mend="Add points at other rates or temperatures, or fix fewer parameters",
+        )  # fmt: skip
     if len(points) < int(free.sum()) + 1:
         raise InputError(
             f"{len(points)} point{'s' if len(points) != 1 else ''} for {int(free.sum())} parameters of {model.name} "
@@ -87,7 +95,7 @@ def fit_model(
     silent = silent_directions(problem, found)
     covariance, correlation = covariance_and_correlation(problem, found)
     estimates = estimates_of(problem, found, fixed=values, held=held, silent=silent)
-    shared = shared_estimates(problem, found)
+    shared, factor = shared_estimates(problem, found), shared_factor(problem, found)
     variables, widened, chi2 = found.parameters, problem.widened, problem.chi2(found.parameters)
     conditions = residuals_by_condition(problem, variables, leave_out=leave_out)
     if not found.converged:
@@ -103,8 +111,9 @@ def fit_model(
         silent=silent,
         shared=shared,
         chi2=chi2,
-        degrees_of_freedom=found.degrees_of_freedom,
+        degrees_of_freedom=problem.freedom(found),
         scatter_factor=widened,
+        shared_factor=factor,
         aicc=corrected_akaike(chi2, len(points), problem.count),
         left_out_rms=overall(conditions),
         conditions=conditions,
@@ -116,7 +125,7 @@ def fit_model(
             *warnings,
             *about_points(model, points),
             *about_parameters(model, estimates, correlation),
-            *about_residuals(conditions, shared, widened),
+            *about_residuals(conditions, shared, widened, factor, points.own_correlation),
         ),
     )
 
@@ -185,11 +194,15 @@ def _solved(
 ) -> tuple[FitProblem, LeastSquaresFit]:
     """Problem and minimum, with own uncertainties as wide as the scatter about the law.
 
-    Wider own uncertainties leave less to the shared errors, so the minimum moves with them: they are found together,
-    roughly first, since a law that does not hold makes a stiff problem of the stated ones.
+    Wider own uncertainties leave less to the shared errors, so the minimum moves with them: they are found together.
+    The search begins without shared errors and the width that this needs, and comes down from there: begun with the
+    stated uncertainties, the shared errors would take up what a law that does not hold leaves over.
     """
-    problem = FitProblem(model, points, base, free)
-    variables = problem.walked(problem.variables(base))
+    bare = FitProblem(model, replace(points, shared=()), base, free)
+    alone = bare.walked(bare.variables(base))
+    width = bare.widened_for(alone)
+    problem = FitProblem(model, points, base, free, 1.0 if width is None else width.widened)
+    variables = problem.walked(problem.variables(bare.parameters(alone)))
     for _ in range(_WIDENINGS):
         wider = problem.widened_for(variables)
         if wider is None:

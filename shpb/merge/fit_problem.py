@@ -4,27 +4,34 @@ Variables are the free parameters in units of their usual size (logarithms where
 magnitude), then one relative scale error d for each shared error:
 
     own residual     (measured - (1 + sum of d) law) / own uncertainty
-    shared residual  d / its relative uncertainty
+    shared residual  d / its relative uncertainty u, times 1 + (d / 3 u)^8
+
+The last factor is 1 for any likely scale error and a wall from three times its uncertainty on: beyond that it is not
+the rig that is off, but the law. Where own errors go along a curve (``FlowPoints.own_correlation``), the own residuals
+of each condition are combined to ones that are independent, by the inverse root of their correlation.
 """
 
 from __future__ import annotations
 
-from functools import partial
+from dataclasses import replace
 
 import numpy as np
 
 from shpb.arrays import BoolArray, FloatArray
 from shpb.merge.adiabatic import PathsOfPoints
-from shpb.merge.derivatives import differences
+from shpb.merge.derivatives import differences, forward_differences
 from shpb.merge.least_squares import LeastSquaresFit, Problem, polish, summary, walk
 from shpb.merge.models.model import Model
 from shpb.merge.points import FlowPoints
 
 _LEAST = 1e-3  # of its usual size, for which a parameter's step is chosen where it is smaller
 _TOLERANCE = 1e-10  # of the variables, to which the last steps go where they still get shorter
-_NEARLY, _ROUGHLY = 1e-3, 1e-2  # relative offset: in units of the parameters' own uncertainty
+_NEARLY = 1e-2  # relative offset: in units of the parameters' own uncertainty
+_ROUGHLY, _FEW = 1e-6, 20
 _FLAT = 1e-10
 _SAME_WIDTH = 1e-4
+_STEEP = 8
+WALL = 3.0
 _EVALUATIONS, _STEPS = 100, 25
 _SCATTERED, _TRIED = 60, 3
 _SEED = 1983
@@ -54,12 +61,13 @@ class FitProblem:
         self.by_ratio = np.array([p.by_ratio for p in model.parameters])[free]
         self.sizes = np.where(self.by_ratio, 1.0, model.sizes(points)[free])
         self._paths = PathsOfPoints(model, points)
+        self._apart = _Apart(points)
         low, high = self._inward(model.lower[free]), self._inward(model.upper[free])
-        open_ended = np.full(self.prior_u.size, np.inf)
+        no_bound = np.full(self.prior_u.size, np.inf)
         self.problem = Problem(
             residuals=self.residuals,
-            lower=np.concatenate((low, -open_ended)),
-            upper=np.concatenate((high, open_ended)),
+            lower=np.concatenate((low, -no_bound)),
+            upper=np.concatenate((high, no_bound)),
             least=np.concatenate((np.full(self.count, _LEAST), self.prior_u)),
             jacobian=self.slopes,
         )
@@ -106,8 +114,15 @@ class FitProblem:
     def residuals(self, variables: FloatArray) -> FloatArray:
         """Own residuals, then those of the scale errors, shape (points + shared,)."""
         law = self.law_pa(variables) * self.factors(variables)
-        own = (self.points.stress_pa - law) / self.u_own_pa
-        return np.concatenate((own, variables[self.count :] / self.prior_u))
+        own = self._apart((self.points.stress_pa - law) / self.u_own_pa)
+        pulls = variables[self.count :] / self.prior_u
+        return np.concatenate((own, pulls * (1 + (pulls / WALL) ** _STEEP)))
+
+    def plain_slopes(self, variables: FloatArray, fine: bool) -> FloatArray:
+        """Jacobian without the wall, for the covariance: the scale errors are known as well as they state."""
+        slopes = self.slopes(variables, fine)
+        slopes[len(self.points) :, self.count :] = np.diag(1 / self.prior_u)
+        return slopes
 
     def slopes(self, variables: FloatArray, fine: bool) -> FloatArray:
         """Jacobian of the residuals, shape (points + shared, variables)."""
@@ -118,18 +133,32 @@ class FitProblem:
             return self.law_pa(np.concatenate((inner, errors)))
 
         inner = variables[: self.count]
-        by_parameter = differences(law, inner, low, high, fine=fine, least=_LEAST)
+        here = law(inner)
+        if fine:
+            by_parameter = differences(law, inner, low, high, fine=True, least=_LEAST)
+        else:
+            by_parameter = forward_differences(law, inner, here, high, least=_LEAST)
         weight = self.factors(variables) / self.u_own_pa
-        by_error = -(self.members * (law(inner) / self.u_own_pa)).T
-        top = np.hstack((-by_parameter * weight[:, None], by_error))
-        below = np.hstack((np.zeros((self.prior_u.size, self.count)), np.diag(1 / self.prior_u)))
+        by_error = -(self.members * (here / self.u_own_pa)).T
+        top = self._apart(np.hstack((-by_parameter * weight[:, None], by_error)))
+        by_pull = 1 + (_STEEP + 1) * (errors / self.prior_u / WALL) ** _STEEP
+        below = np.hstack((np.zeros((self.prior_u.size, self.count)), np.diag(by_pull / self.prior_u)))
         return np.vstack((top, below))
 
     def chi2(self, variables: FloatArray) -> float:
         """Sum of squares over the stated uncertainties, own and shared."""
-        residuals = self.residuals(variables)
-        residuals[: len(self.points)] *= self.widened
-        return float(residuals @ residuals)
+        own = self.residuals(variables)[: len(self.points)] * self.widened
+        pulls = variables[self.count :] / self.prior_u
+        return float(own @ own + pulls @ pulls)
+
+    def freedom(self, fit: LeastSquaresFit) -> int:
+        """Degrees of freedom: points less the parameters that were free to move."""
+        return len(self.points) - self.count + int(fit.at_bound[: self.count].sum())
+
+    def pull(self, variables: FloatArray) -> float:
+        """Root mean square of the scale errors over their stated uncertainties; 0 where there are none."""
+        pulls = variables[self.count :] / self.prior_u
+        return float(np.sqrt(np.mean(pulls**2))) if pulls.size else 0.0
 
     def widened_for(self, variables: FloatArray) -> FitProblem | None:
         """The problem with own uncertainties as wide as the scatter (Birge ratio, never below 1); None if they are."""
@@ -161,15 +190,9 @@ class FitProblem:
         fit = self._polished(variables)
         return fit if fit.converged else self.from_(variables)
 
-    def roughly(self, variables: FloatArray) -> FloatArray | None:
-        """Variables at the minimum near ``variables`` to a hundredth of their uncertainty; None if it is not found."""
-        polished = partial(
-            polish, self.problem, tolerance=np.inf, near=_ROUGHLY, fine=False, most_steps=_STEPS
-        )
-        point, converged = polished(variables)
-        if not converged:
-            point, converged = polished(self.walked(point))
-        return point if converged else None
+    def roughly(self, variables: FloatArray) -> FloatArray:
+        """Variables near the minimum, from near it: to a few hundredths of their uncertainty, in few steps."""
+        return walk(self.problem, variables, evaluations=_FEW, tolerance=_ROUGHLY)
 
     def from_(self, variables: FloatArray) -> LeastSquaresFit:
         """Fit from any variables."""
@@ -183,4 +206,40 @@ class FitProblem:
         point, converged = polish(
             self.problem, variables, tolerance=_TOLERANCE, near=_NEARLY, most_steps=_STEPS
         )
-        return summary(self.problem, point, converged, "absolute")
+        return summary(replace(self.problem, jacobian=self.plain_slopes), point, converged, "absolute")
+
+
+class _Apart:
+    """Makes own residuals independent of each other: the inverse root of their correlation, condition by condition.
+
+    What goes along a curve is one factor on its stress, no larger than the relative uncertainty of its best point: a
+    point that is less certain is so by itself. (A common error as large as each point's own would be read off their
+    differences and take the fit out of its points: R. W. Peelle's puzzle.) With s each point's stress over its own
+    uncertainty, by the largest of the condition, the correlation is ``c s s'`` beside the diagonal. Residuals x over
+    ``sqrt(1 - c s^2)`` have the covariance I + v v' with ``v = sqrt(c) s/sqrt(1 - c s^2)``, whose inverse root is
+    ``x - v (v'x) k/(v'v)``, ``k = 1 - 1/sqrt(1 + v'v)``: no matrix is needed.
+    """
+
+    def __init__(self, points: FlowPoints) -> None:
+        c = points.own_correlation
+        _, self._group = np.unique(points.condition, return_inverse=True)
+        count = int(self._group.max()) + 1
+        share = points.stress_pa / points.u_own_pa
+        best = np.zeros(count)
+        np.maximum.at(best, self._group, share)
+        share = share / best[self._group]
+        self._root = np.sqrt(1 - c * share**2)
+        self._along = np.sqrt(c) * share / self._root
+        square = np.bincount(self._group, self._along**2, count)
+        self._part = np.divide(1 - 1 / np.sqrt(1 + square), square, out=np.zeros(count), where=square > 0)
+        self._needed = c > 0
+
+    def __call__(self, values: FloatArray) -> FloatArray:
+        """Of residuals, shape (points,), or of their slopes, shape (points, variables)."""
+        if not self._needed:
+            return values
+        scaled = (values.T / self._root).T
+        sums = np.zeros((self._part.size, *values.shape[1:]))
+        np.add.at(sums, self._group, (scaled.T * self._along).T)
+        common = (sums.T * self._part).T
+        return np.asarray(scaled - (common[self._group].T * self._along).T)

@@ -14,6 +14,10 @@ from shpb.merge.repeats import Repeats
 from shpb.merge.sensitivity import rate_point
 
 _SAME_DECADES = 0.5  # rates this near serve the slope over temperature
+_SAME_K = 1.0
+# Of the own errors of a curve: its size, its temperature and its alignment move the whole of it, noise and ringing
+# only parts. An estimate; near 1 it hardly matters.
+_ALONG_CURVE = 0.9
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -45,6 +49,8 @@ class FlowRow:
         At the start, and adiabatic rise up to this strain [K]; None where isothermal.
     isothermal_pa : float or None
         Stress at the start temperature had the specimen stayed cold [Pa]; None where the campaign does not tell.
+    u_isothermal_pa : float or None
+        Its standard uncertainty, with that of the slope over temperature [Pa].
     """
 
     condition: int
@@ -62,6 +68,7 @@ class FlowRow:
     temperature_k: float
     rise_k: float | None
     isothermal_pa: float | None = None
+    u_isothermal_pa: float | None = None
 
     @property
     def u_pa(self) -> float:
@@ -114,33 +121,69 @@ def _row(number: int, condition: Repeats, strain: float) -> FlowRow | None:
 def isothermal(rows: tuple[FlowRow, ...], conditions: Sequence[Repeats]) -> tuple[FlowRow, ...]:
     """Add the isothermal stress where other temperatures at the same strain and rate tell the slope.
 
-    s_iso = s - (ds/dT) rise, with the slope from the row to its next warmer neighbour, both at the temperature
-    that the specimen had by then. Isothermal rows are what they are.
+    s_iso = s - (ds/dT) rise, with the slope half-way up the rise of the parabola through the row and two other
+    temperatures: its neighbours, or the two nearest where it is the first or the last. Each stress stands at the
+    temperature that the specimen had by then. Near a strength peak the slope changes from one side to the other:
+    half of that change is its uncertainty. Where there is one other temperature only, the straight line serves, and
+    half its slope is the uncertainty. Isothermal rows are what they are.
     """
     del conditions
 
     def completed(row: FlowRow) -> FlowRow:
         if row.rise_k is None:
-            return replace(row, isothermal_pa=row.stress_pa)
-        alike = [
-            other
-            for other in rows
-            if other.plastic_strain == row.plastic_strain
-            and other.range is row.range
-            and abs(np.log10(other.rate_per_s / row.rate_per_s)) < _SAME_DECADES
-            and abs(other.temperature_k - row.temperature_k) > 1.0
-        ]
-        if not alike:
+            return replace(row, isothermal_pa=row.stress_pa, u_isothermal_pa=row.u_pa)
+        found = _slope_pa_k(row, _neighbours(row, rows))
+        if found is None:
             return row
-        # The neighbour nearest in temperature; the warmer one where both are as near.
-        other = min(alike, key=lambda one: (abs(one.temperature_k - row.temperature_k), -one.temperature_k))
-        here, there = row.temperature_k + row.rise_k, other.temperature_k + (other.rise_k or 0.0)
-        if abs(there - here) < 1.0:
-            return row
-        slope = (other.stress_pa - row.stress_pa) / (there - here)
-        return replace(row, isothermal_pa=row.stress_pa - slope * row.rise_k)
+        slope, u_slope = found
+        return replace(
+            row,
+            isothermal_pa=row.stress_pa - slope * row.rise_k,
+            u_isothermal_pa=float(np.hypot(row.u_pa, u_slope * row.rise_k)),
+        )
 
     return tuple(completed(row) for row in rows)
+
+
+def _heated_k(row: FlowRow) -> float:
+    return row.temperature_k + (row.rise_k or 0.0)
+
+
+def _neighbours(row: FlowRow, rows: Sequence[FlowRow]) -> list[FlowRow]:
+    """At most two rows of other temperatures that tell the slope at a row, the nearer first."""
+    nearest: list[FlowRow] = []  # of each temperature the row of the nearest rate
+    here = np.log10(row.rate_per_s)
+    for other in sorted(rows, key=lambda one: abs(np.log10(one.rate_per_s) - here)):
+        if (
+            other.plastic_strain == row.plastic_strain
+            and other.range is row.range
+            and abs(np.log10(other.rate_per_s) - here) < _SAME_DECADES
+            and all(abs(other.temperature_k - one.temperature_k) > _SAME_K for one in (row, *nearest))
+        ):
+            nearest.append(other)
+    nearest.sort(key=lambda one: abs(one.temperature_k - row.temperature_k))
+    cooler = [one for one in nearest if one.temperature_k < row.temperature_k]
+    warmer = [one for one in nearest if one.temperature_k > row.temperature_k]
+    chosen = [cooler[0], warmer[0]] if cooler and warmer else nearest[:2]
+    return sorted(chosen, key=lambda one: abs(one.temperature_k - row.temperature_k))
+
+
+def _slope_pa_k(row: FlowRow, others: Sequence[FlowRow]) -> tuple[float, float] | None:
+    """Slope of the stress over temperature half-way up a row's rise, and its uncertainty [Pa/K]; None if untold."""
+    away = np.array([_heated_k(other) - _heated_k(row) for other in others])
+    if not others or np.abs(away).min() < 1.0:
+        return None
+    chords = np.array([other.stress_pa - row.stress_pa for other in others]) / away
+    if len(others) == 1:
+        return float(chords[0]), abs(float(chords[0])) / 2
+    if abs(away[1] - away[0]) < 1.0:
+        return None
+    bend = (chords[1] - chords[0]) / (away[1] - away[0])
+    # The parabola through the row has the slope chord - bend (away - 2 x) at x from it; half-way x = -rise/2.
+    slope = chords[0] - bend * (away[0] + (row.rise_k or 0.0))
+    # From one straight piece of the three points to the other.
+    change = bend * (away[1] if away[0] * away[1] > 0 else away[1] - away[0])
+    return float(slope), abs(float(change)) / 2
 
 
 def flow_points(
@@ -180,5 +223,6 @@ def flow_points(
         adiabatic=np.array([heated and row.rise_k is not None for row in rows]),
         shared=tuple(shared),
         heat_k_m3_j=heat_k_m3_j,
+        own_correlation=_ALONG_CURVE,
         labels={number: condition_label(one) for number, one in enumerate(conditions)},
     )

@@ -18,6 +18,7 @@ from shpb.rig.gauge import TestKind
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 
+RESTRICTED = "restricted"  # begins the remark on such a shot
 _STEP = 5e-4  # of plastic strain, to which a curve of thousands of samples is thinned
 _LEAST_U = 1e-4  # relative: an own uncertainty below this has been forgotten, not measured
 
@@ -121,6 +122,11 @@ def from_shot(shot: StoredCurve, *, indentation_out: bool = True) -> MaterialCur
     shared = float(np.median(shot.u_shared_pa[at] / stress))
     own = np.sqrt(np.maximum(shot.u_pa[at] ** 2 - shot.u_shared_pa[at] ** 2, (_LEAST_U * stress) ** 2))
     inside = plastic[chosen]
+    if shot.verdict == "restrict":
+        remarks = (
+            *remarks,
+            f"{RESTRICTED} by {', '.join(shot.reasons) or 'its findings'}: only its span enters",
+        )
     return MaterialCurve(
         plastic_strain=inside,
         stress_pa=stress,

@@ -61,11 +61,15 @@ class ParameterEstimate:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class SharedEstimate:
-    """What the fit found for a shared scale error: factor 1 + d on the stress of its points."""
+    """What the fit found for a shared scale error: factor 1 + d on the stress of its points.
+
+    ``u`` is its standard uncertainty after the fit, None where ``d`` was stopped near three times its stated one,
+    ``prior_u``.
+    """
 
     name: str
     d: float
-    u: float
+    u: float | None
     prior_u: float
 
 
@@ -161,6 +165,8 @@ class ModelFit:
     scatter_factor : float
         Own uncertainties were widened by this, where the points scatter about the law by more than they state
         (Birge ratio, never below 1).
+    shared_factor : float
+        The covariance was widened by the square of this, where the scale errors come out larger than they state.
     aicc : float or None
         Corrected Akaike information criterion; of laws fitted to the same points the lowest is the best.
     left_out_rms : float or None
@@ -170,6 +176,7 @@ class ModelFit:
         Law and temperature at the points, without the shared errors.
     condition_number : float
     converged : bool
+        The parameters are at the minimum to a hundredth of their uncertainty at least.
     warnings : tuple of str
         What the data cannot tell, and what to mind.
     """
@@ -186,6 +193,7 @@ class ModelFit:
     chi2: float
     degrees_of_freedom: int
     scatter_factor: float
+    shared_factor: float
     aicc: float | None
     left_out_rms: float | None
     conditions: tuple[ConditionResidual, ...]

@@ -66,7 +66,7 @@ class FlowPoints:
     temperature_k : float array, shape (points,)
         Temperature at the start of the test [K], one value a condition.
     u_own_pa : float array, shape (points,)
-        Standard uncertainty of the stress that no other point shares [Pa].
+        Standard uncertainty of the stress that no other condition shares [Pa].
     condition : int array, shape (points,)
         Points with one number were measured together (one test, or repeats of one condition).
     adiabatic : bool array, shape (points,)
@@ -75,6 +75,9 @@ class FlowPoints:
         Errors that points have in common. An error of one specimen alone is one too.
     heat_k_m3_j : float or None
         Temperature rise per plastic work, share/(density * heat capacity) [K m^3/J]; None if not known.
+    own_correlation : float
+        Part of the own variance of a condition's best point that is one factor on the whole curve, as a wrong diameter
+        makes it: the correlation of equally good points. 0 where each point has errors of its own; below 1.
     labels : mapping of int to str, optional
         What to call a condition in messages; "condition 3" where it has none.
 
@@ -93,6 +96,7 @@ class FlowPoints:
     adiabatic: BoolArray
     shared: tuple[SharedError, ...] = ()
     heat_k_m3_j: float | None = None
+    own_correlation: float = 0.0
     labels: Mapping[int, str] | None = None
 
     def __post_init__(self) -> None:
@@ -112,6 +116,10 @@ class FlowPoints:
             raise InputError(
                 f"found {self.heat_k_m3_j:g}, expected share/(density * heat capacity) above 0 in K m3/J",
                 where="heat_k_m3_j",
+            )
+        if not 0 <= self.own_correlation < 1:
+            raise InputError(
+                f"found {self.own_correlation:g}, expected 0 to below 1", where="own_correlation"
             )
 
     def __len__(self) -> int:

@@ -10,6 +10,8 @@ from shpb.errors import InputError
 from shpb.merge.prepare import CurveSettings
 from shpb.merge.repeats import RepeatSettings
 
+NO_MODELS = ("none",)
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class MergeSettings:
@@ -23,7 +25,7 @@ class MergeSettings:
         Whether bar curves enter without the strain that the bar faces add. Quasi-static curves have none: left in, it
         costs 4 to 5 % of a rate sensitivity.
     models : tuple of str
-        Keys of the laws to fit; empty for all that there are.
+        Keys of the laws to fit; empty for all that there are, ``NO_MODELS`` for none.
     facts : mapping of str to float
         Facts of the laws in SI, such as ``melting_temperature_k``; sheets state some.
     reference_rate_per_s : float
@@ -44,7 +46,7 @@ class MergeSettings:
     facts: Mapping[str, float] = field(default_factory=dict)
     reference_rate_per_s: float = 1.0
     allowances: Mapping[str, float] = field(default_factory=lambda: {"inertia": 0.02, "friction": 0.03})
-    course_decades: float = 1 / 3
+    course_decades: float = 0.2
     u_temperature_k: float = 3.0
     seed: int = 1
     leave_out: bool = True

@@ -12,9 +12,11 @@ from shpb.merge.points import FlowPoints
 
 _ALIKE = 0.98  # correlation beyond which two parameters trade against each other (common practice)
 _VAGUE = 0.5  # relative uncertainty beyond which a value says little
-_PULLED = 3.0
+_PULLED = 2.0
+_FEW = 3
 _RUN_POINTS = 5
 _WIDE = 2.0
+_STRETCHED = 1.3
 
 
 def about_parameters(
@@ -59,27 +61,41 @@ def about_points(model: Model, points: FlowPoints) -> tuple[str, ...]:
 
 
 def about_residuals(
-    conditions: tuple[ConditionResidual, ...], shared: tuple[SharedEstimate, ...], scatter_factor: float
+    conditions: tuple[ConditionResidual, ...],
+    shared: tuple[SharedEstimate, ...],
+    scatter_factor: float,
+    shared_factor: float,
+    own_correlation: float,
 ) -> tuple[str, ...]:
     """Signs that the law does not hold, or that errors are not what they are said to be."""
     said = []
     one_sided = [c for c in conditions if c.points >= _RUN_POINTS and c.longest_run == c.points]
-    if 2 * len(one_sided) >= len(conditions) and one_sided:
+    if own_correlation == 0 and one_sided and 2 * len(one_sided) >= len(conditions):
         said.append(
             f"in {len(one_sided)} of {len(conditions)} conditions every point lies on one side of the law: their "
-            "points are not independent, and the intervals are too narrow unless each condition has its shared error"
+            "points are not independent, and the intervals are too narrow: state own_correlation, or a shared error of "
+            "each condition"
         )
     if scatter_factor > _WIDE:
         said.append(
             f"the points scatter about the law by {scatter_factor:.1f} times their own uncertainty: the law does not "
             "hold within it, or the uncertainty is stated too small; the intervals are widened accordingly"
         )
-    said += [
-        f"{one.name}: the fit wants a scale error of {100 * one.d:+.2f} %, {abs(one.d) / one.prior_u:.1f} times its "
-        "stated uncertainty"
-        for one in shared
-        if abs(one.d) > _PULLED * one.prior_u
-    ]
+    if shared_factor > _STRETCHED:
+        said.append(
+            f"scale errors come out {shared_factor:.1f} times as large as stated: the law does not hold from one "
+            "condition to the next, or they are stated too small; the intervals are widened accordingly"
+        )
+    pulled = [one for one in shared if abs(one.d) > _PULLED * one.prior_u]
+    pulled.sort(key=lambda one: -abs(one.d) / one.prior_u)
+    for one in pulled[:_FEW]:
+        limit = ", where it was stopped" if one.u is None else ""
+        said.append(
+            f"{one.name}: the fit wants a scale error of {100 * one.d:+.2f} %, {abs(one.d) / one.prior_u:.1f} times "
+            f"its stated uncertainty{limit}"
+        )
+    if len(pulled) > _FEW:
+        said.append(f"and {len(pulled) - _FEW} more scale errors beyond {_PULLED:g} times their uncertainty")
     return tuple(said)
 
 

@@ -119,7 +119,7 @@ def specimen_response(
     """
     specimen, kind = sheet.specimen, sheet.kind
     motion = face_motion(faces, rig)
-    own_bars = Correction.MISMATCH in settings.corrections
+    own_bars = settings.switched_on(Correction.MISMATCH)
     raw = Curves(
         one_wave(faces, motion, rig, specimen, kind, own_bars=own_bars),
         two_wave(faces, motion, rig, specimen, kind, own_bars=own_bars),
@@ -158,7 +158,7 @@ def specimen_response(
         loading=loading,
         span=span,
         rate=rate_summary(three.strain_rate_per_s, three.true_strain_rate_per_s, span or loading),
-        balance=work_balance(pulses, faces, three, rig, specimen, loading, sheet.striker_speed_m_s),
+        balance=work_balance(pulses, faces, raw.three_wave, rig, specimen, loading, sheet.striker_speed_m_s),
         corrections=reports,
         flow=flow_stresses(
             curve.true_strain, curve.true_stress_pa, curve.true_strain_rate_per_s, span, modulus,

@@ -25,6 +25,9 @@ class Bar:
     wave_speed_m_s: Quantity
     poisson_ratio: Quantity
     yield_strength_pa: Quantity | None = None
+    stated_modulus_pa: Quantity | None = (
+        None  # what the wave speed was worked out from, where it was not measured
+    )
     modulus_temperature_coefficient_per_k: Quantity | None = None  # dE/dT/E, negative for metals
 
     def __post_init__(self) -> None:

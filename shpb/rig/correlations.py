@@ -10,7 +10,7 @@ from shpb.rig.mistakes import Collector, nearest, shown
 
 TABLE = "correlations"
 _GAUGE = ("gauge factor", "excitation", "gain", "gauge distance")
-_BAR = ("density", "diameter", "wave speed", "Poisson's ratio")
+_BAR = ("density", "diameter", "wave speed", "modulus", "Poisson's ratio")
 # As in the uncertainty budget; "bars" where both are of one stock.
 NAMES = (
     *(f"{side} {what}" for side in ("incident", "transmitted") for what in _GAUGE),

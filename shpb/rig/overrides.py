@@ -39,7 +39,7 @@ def _stated(
         try:
             base.replaced(**{key.field: value})
         except InputError as error:
-            seen.add(values.key(key.stem), error.what, error.mend or "another value")
+            seen.add(values.key(key.stem), error.what.removeprefix("found "), error.mend or "another value")
         else:
             stated[key.field] = value
     return stated

@@ -168,6 +168,7 @@ def _bar(values: Values, speed: Quantity | None, seen: Collector) -> Bar | None:
         wave_speed_m_s=speed,
         poisson_ratio=given["poisson_ratio"],
         yield_strength_pa=given.get("yield_strength"),
+        stated_modulus_pa=None if values.has("wave_speed") else values.quantity("young_modulus"),
         modulus_temperature_coefficient_per_k=given.get("modulus_temperature_coefficient"),
     )
 

@@ -55,10 +55,17 @@ FACTS: dict[str, Fact] = {
     "reflected_foot_s": Fact(_FOOT.format("reflected"), "367.4"),
     "transmitted_foot_s": Fact(_FOOT.format("transmitted"), "307.1"),
     "analysis": Fact("Which curve is put forward as the result; all are stored"),
-    "corrections": Fact("Corrections that are applied; all are computed and reported"),
+    "corrections": Fact(
+        "Corrections that are applied; all are computed and reported. That for unequal bars is in anyway: see "
+        "equal_bars"
+    ),
+    "equal_bars": Fact(
+        "Take the one- and two-wave formulas for equal bars whatever the bars are, without the term that two "
+        "different ones need"
+    ),
     "pulse_error": Fact(
         "Relative error that each pulse has on its own; sets the floor below which R(t) says nothing",
-        low=0,
+        low=1e-6,
         high=0.5,
     ),
     "flow_strains": Fact("Plastic strains at which the flow stress is reported", low=1e-5, high=5),

@@ -29,7 +29,7 @@ _COLUMNS: tuple[tuple[str, Callable[[ShotResult], FloatArray]], ...] = (
     ("force_in_kN", lambda r: 1e-3 * r.response.motion.force_in_n),
     ("force_out_kN", lambda r: 1e-3 * r.response.motion.force_out_n),
     ("equilibrium_ratio", lambda r: r.response.equilibrium.ratio),
-    ("u_equilibrium_ratio", lambda r: r.response.equilibrium.floor),
+    ("equilibrium_floor", lambda r: r.response.equilibrium.floor),
     ("u_force_difference", lambda r: r.budget.u_force_difference),
     ("indentation_strain", lambda r: r.response.indentation_strain),
 )

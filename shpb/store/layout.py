@@ -76,7 +76,7 @@ WAVE: tuple[Field, ...] = (
 
 TRUST: tuple[Field, ...] = (
     Field("time", "s", "Time since the front reached the incident face", lambda r: r.response.time_s),
-    Field("u_equilibrium_ratio", "", "Measurement floor of R", lambda r: r.response.equilibrium.floor),
+    Field("equilibrium_floor", "", "Measurement floor of R", lambda r: r.response.equilibrium.floor),
     Field("u_true_strain", "", "Standard uncertainty of true strain", lambda r: r.budget.u_true_strain),
     Field("u_true_stress", "Pa", "Standard uncertainty of true stress", lambda r: r.budget.u_true_stress_pa),
     Field(

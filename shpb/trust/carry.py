@@ -21,6 +21,7 @@ from shpb.settings import Analysis, Correction
 from shpb.trust.changes import SCALES, IntArray, PulseChanges, Scene, scale_changes
 from shpb.trust.evidence import Evidence
 from shpb.trust.sources import PULSES, STRESS_CORRECTIONS, Way
+from shpb.wave.indentation import face_indentation_m
 
 # Engineering curves of both analyses.
 OUTPUTS = ("stress_1w", "strain_rate_1w", "strain_1w", "stress_3w", "strain_rate_3w", "strain_3w")
@@ -49,7 +50,7 @@ class PerUnit(NamedTuple):
         rig, specimen = evidence.rig, evidence.sheet.specimen
         bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
         # The one-wave rate looks at the difference of the impedances only where that is asked for.
-        own_bars = float(Correction.MISMATCH in evidence.settings.corrections)
+        own_bars = float(evidence.settings.switched_on(Correction.MISMATCH))
         return cls(
             float(bar_i.force_per_strain_n),
             float(bar_t.force_per_strain_n),
@@ -67,6 +68,19 @@ _STRESS_CORRECTIONS = frozenset(which.value for which in STRESS_CORRECTIONS)
 
 def _at(change: FloatArray | float, at: IntArray) -> FloatArray | float:
     return change if isinstance(change, float) else change[at]
+
+
+def faces_by_force(evidence: Evidence, at: IntArray | slice) -> tuple[FloatArray, FloatArray] | None:
+    """Indentation of either bar face by a unit of force [m/N] at some samples; None where it is not taken off."""
+    response, specimen, rig = evidence.response, evidence.sheet.specimen, evidence.rig
+    if not response.correction(Correction.INDENTATION).applied:
+        return None
+    stretch = np.clip(1.0 - response.three_wave.strain[at], 0.05, 2.0)
+    radius = specimen.diameter_m / 2 / np.sqrt(stretch)
+    one = np.ones_like(radius)
+    return face_indentation_m(one, radius, rig.incident_bar), face_indentation_m(
+        one, radius, rig.transmitted_bar
+    )
 
 
 class Carrier:
@@ -102,6 +116,7 @@ class Carrier:
         span = response.span or response.loading
         self.middle = int(np.searchsorted(at, (span[0] + span[1]) // 2))
         self.averaged = self._share_of_running_mean()
+        self.faces_m_n = faces_by_force(evidence, at)
 
     def carried(self, ways: Sequence[Way]) -> dict[Way, FloatArray]:
         """Change of every output by a unit step in each way, shape (outputs, thinned samples) each."""
@@ -153,6 +168,12 @@ class Carrier:
         out[1] = closing / per.length_m - by["length"] * curves[1] + added_rate
         out[3] = 0.5 * (force_in + force_out) / per.area_m2 - by["area"] * curves[2]
         out[4] = (velocity_in - velocity_out) / per.length_m - by["length"] * curves[3] + added_rate
+        if self.faces_m_n is not None:
+            # The indentation was taken off by these very forces: what changes them changes it.
+            taken = self.faces_m_n[0] * force_in + self.faces_m_n[1] * force_out
+            sinks = np.gradient(taken, self.scene.interval_s) / per.length_m
+            out[1] -= sinks
+            out[4] -= sinks
         out[9] = self.weights[0] * force_in - self.weights[1] * force_out
 
     def _along_time(self, out: FloatArray) -> None:
@@ -191,6 +212,11 @@ class Carrier:
         for row, unit in ((0, stress_1w), (1, rate_1w), (3, stress_3w), (4, rate_3w)):
             out[row] = passed * unit**2
         out[2], out[5] = summed * rate_1w**2, summed * rate_3w**2
+        if self.faces_m_n is not None:
+            taken = (self.faces_m_n[1 if pulse == 2 else 0] * force / per.length_m) ** 2
+            for rate_row, strain_row in ((1, 2), (4, 5)):
+                out[rate_row] += self._noise_of_derivative() * taken
+                out[strain_row] += passed * taken
         stress, strain = (out[0], out[2]) if self.first else (out[3], out[5])
         out[6] = strain / self.stretch**2
         out[7] = self.stretch**2 * stress + self.stress**2 * strain
@@ -198,6 +224,13 @@ class Carrier:
         out[8] = (self.stretch**2 * stress + tilt**2 * strain) * self.share**2
         out[9] = self.averaged * (self.weights[pulse == 2] * force * self.by_force) ** 2
         return out
+
+    def _noise_of_derivative(self) -> float:
+        """Variance that unit white noise in the samples leaves in the time derivative after the low-pass [1/s^2]."""
+        low_pass = self.scene.evidence.faces.low_pass
+        frequency = np.linspace(0.0, low_pass.stop_hz, 400)
+        density = (2 * np.pi * frequency * low_pass.gain(frequency)) ** 2
+        return float(2 * self.scene.evidence.pulses.sample_interval_s * density.mean() * low_pass.stop_hz)
 
     def _share_of_running_mean(self) -> float:
         """Share of the variance of white noise that passes the low-pass and a running mean over two transits."""

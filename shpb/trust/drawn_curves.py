@@ -19,6 +19,7 @@ from shpb.response.flow import FlowStress
 from shpb.rig.gauge import TestKind
 from shpb.settings import Analysis, Correction
 from shpb.trust.budget import Budget
+from shpb.trust.carry import faces_by_force
 from shpb.trust.drawn_faces import Drawn, FaceStrains
 from shpb.trust.evidence import Evidence
 from shpb.trust.sources import STRESS_CORRECTIONS
@@ -58,7 +59,7 @@ class DrawnCurves:
         response, specimen = evidence.response, evidence.sheet.specimen
         self._first = response.analysis is Analysis.ONE_WAVE
         self._sign = 1.0 if evidence.sheet.kind is TestKind.TENSION else -1.0
-        self._own_bars = Correction.MISMATCH in evidence.settings.corrections
+        self._own_bars = evidence.settings.switched_on(Correction.MISMATCH)
         self._modulus = specimen.young_modulus_pa
 
         def laid(values: FloatArray) -> FloatArray:
@@ -74,6 +75,8 @@ class DrawnCurves:
             for report in response.corrections
             if report.applied and report.correction in STRESS_CORRECTIONS
         }
+        by_force = faces_by_force(evidence, slice(None))
+        self._faces_m_n = None if by_force is None else (laid(by_force[0]), laid(by_force[1]))
         one, three = response.one_wave, response.three_wave
         reduced = Faces(
             *(
@@ -139,6 +142,9 @@ class DrawnCurves:
                 closing_1w = closing_1w + force_out * by_z_out - speed_out * transmitted
         closing_3w = speed_in * (incident - reflected) - speed_out * transmitted
         added = drawn.sum("indentation") * self._indentation
+        if self._faces_m_n is not None:
+            taken = self._faces_m_n[0] * force_in + self._faces_m_n[1] * force_out
+            added = added + np.gradient(taken, self._interval_s, axis=1) / length
         stress_1w, stress_3w = force_out / area, 0.5 * (force_in + force_out) / area
         for name, (off_1w, off_3w) in self._stress_off.items():
             stress_1w = stress_1w - drawn.sum(name) * off_1w

@@ -173,7 +173,7 @@ def _time_side(page: Page, result: ShotResult) -> None:
         page.axes(x, 5.24, width, 0.80), result, station=strain.transmitted, gauge=rig.transmitted_gauge,
         pulses=(pulses.transmitted,), side="transm.", last=True,
     )  # fmt: skip
-    page.key(x, 4.62, "Pulses at the faces", time_panels.pulse_lines(result))
+    page.key(x, 4.62, "Pulses at faces", time_panels.pulse_lines(result))
     time_panels.draw_pulses(page.axes(x, 3.36, width, 1.20), result)
     page.key(x, 3.14, "Forces at the faces", time_panels.FORCE_LINES)
     if result.response.span is not None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from shpb.reduction import ShotResult
+from shpb.settings import Correction
 from shpb.trust.closure import Misfit
 from shpb.view.text import printable, wrapped
 
@@ -48,7 +49,9 @@ def correction_table(result: ShotResult, width: int) -> list[str]:
 def closure_lines(result: ShotResult, width: int, label: int) -> list[str]:
     """The forward run beside the record, pulse by pulse."""
     if result.closure is None:
-        return wrapped("no forward run: it does not hold for this shot", width, "Closure".ljust(label))
+        hot = result.response.correction(Correction.BAR_TEMPERATURE).applied
+        why = "hot bar ends are corrected for" if hot else "no plastic curve is left to run"
+        return wrapped(f"no forward run: {why}", width, "Closure".ljust(label))
     both = (_pulse_words(one) for one in (result.closure.reflected, result.closure.transmitted))
     return wrapped(f"forward run against record: {'; '.join(both)}", width, "Closure".ljust(label))
 

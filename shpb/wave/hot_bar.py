@@ -25,6 +25,7 @@ from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 
 ROOM_K = 293.15  # what the rig's values hold for
+_COLD_K = 1.0  # a face this near to it is cold
 
 
 @dataclass(frozen=True, slots=True)
@@ -129,6 +130,7 @@ def hot_ends(rig: Rig, sheet: ShotSheet) -> tuple[HotEnd | None, HotEnd | None]:
             face_k is None
             or bar.modulus_temperature_coefficient_per_k is None
             or sheet.heated_length_m is None
+            or abs(face_k - ROOM_K) < _COLD_K
         ):
             return None
         return HotEnd(bar, face_k, sheet.heated_length_m, bar.modulus_temperature_coefficient_per_k)
@@ -148,6 +150,9 @@ def why_no_hot_ends(rig: Rig, sheet: ShotSheet) -> str:
     stated = [face for face in faces if face[3] is not None]
     if not stated:
         return "the shot sheet states no temperature of the bar faces"
+    stated = [face for face in stated if face[3] is not None and abs(face[3] - ROOM_K) >= _COLD_K]
+    if not stated:
+        return "both bar faces are cold"
     if sheet.heated_length_m is None:
         return "the shot sheet states no heated_length of the bars"
     for name, bar, gauge, _ in stated:

@@ -45,7 +45,7 @@ class ToFaces:
         self._distances = {"incident": x_i, "reflected": -x_i, "transmitted": -x_t}
         self._transfers = _transfers(pulses, self._distances, rig, grid, low_pass, settings)
         self._gauges = _undone_chains(rig, low_pass, settings)
-        hot = Correction.BAR_TEMPERATURE in settings.corrections and not why_no_hot_ends(rig, sheet)
+        hot = settings.switched_on(Correction.BAR_TEMPERATURE) and not why_no_hot_ends(rig, sheet)
         self._ends = hot_ends(rig, sheet) if hot else (None, None)
 
     def __call__(self, reflected_shift_s: float = 0.0, transmitted_shift_s: float = 0.0) -> AtFaces:
@@ -115,7 +115,7 @@ class ToFaces:
 
 def _undone_chains(rig: Rig, low_pass: LowPass, settings: Settings) -> dict[str, Gauge]:
     """Gauge of each pulse whose recording chain is undone; empty where that is not asked for or does not hold."""
-    if Correction.GAUGE_RISE not in settings.corrections or why_no_chain(rig, low_pass.stop_hz):
+    if not settings.switched_on(Correction.GAUGE_RISE) or why_no_chain(rig, low_pass.stop_hz):
         return {}
     return {
         "incident": rig.incident_gauge,

@@ -2,11 +2,10 @@
 
 from __future__ import annotations
 
-import re
+from dataclasses import replace
 
 import numpy as np
 import pytest
-from scipy.integrate import trapezoid
 
 from shpb.arrays import FloatArray
 from shpb.errors import InputError
@@ -17,8 +16,7 @@ from shpb.merge.model_fit import ModelFit, Standing
 from shpb.merge.models.model import Model
 from shpb.merge.models.registry import all_models
 from shpb.merge.points import FlowPoints, SharedError
-from shpb.merge.rise import rise_with_temperature
-from tests.merge.campaign import HEAT, PLANTED, grid, grid_for, law, planted, with_stress
+from tests.merge.campaign import PLANTED, grid, grid_for, law, planted, with_stress
 
 MODELS = [law(model.key) for model in all_models()]
 JC = law("johnson-cook")
@@ -66,10 +64,10 @@ def test_intervals_hold_the_truth_as_often_as_they_say() -> None:
 
 @pytest.mark.slow
 def test_intervals_hold_the_truth_with_scale_errors_too() -> None:
-    # 1 % noise, 2 % on all fast points, 1 % on all slow ones; 150 fits stray by 3 x 1.8 %.
+    # 1 % noise, 2 % on all fast points, 1 % on all slow ones; 100 fits stray by 3 x 2.2 %.
     points = grid((1e-3, 1.0, 1e3), (293.0, 573.0), np.linspace(0.03, 0.3, 5))
-    share = hits("johnson-cook", points, 150, True)
-    assert (share > 0.895).all()
+    share = hits("johnson-cook", points, 100, True)
+    assert (share > 0.885).all()
     assert (share < 0.9999).any()
 
 
@@ -117,6 +115,58 @@ def test_shared_errors_act_like_their_covariance_matrix() -> None:
     # To first order in the scale error, here 2 %: its square is what they may differ by.
     assert fit.parameters[:2] == pytest.approx(solution, rel=1e-3)
     assert fit.covariance[:2, :2] == pytest.approx(expected, rel=0.05)
+
+
+@pytest.mark.parametrize("correlation", [0.3, 0.9])
+def test_errors_that_go_along_a_curve_act_like_their_covariance_matrix(correlation: float) -> None:
+    # Generalised least squares again: a factor common to each condition, as large as its best point allows.
+    points = planted(law("ludwik"), grid((1e-3, 1.0), (293.0,)), 0.01, 2)
+    along = replace(points, own_correlation=correlation)
+    fit = fit_model(law("ludwik"), along, {"n": 0.45})
+    same = points.condition[:, None] == points.condition
+    share = points.stress_pa / points.u_own_pa
+    share = share / np.array([share[points.of(number)].max() for number in points.condition])
+    beside = correlation * np.outer(share, share)
+    matrix = np.where(np.eye(len(points)) > 0, 1.0, np.where(same, beside, 0.0))
+    covariance = matrix * np.outer(points.u_own_pa, points.u_own_pa) * fit.scatter_factor**2
+    design, weight = np.column_stack((np.ones(14), points.plastic_strain**0.45)), np.linalg.inv(covariance)
+    expected = np.linalg.inv(design.T @ weight @ design)
+    assert fit.parameters[:2] == pytest.approx(expected @ design.T @ weight @ points.stress_pa, rel=1e-8)
+    assert fit.covariance[:2, :2] == pytest.approx(expected, rel=1e-6)
+    residuals = points.stress_pa - design @ fit.parameters[:2]
+    assert fit.chi2 == pytest.approx(residuals @ weight @ residuals * fit.scatter_factor**2, rel=1e-6)
+
+
+def test_scale_errors_do_not_take_up_what_a_wrong_law_leaves() -> None:
+    # Iron-like hardening cannot follow copper-like points; every condition may be off by 0.5 %, and is not by more.
+    points = planted(JC, grid(), 0.003, 1, scale_errors=True)
+    each = tuple(SharedError(name=f"c{c}", relative_u=0.005, members=points.of(c)) for c in points.conditions)
+    stress_u = 0.3 * points.u_own_pa
+    wrong = with_stress(points, points.stress_pa, stress_u, (*points.shared, *each))
+    fit = fit_model(law("zerilli-armstrong-bcc"), wrong, leave_out=False)
+    assert fit.scatter_factor > 5
+    assert all(abs(one.d) < 3.5 * one.prior_u for one in fit.shared)
+    right = fit_model(JC, wrong, leave_out=False)
+    assert right.scatter_factor == pytest.approx(1.0, abs=0.2)
+
+
+def test_scale_errors_larger_than_stated_widen_the_intervals() -> None:
+    points = planted(JC, grid(heat=None), 0.002, 3)
+    off = 1 + 0.02 * np.random.default_rng(2).standard_normal(12)[points.condition]
+
+    def fitted(relative_u: float) -> ModelFit:
+        each = tuple(
+            SharedError(name=f"c{c}", relative_u=relative_u, members=points.of(c)) for c in range(12)
+        )
+        moved = with_stress(points, points.stress_pa * off, 0.2 * points.u_own_pa, each)
+        return fit_model(JC, moved, leave_out=False)
+
+    honest, bold = fitted(0.02), fitted(0.01)
+    assert honest.shared_factor < 1.2 < bold.shared_factor
+    u_honest, u_bold = honest.estimate("C").u, bold.estimate("C").u
+    assert u_honest is not None
+    assert u_bold == pytest.approx(u_honest, rel=0.35)
+    assert any("scale errors come out" in words for words in bold.warnings)
 
 
 def test_an_error_that_all_points_share_adds_to_every_stress() -> None:
@@ -338,121 +388,6 @@ def test_information_criterion_prefers_the_law_behind_the_points() -> None:
     assert voce < power - 10
 
 
-def test_flow_curve_isothermal_and_adiabatic() -> None:
-    fit = fit_model(JC, planted(JC, grid(), 0.01, 3), leave_out=False)
-    strain = np.array([0.1, 0.2, 0.3])
-    cold = fit.flow_curve(strain, 1e3, 293.0)
-    warm = fit.flow_curve(strain, 1e3, 293.0, adiabatic=True)
-    assert cold.stress_pa == pytest.approx(JC.stress_pa(fit.parameters, strain, 1e3, 293.0), rel=1e-12)
-    assert (warm.stress_pa < cold.stress_pa).all()
-    work = trapezoid(
-        fit.flow_curve(np.linspace(1e-9, 0.3, 4001), 1e3, 293.0, adiabatic=True).stress_pa,
-        np.linspace(1e-9, 0.3, 4001),
-    )
-    assert warm.temperature_k[-1] - 293 == pytest.approx(HEAT * work, rel=1e-5)
-    assert not cold.extrapolated.any()
-    assert not cold.reasons
-
-
-def test_uncertainty_of_a_flow_curve_is_its_scatter_over_fits() -> None:
-    model, points = law("voce"), grid((1e-3,), (293.0,), np.linspace(0.01, 0.4, 15))
-    strain = np.array([0.02, 0.1, 0.35])
-    curves = [
-        fit_model(model, planted(model, points, 0.01, seed), leave_out=False).flow_curve(strain, 1e-3, 293.0)
-        for seed in range(200)
-    ]
-    scatter = np.std([curve.stress_pa for curve in curves], axis=0)
-    # 200 fits know their scatter to 5 %; widening lifts the stated one by a few per cent.
-    assert np.mean([curve.u_stress_pa for curve in curves], axis=0) == pytest.approx(scatter, rel=0.17)
-
-
-@pytest.mark.parametrize(
-    ("strain", "rate", "temperature", "reason"),
-    [
-        (0.5, 1e-3, 293.0, "plastic strain outside 0.02 to 0.3"),
-        (0.1, 1e5, 293.0, r"1e\+05 /s is outside 0.001 to 3e\+03 /s"),
-        (0.1, 1e-3, 900.0, "temperature outside 293 to"),
-        (0.1, 1e-3, 200.0, "temperature outside 293 to"),
-    ],
-)
-def test_extrapolation_is_marked(strain: float, rate: float, temperature: float, reason: str) -> None:
-    fit = fit_model(JC, planted(JC, grid(), 0.01, 3), leave_out=False)
-    curve = fit.flow_curve(np.array([0.1, strain]), rate, temperature)
-    assert curve.extrapolated[1]
-    assert curve.extrapolated[0] == (strain == 0.1)
-    assert any(re.search(reason, words) for words in curve.reasons)
-
-
-def test_a_corner_without_tests_is_extrapolation_too() -> None:
-    # Fast only at room temperature, hot only slow: fast and hot together was never tested.
-    points = grid()
-    tested = (points.temperature_k < 300) | (points.rate_per_s < 0.01)
-    fit = fit_model(JC, planted(JC, points, 0.01, 3).select(tested), leave_out=False)
-    assert not fit.flow_curve(np.array([0.1]), 1e3, 293.0).extrapolated.any()
-    assert not fit.flow_curve(np.array([0.1]), 1e-3, 673.0).extrapolated.any()
-    corner = fit.flow_curve(np.array([0.1]), 1e3, 673.0)
-    assert corner.extrapolated.all()
-    assert "no tests surround" in corner.reasons[0]
-
-
-def peaked(height: float = 0.3) -> FlowPoints:
-    """An ordered alloy of the scenario: strength rises to a peak at 900 K."""
-    points = grid(temperatures=(293.0, 673.0, 873.0, 1073.0), heat=None)
-    factor = (
-        1 + height * np.exp(-(((points.temperature_k - 900) / 240) ** 2)) - (points.temperature_k / 1700) ** 2
-    )
-    stress = (
-        (420e6 + 520e6 * points.plastic_strain**0.7) * (1 + 0.018 * np.log(points.rate_per_s / 1e-5)) * factor
-    )
-    return with_stress(points, stress, 0.01 * stress)
-
-
-def test_a_law_that_softens_is_not_fitted_across_a_peak() -> None:
-    model = JC.with_facts(melting_temperature_k=1700.0)
-    with pytest.raises(
-        InputError, match="can only soften.*the stress rises from .* MPa at .* K by .* MPa .u .*across_peak"
-    ):
-        fit_model(model, peaked(0.6))
-    fit = fit_model(model, peaked(0.6), across_peak=True)
-    assert "across a strength peak that Johnson-Cook cannot represent" in fit.warnings[0]
-
-
-def test_rise_is_found_where_it_is_and_only_there() -> None:
-    rise = rise_with_temperature(peaked(0.6))
-    assert rise is not None
-    assert (rise.cold_k, rise.hot_k) == (293.0, 873.0)
-    assert rise.plastic_strain == (0.02, 0.3)
-    points = peaked(0.6)
-    a, b = (
-        points.stress_pa[(points.temperature_k == t) & (points.rate_per_s == 1e-3)] for t in (293.0, 873.0)
-    )
-    assert rise.rise_pa / rise.cold_stress_pa == pytest.approx(np.mean(b - a) / np.mean(a), rel=1e-6)
-    assert rise_with_temperature(planted(JC, grid(), 0.01, 1)) is None
-
-
-def test_a_rise_within_the_uncertainty_is_no_peak() -> None:
-    points = planted(JC, grid(temperatures=(293.0, 573.0)), 0.0)
-    flat = points.stress_pa * np.where(points.temperature_k > 300, 1.5, 1.0)
-    mean = flat.mean()
-    for u, found in ((0.01, True), (0.5, False)):
-        shown = rise_with_temperature(with_stress(points, flat, np.full(len(points), u * mean)))
-        assert (shown is not None) == found
-    # The same rise between two furnaces, each with a scale error of its own, is not significant either.
-    hot = points.temperature_k > 300
-    two = tuple(SharedError(name=n, relative_u=0.2, members=m) for n, m in (("a", hot), ("b", ~hot)))
-    one = (SharedError(name="a", relative_u=0.2, members=np.ones(len(points), dtype=bool)),)
-    sure = np.full(len(points), 0.01 * mean)
-    assert rise_with_temperature(with_stress(points, flat, sure, two)) is None
-    assert rise_with_temperature(with_stress(points, flat, sure, one)) is not None
-
-
-def test_other_rates_are_no_rise() -> None:
-    points = grid((1e-3, 1e3), (293.0, 473.0))
-    chosen = (points.rate_per_s < 1) == (points.temperature_k < 300)
-    stress = np.where(points.rate_per_s > 1, 400e6, 200e6)
-    assert rise_with_temperature(with_stress(points, stress, 0.01 * stress).select(chosen)) is None
-
-
 def refuse(model: Model, points: FlowPoints, message: str, fixed: dict[str, float] | None = None) -> None:
     with pytest.raises(InputError, match=message):
         fit_model(model, points, fixed)
@@ -475,9 +410,7 @@ def test_refusals() -> None:
     )
     refuse(JC.with_facts(melting_temperature_k=250.0), points, "not above the reference temperature of 293 K")
     threshold = law("mechanical-threshold")
-    refuse(
-        threshold.with_facts(reference_rate_per_s=100.0), points, "at or above reference_rate_per_s of 100 /s"
-    )
+    refuse(threshold.with_facts(attempt_rate_per_s=100.0), points, "at or above attempt_rate_per_s of 100 /s")
     stiff = threshold.with_facts(shear_modulus_drop_pa=90e9)
     refuse(stiff, points, "shear modulus, as stated, is negative")
 
@@ -490,22 +423,6 @@ def test_a_law_without_rate_says_that_rates_are_mixed() -> None:
     )
 
 
-def some_fit() -> ModelFit:
-    return fit_model(JC, planted(JC, grid(heat=None), 0.01, 1), leave_out=False)
-
-
-def test_refusals_of_a_flow_curve() -> None:
-    fit = some_fit()
-    with pytest.raises(InputError, match="numbers of 0 or more"):
-        fit.flow_curve(np.array([-0.1]), 1.0, 293.0)
-    with pytest.raises(InputError, match="rate_per_s: found 0, expected more than 0"):
-        fit.flow_curve(np.array([0.1]), 0.0, 293.0)
-    with pytest.raises(InputError, match="heat_k_m3_j = share"):
-        fit.flow_curve(np.array([0.1]), 1.0, 293.0, adiabatic=True)
-    with pytest.raises(InputError, match="no parameter 'c'"):
-        fit.estimate("c")
-
-
 def test_results_cannot_change() -> None:
     with pytest.raises(ValueError, match="read-only"):
-        some_fit().parameters[0] = 0.0
+        fit_model(JC, planted(JC, grid(), 0.01, 1), leave_out=False).parameters[0] = 0.0

@@ -7,7 +7,7 @@ import pytest
 
 from shpb.arrays import FloatArray
 from shpb.errors import InputError
-from shpb.merge.derivatives import differences
+from shpb.merge.derivatives import differences, forward_differences
 from shpb.merge.least_squares import Problem, best_of, fit_function, solve
 from shpb.merge.starts import linear_parameters
 
@@ -152,6 +152,9 @@ def test_differences_are_good_to_ten_digits() -> None:
     exact = np.array([[12 * np.sin(0.3), 8 * np.cos(0.3)], [0.3 * np.exp(0.6), 2 * np.exp(0.6)]])
     assert differences(function, at, -free, free, fine=True) == pytest.approx(exact, rel=1e-10)
     assert differences(function, at, -free, free, fine=False) == pytest.approx(exact, rel=1e-8)
+    quick = forward_differences(function, at, function(at), free, least=1e-3)
+    assert quick == pytest.approx(exact, rel=1e-4)
+    assert forward_differences(function, at, function(at), at, least=1e-3) == pytest.approx(exact, rel=1e-4)
     # At a bound, from one side.
     assert differences(function, at, at, free, fine=True) == pytest.approx(exact, rel=1e-6)
     assert differences(function, at, -free, at, fine=True) == pytest.approx(exact, rel=1e-6)

@@ -89,7 +89,7 @@ def test_compliance_left_in_is_off_by_what_it_adds(tmp_path: Path) -> None:
 
 
 def test_slope_correction_gives_the_true_modulus_back(tmp_path: Path) -> None:
-    # Whatever is proportional to load is taken out without knowing it (METHODS: e - s (1/E_app - 1/E)).
+    # Whatever is proportional to load is taken out without knowing it (e - s (1/E_app - 1/E)).
     curve = engineering_curve(read_quasistatic(crosshead(tmp_path, 1.2e-8 * force(), slope_correction="yes")))
     strain, _ = linear_hardening()
     np.testing.assert_allclose(curve.strain, strain, atol=1e-9)

@@ -59,7 +59,7 @@ def test_selection_keeps_what_belongs_together() -> None:
 
 
 def test_heating_from_the_measured_stress_is_the_work_done() -> None:
-    # Constant stress: work is stress times strain. METHODS of adiabatic heating (Taylor & Quinney 1934): copper,
+    # Constant stress: work is stress times strain (Taylor & Quinney 1934). Copper,
     # 300 MPa, strain 0.2, share 0.9, 8960 kg/m3, 385 J/(kg K): 15.654 K.
     points = six(stress_pa=np.full(6, 300e6), heat_k_m3_j=0.9 / (8960 * 385))
     heated = points.heated_k()

@@ -50,13 +50,24 @@ def test_the_demo_files_are_read(path: Path) -> None:
     code, celsius, rate = path.stem.split("_", 2)
     assert test.material[0] == code
     assert test.kind is TestKind.COMPRESSION
-    assert any("taken from the words" in remark for remark in test.remarks)
+    assert not any("taken from the words" in remark for remark in test.remarks)
     assert test.temperature_k == pytest.approx(int(celsius.removesuffix("C")) + 273.15)
     assert test.rate_per_s == float(rate)
-    raw = np.loadtxt(path, delimiter=",", skiprows=6)
+    raw = np.loadtxt(path, delimiter=",", skiprows=7)
     assert np.array_equal(test.strain, raw[:, 0])
     np.testing.assert_allclose(test.stress_pa, raw[:, 1] * 1e6, rtol=1e-14)
     assert test.sha256 == hashlib.sha256(path.read_bytes()).hexdigest()
+
+
+def test_the_words_of_the_test_tell_its_kind_where_nothing_else_does(tmp_path: Path) -> None:
+    lines = (EXAMPLES / "W_20C_1e-3.csv").read_text(encoding="utf-8").splitlines()
+    path = tmp_path / "words.csv"
+    path.write_text(
+        "\n".join(line for line in lines if not line.startswith("# kind")) + "\n", encoding="utf-8"
+    )
+    test = read_quasistatic(path)
+    assert test.kind is TestKind.COMPRESSION
+    assert any("taken from the words" in remark for remark in test.remarks)
 
 
 def test_a_file_without_a_header_takes_its_facts_from_the_toml_file_beside_it() -> None:

@@ -38,7 +38,7 @@ def power_law(
 
 
 def test_two_points_in_numbers() -> None:
-    # METHODS check: 100 MPa at 1e-3, 120 MPa at 1e3: m = ln 1.2/ln 1e6, C = 0.2/ln 1e6.
+    # By hand: 100 MPa at 1e-3, 120 MPa at 1e3: m = ln 1.2/ln 1e6, C = 0.2/ln 1e6.
     found = two_point_sensitivity((1e-3, 1e3), (100e6, 120e6))
     assert found.exponent == pytest.approx(0.0131969, abs=5e-8)
     assert found.coefficient == pytest.approx(0.0144765, abs=5e-8)

@@ -79,7 +79,7 @@ def test_lames_point_is_exact(nu: float) -> None:
     assert mode.phase_speed[0] == pytest.approx(1 / np.sqrt(1 + nu), rel=1e-13)
 
 
-# METHODS of the bar literature, exact roots to nine digits (computed apart from this program).
+# Bar literature, exact roots to nine digits (computed apart from this program).
 @pytest.mark.parametrize(
     ("nu", "expected"),
     [

@@ -213,7 +213,7 @@ def test_noise_and_digits_together_are_what_was_measured() -> None:
     lab = rig(incident_gauge=gauge("A", 1.0, scope_bits=10), transmitted_gauge=gauge("B", 0.6, scope_bits=10))
     noisy = shot(lab, noise_v=0.02)
     found = sources(noisy)
-    per_volt = 2 / (2.1 * 5.0 * 200.0)  # r = k e/2, METHODS of the half bridge with opposite arms
+    per_volt = 2 / (2.1 * 5.0 * 200.0)  # r = k e/2, half bridge with opposite arms
     assert found["incident quantisation"].u == pytest.approx(per_volt * 10 / 2**10 / np.sqrt(12))
     for pulse in noisy.pulses:
         parts = found[f"{pulse.name} quantisation"].u, found[f"{pulse.name} noise"].u
@@ -255,7 +255,7 @@ def test_indentation_left_in_and_taken_off() -> None:
     estimate = left.response.indentation_strain[middle]
     source = sources(left)["indentation left in"]
     assert source.u * abs(change_of(left, "indentation left in")["strain_1w"][middle]) == pytest.approx(
-        estimate / np.sqrt(3), rel=0.02
+        0.9 * estimate, rel=0.02
     )
     taken = shot(
         rig(),

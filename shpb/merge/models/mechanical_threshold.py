@@ -68,15 +68,15 @@ def _activation(at: State) -> FloatArray:
 
 def _glide(at: State, g0: float) -> FloatArray:
     """Share of the threshold that is needed: 1 at 0 K, 0 where heat alone carries the glide."""
-    wait = np.log(at.facts["reference_rate_per_s"] / at.rate_per_s)
+    wait = np.log(at.facts["attempt_rate_per_s"] / at.rate_per_s)
     x = np.clip(_activation(at) * wait / g0, 0.0, 1.0)
     return np.asarray((1 - x ** (1 / at.facts["q"])) ** (1 / at.facts["p"]))
 
 
 def _refuses(at: State) -> str:
-    fastest, most = float(at.rate_per_s.max()), at.facts["reference_rate_per_s"]
+    fastest, most = float(at.rate_per_s.max()), at.facts["attempt_rate_per_s"]
     if fastest >= most:
-        return f"there are points at {fastest:g} /s, at or above reference_rate_per_s of {most:g} /s"
+        return f"there are points at {fastest:g} /s, at or above attempt_rate_per_s of {most:g} /s"
     return (
         ""
         if (_activation(at) > 0).all()
@@ -88,7 +88,7 @@ def _law(p: FloatArray, at: State) -> FloatArray:
     athermal, initial, theta, saturation0, g0, inverse_gs = p
     activation = _activation(at)
     saturation = saturation0 * np.exp(
-        inverse_gs * activation * np.log(at.rate_per_s / at.facts["reference_rate_per_s"])
+        inverse_gs * activation * np.log(at.rate_per_s / at.facts["attempt_rate_per_s"])
     )
     room = saturation - athermal
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -145,7 +145,7 @@ MECHANICAL_THRESHOLD = Model(
         Fact(name="shear_modulus_drop_pa", unit="Pa", meaning="its drop with temperature, after Varshni",
              default=0.0),
         Fact(name="shear_modulus_temperature_k", unit="K", meaning="temperature of that drop", default=200.0),
-        Fact(name="reference_rate_per_s", unit="1/s", meaning="rate of attempts, rate_0", default=1e7),
+        Fact(name="attempt_rate_per_s", unit="1/s", meaning="rate of attempts, rate_0", default=1e7),
         Fact(name="p", unit="1", meaning="shape of the obstacles", default=2 / 3),
         Fact(name="q", unit="1", meaning="shape of the obstacles", default=1.0),
     ),

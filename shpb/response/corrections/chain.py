@@ -49,7 +49,7 @@ def correct(
     def asked(report: Report) -> Report:
         return replace(
             report,
-            switched_on=report.correction in settings.corrections,
+            switched_on=settings.switched_on(report.correction),
             thinned_time_s=shot.time_s,
             time_s=faces.time_s,
         )

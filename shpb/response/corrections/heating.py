@@ -80,10 +80,14 @@ def heating(shot: Loading) -> Report:
         greatest = shot.greatest(rise)
         brief = f"{greatest:.1f} K warmer"
         size = f"warmer by up to {greatest:.1f} K"
-        factor = thermal_factor(shot.specimen, start, start + rise)
+        melting = shot.specimen.melting_temperature_k
+        melts = melting is not None and melting <= max(start + greatest, ROOM_K)
+        factor = None if melts else thermal_factor(shot.specimen, start, start + rise)
         part = slice(*shot.loading)
         rate = float(np.median(shot.curves.three_wave.true_strain_rate_per_s[part]))
-        if factor is None:
+        if melts:
+            refused = "the stated melting point is below the temperature of the specimen, or below 20 C"
+        elif factor is None:
             refused = (
                 "the sheet states no temperature sensitivity (stress_slope, or melting point and exponent)"
             )

@@ -45,13 +45,14 @@ def _where_to_look(misfit: Misfit) -> str:
     late = abs(misfit.delay_s) / misfit.u_delay_s
     if misfit.pulse == "transmitted":
         return (
-            "Check the specimen's diameter and length, its stated modulus, and gauge factor, arrangement, excitation "
-            "and gain of the two stations against each other."
+            "Check the transmitted pulse's place (its gauge's distance, wave speeds, a delay between the channels), "
+            "the specimen's diameter, length and stated modulus, and gauge factor, arrangement, excitation and gain of "
+            "the two stations against each other."
         )
     if late > misfit.rms / misfit.expected and abs(misfit.scale) < 0.05:
         return (
-            "The reflected pulse lies in the wrong place: check its window and foot, the incident gauge's distance to "
-            "the specimen and the wave speed of the bar."
+            "The reflected pulse lies in the wrong place: check its window and foot, the gauges' distances to the "
+            "specimen, the wave speeds, and a delay between the channels."
         )
     return (
         "Check gauge factor, arrangement, excitation and gain of the two stations against each other, the bars' "

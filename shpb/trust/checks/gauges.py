@@ -31,11 +31,11 @@ def incident_against_striker(evidence: Evidence) -> Answer | None:
     above = 1 + limit + (limits.striker_rebound if striker.shaper else 0.0)
     below = _momentum_share(evidence, striker) - limit
     off = ratio > above or ratio < below
-    far = ratio > above + 2 * limit or ratio < below - 2 * limit
+    far = ratio > above + limit or ratio < below - limit
     return Answer(
         weight=Weight.FINE if not off else Weight.REJECT if far else Weight.NOTE,
         measured=f"impulse of the incident pulse is {ratio:.3f} of the striker's momentum",
-        limit=f"{below:.3g} to {above:.3g}, reject beyond {below - 2 * limit:.3g} to {above + 2 * limit:.3g}",
+        limit=f"{below:.3g} to {above:.3g}, reject beyond {below - limit:.3g} to {above + limit:.3g}",
         action="Check gauge factor, bridge arrangement, excitation and gain in the rig file, the diameters of bar and "
         "striker, the striker's mass and the speed reading.",
     )

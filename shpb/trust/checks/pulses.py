@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from shpb.settings import Alignment
+from shpb.settings import Alignment, Correction
 from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Answer, Weight, graded
 from shpb.trust.judge import check
@@ -54,6 +54,8 @@ def other_waves(evidence: Evidence) -> Answer | None:
 @check("window_start", gravest=Weight.REJECT)
 def window_start(evidence: Evidence) -> Answer | None:
     """A pulse that runs already where its window begins came sooner than distances and wave speeds say."""
+    if evidence.response.correction(Correction.BAR_TEMPERATURE).applied:
+        return None  # a hot end sends a part of the pulse back before its face does
     worst = max(evidence.pulses, key=lambda pulse: abs(pulse.level_at_start))
     level = abs(worst.level_at_start)
     return graded(

@@ -60,6 +60,22 @@ def reverberations(evidence: Evidence) -> Answer | None:
     )
 
 
+@check("analyses", source="both follow from the same three pulses", gravest=Weight.REJECT)
+def analyses_agree(evidence: Evidence) -> Answer | None:
+    """Strain by one-wave and by three-wave analysis at the end of the loading: equal in equilibrium."""
+    response = evidence.response
+    last = response.loading[1] - 1
+    one, three = float(response.one_wave.strain[last]), float(response.three_wave.strain[last])
+    return graded(
+        abs(one / three - 1) if three > 0 else 1.0,
+        evidence.settings.limits.analyses,
+        4 * evidence.settings.limits.analyses,
+        measured=f"strain {one:.4f} by one wave, {three:.4f} by three",
+        action="Where the bars differ, let equal_bars be off; else see force equilibrium, the gauges against each "
+        "other, and the zero lines.",
+    )
+
+
 @check("rate_variation", gravest=Weight.NOTE)
 def rate_constancy(evidence: Evidence) -> Answer | None:
     """Variation of the strain rate over the part that counts."""

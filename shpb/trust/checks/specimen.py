@@ -114,7 +114,7 @@ def final_length(evidence: Evidence) -> Answer | None:
     measured = abs(1 - specimen.length_after_m / specimen.length_m)
     last = response.loading[1] - 1
     # What springs back: specimen and bar faces, both elastic.
-    peak = int(np.argmax(response.three_wave.strain))
+    peak = int(np.argmax(response.curve.strain))
     after = max(_permanent(evidence, last), _permanent(evidence, peak))
     limit = evidence.settings.limits.final_length
     return graded(
@@ -130,9 +130,9 @@ def final_length(evidence: Evidence) -> Answer | None:
 def _permanent(evidence: Evidence, sample: int) -> float:
     """Engineering strain less what springs back from ``sample`` on: specimen and bar faces."""
     response, modulus = evidence.response, evidence.sheet.specimen.young_modulus_pa
-    strain = float(response.three_wave.strain[sample]) - float(response.elastic_faces_strain[sample])
+    strain = float(response.curve.strain[sample]) - float(response.elastic_faces_strain[sample])
     if modulus is not None:
-        strain -= float(response.three_wave.stress_pa[sample]) / modulus
+        strain -= float(response.curve.stress_pa[sample]) / modulus
     return strain
 
 
