@@ -67,6 +67,13 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
         help="what a law takes as known, its unit in the name, such as melting_temperature_C=1083",
     )  # fmt: skip
     choices.add_argument(
+        "--curve", action="append", default=[], metavar="PER_S,C",
+        help="a rate and a temperature in C at which flow curves are wanted too, such as 500,250 (with --csv)",
+    )  # fmt: skip
+    choices.add_argument(
+        "--offset", metavar="STRAIN", help="plastic strain of the offset yield (default 0.002)"
+    )
+    choices.add_argument(
         "--reference-rate", metavar="PER_S", help="rate at which C of Johnson-Cook is stated (default 1)"
     )
 
@@ -130,7 +137,25 @@ def _settings(options: argparse.Namespace) -> MergeSettings:
         chosen["reference_rate_per_s"] = _number(
             options.reference_rate, "--reference-rate", "Give a rate in 1/s"
         )
+    if options.offset is not None:
+        chosen["offset"] = _number(options.offset, "--offset", "Give a strain: 0.002 is 0.2 %", most=0.2)
+    chosen["asked"] = tuple(_asked(text) for text in options.curve)
     return MergeSettings(**chosen)
+
+
+def _asked(text: str) -> tuple[float, float]:
+    """Rate [1/s] and temperature [K] of ``--curve``."""
+    mend = "Give a rate in 1/s and a temperature in C with a comma between, such as 500,250"
+    parts = text.split(",")
+    if len(parts) != 2:
+        raise InputError(f"found {text!r}", where="--curve", mend=mend)
+    try:
+        celsius = float(parts[1])
+    except ValueError:
+        raise InputError(f"found {text!r}", where="--curve", mend=mend) from None
+    if not -273.15 < celsius < 5000:
+        raise InputError(f"a temperature of {celsius:g} C", where="--curve", mend=mend)
+    return _number(parts[0], "--curve", mend), celsius + 273.15
 
 
 def _strains(text: str) -> tuple[float, ...]:

@@ -15,6 +15,7 @@ from shpb.merge.material_curve import MaterialCurve
 from shpb.merge.model_fit import ModelFit
 from shpb.merge.models.model import Model
 from shpb.merge.models.registry import all_models, model_named
+from shpb.merge.offset_strength import OffsetStrength, offset_strength
 from shpb.merge.peak_shift import PeakShift, RatePeak, peak_shift
 from shpb.merge.points import FlowPoints
 from shpb.merge.prepare import from_quasistatic
@@ -97,12 +98,13 @@ class MergedMaterial:
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
 class Merged:
-    """A merged campaign: every material, what stayed out, and what went in by hash."""
+    """A merged campaign: every material, offset yields, what stayed out, and what went in by hash."""
 
     settings: MergeSettings
     materials: tuple[MergedMaterial, ...]
     curves: tuple[MaterialCurve, ...]
     left_out: tuple[LeftOut, ...]
+    offsets: tuple[OffsetStrength, ...] = ()
 
     @property
     def used(self) -> tuple[tuple[str, str], ...]:
@@ -180,7 +182,11 @@ def merge_campaign(
 
         materials.append(_material(tuple(conditions), specimens.get(material, []), models, settings, step))
     return Merged(
-        settings=settings, materials=tuple(materials), curves=tuple(curves), left_out=tuple(left_out)
+        settings=settings,
+        materials=tuple(materials),
+        curves=tuple(curves),
+        left_out=tuple(left_out),
+        offsets=tuple(offset_strength(test, settings) for test in tests),
     )
 
 

@@ -28,6 +28,10 @@ class MergeSettings:
         Keys of the laws to fit; empty for all that there are, ``NO_MODELS`` for none.
     facts : mapping of str to float
         Facts of the laws in SI, such as ``melting_temperature_k``; sheets state some.
+    offset : float
+        Plastic strain of the offset yield that is given for each quasi-static test.
+    asked : tuple of (float, float)
+        Rates [1/s] and temperatures [K] at which flow curves of the laws are wanted besides those of the campaign.
     reference_rate_per_s : float
         Of Johnson & Cook's C, without which it says nothing.
     allowances : mapping of str to float
@@ -44,6 +48,8 @@ class MergeSettings:
     indentation_out: bool = True
     models: tuple[str, ...] = ()
     facts: Mapping[str, float] = field(default_factory=dict)
+    offset: float = 0.002
+    asked: tuple[tuple[float, float], ...] = ()
     reference_rate_per_s: float = 1.0
     allowances: Mapping[str, float] = field(default_factory=lambda: {"inertia": 0.02, "friction": 0.03})
     course_decades: float = 0.2
@@ -61,6 +67,17 @@ class MergeSettings:
                 mend="Give true plastic strains above 0 and up to 3: 0.05 is 5 %",
             )
         object.__setattr__(self, "strains", tuple(sorted(set(self.strains))))
+        if not 0 < self.offset < 0.2:
+            raise InputError(
+                f"found {self.offset:g}", where="merge, offset", mend="Give a strain: 0.002 is 0.2 %"
+            )
+        for rate, kelvin in self.asked:
+            if not (rate > 0 and kelvin > 0 and math.isfinite(rate) and math.isfinite(kelvin)):
+                raise InputError(
+                    f"found {rate:g} /s, {kelvin:g} K",
+                    where="merge, flow curves asked for",
+                    mend="Give positive numbers",
+                )
         for name in ("reference_rate_per_s", "course_decades"):
             if not (getattr(self, name) > 0 and math.isfinite(getattr(self, name))):
                 raise InputError(

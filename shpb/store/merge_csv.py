@@ -79,7 +79,7 @@ def _table_rows(material: MergedMaterial) -> Iterator[list[object]]:
 
 
 def export_flow_curves(merged: Merged, path: Path | str) -> Path:
-    """Write flow curves of every fitted law at the rates and temperatures of the campaign.
+    """Write flow curves of every fitted law at the rates and temperatures of the campaign, and at those asked for.
 
     Isothermal, and adiabatic where the law knows temperature and the heat of the plastic work is known, from plastic
     strain 0 to the greatest that was tested. ``extrapolated`` is 1 outside what the law was fitted to, with the reasons
@@ -92,16 +92,21 @@ def export_flow_curves(merged: Merged, path: Path | str) -> Path:
         If the file cannot be written.
     """
     rows = (
-        row for material in merged.materials for fit in material.fits for row in _curve_rows(material, fit)
+        row
+        for material in merged.materials
+        for fit in material.fits
+        for row in _curve_rows(material, fit, merged.settings.asked)
     )
     return _write(Path(path), CURVE_COLUMNS, rows)
 
 
-def _curve_rows(material: MergedMaterial, fit: ModelFit) -> Iterator[list[object]]:
+def _curve_rows(
+    material: MergedMaterial, fit: ModelFit, asked: Sequence[tuple[float, float]]
+) -> Iterator[list[object]]:
     strains = np.linspace(0.0, float(fit.points.plastic_strain.max()), _STRAIN_STEPS + 1)
     heats = fit.points.heat_k_m3_j is not None and fit.model.uses_temperature
     paths = ("isothermal", "adiabatic") if heats else ("isothermal",)
-    for rate, temperature in asked_of(material, fit):
+    for rate, temperature in (*asked_of(material, fit), *asked):
         for path in paths:
             curve = fit.flow_curve(strains, rate, temperature, adiabatic=path == "adiabatic")
             for i in range(strains.size):

@@ -95,6 +95,7 @@ def _write(file: h5py.File, merged: Merged, places: Places) -> None:
         }
     )
     file["settings"] = json.dumps(to_plain(merged.settings))
+    file["offset_yields"] = json.dumps([to_plain(one) for one in merged.offsets])
     used = merged.used
     _write_table(
         file.create_group("files"),

@@ -41,6 +41,16 @@ def merge_json(merged: Merged) -> Json:
         },
         "files_used": [{"name": name, "sha256": sha256} for name, sha256 in merged.used],
         "left_out": [{"name": one.origin, "why": one.why} for one in merged.left_out],
+        "offset_yields": [
+            {
+                "name": one.origin,
+                "offset_strain": one.offset,
+                "eng_stress_pa": one.stress_pa,
+                "slope_from": one.slope_from,
+                "why_none": one.why,
+            }
+            for one in merged.offsets
+        ],
         "materials": [_material(material) for material in merged.materials],
     }
 

@@ -34,6 +34,8 @@ def merge_text(merged: Merged, *, width: int = 80, full: bool = False) -> str:
     lines = wrapped(headline(merged), width, "MERGED  ")
     lines += ["", *_left_out(merged, width)]
     lines += wrapped(choices_sentence(merged) + ".", width, "Choices".ljust(_LABEL))
+    if full and merged.offsets:
+        lines += ["", *_offsets(merged, width)]
     for material in merged.materials:
         lines += ["", *_material(material, width, full=full)]
     return "\n".join(line.rstrip() for line in lines)
@@ -48,6 +50,18 @@ def _left_out(merged: Merged, width: int) -> list[str]:
     lines = ["Left out"]
     for shown, one in zip(names, merged.left_out, strict=True):
         lines += wrapped(plain(one.why), width, f"  {padded(shown, name)}  ")
+    return lines
+
+
+def _offsets(merged: Merged, width: int) -> list[str]:
+    """Offset yield of every quasi-static test, or why it has none."""
+    lines = [f"Offset yield of the quasi-static tests at {100 * merged.settings.offset:g} % plastic strain"]
+    name = min(max(columns_of(printable(one.origin)) for one in merged.offsets), _WIDEST_NAME)
+    for one in merged.offsets:
+        said = f"none: {plain(one.why)}"
+        if one.stress_pa is not None:
+            said = f"{one.stress_pa / 1e6:.1f} MPa engineering, line with {one.slope_from}"
+        lines += wrapped(said, width, f"  {padded(printable(one.origin), name)}  ")
     return lines
 
 

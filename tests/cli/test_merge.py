@@ -363,3 +363,19 @@ def test_figures_are_drawn_of_the_kind_asked_for_beside_the_file(
     assert run("merge", lab, "--laws", "none", "--results", lab / "mine") == 1
     assert (lab / "mine" / "Wrenmoor_3_laws.png").read_text() == "mine"
     assert not (lab / "mine" / "merged.h5").exists()
+
+
+@pytest.mark.parametrize(
+    ("option", "said"),
+    [
+        (("--curve", "500"), "a rate in 1/s and a temperature in C"),
+        (("--curve", "a,20"), "a rate in 1/s"),
+        (("--curve", "500,9999"), "9999 C"),
+        (("--offset", "2"), "0.002 is 0.2 %"),
+    ],
+)
+def test_curves_and_offset_asked_for_badly(
+    option: tuple[str, str], said: str, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    assert main(["merge", str(tmp_path), *option]) == 2
+    assert said in capsys.readouterr().err

@@ -17,6 +17,7 @@ from shpb.merge.scope import points_for, scope_words
 from shpb.merge.settings import MergeSettings
 from shpb.quantity import Quantity
 from shpb.rig.gauge import TestKind
+from tests.merge.curves import linear_hardening
 from tests.merge.test_from_shot import stored
 from tests.synthetic import copper, sheet
 
@@ -227,3 +228,25 @@ def test_a_test_that_cannot_be_used_does_not_stop_the_others() -> None:
     found = merge_campaign(SHOTS[:1], [lame], MergeSettings(models=("ludwik",)))
     assert [one.origin for one in found.left_out] == ["lame"]
     assert "modulus" in found.left_out[0].why
+
+
+def test_offset_yield_of_every_test() -> None:
+    # Elastic to 200 MPa at 118 GPa, then 800 MPa a unit of plastic strain: at 0.2 % the line meets 201.6 MPa.
+    strain, stress = linear_hardening()
+    test = QuasistaticTest(
+        material="copper-like",
+        kind=TestKind.COMPRESSION,
+        temperature_k=Quantity(293.15),
+        strain=strain,
+        stress_pa=stress,
+        rate_per_s=Quantity(1e-3),
+        young_modulus_pa=Quantity(118e9),
+        origin="ramp.csv",
+    )
+    found = merge_campaign(SHOTS[:1], [test, TESTS[0]], MergeSettings(models=("none",)))
+    ramp, plastic = found.offsets
+    assert ramp.stress_pa == pytest.approx(200e6 + 800e6 * 0.002, rel=1e-4)
+    assert plastic.stress_pa is None
+    assert "plastic strain" in plastic.why
+    wider = merge_campaign(SHOTS[:1], [test], MergeSettings(models=("none",), offset=0.01)).offsets[0]
+    assert wider.stress_pa == pytest.approx(208e6, rel=1e-4)
