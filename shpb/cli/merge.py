@@ -30,7 +30,7 @@ Shots that are rejected stay out, restricted ones enter inside their span."""
 EXAMPLE = """\
 examples:
   shpb merge first-campaign
-  shpb merge first-campaign --laws johnson-cook,voce --fact melting_temperature_C=1083
+  shpb merge first-campaign --laws johnson-cook --fact melting_temperature_C=1083
   shpb merge results/W-0*.h5 quasistatic --strains 0.05,0.1 --csv --figure pdf
 
 exit status: 0 done, 1 failed, 2 bad input or usage

@@ -264,7 +264,7 @@ def _with_facts(model: Model, specimens: Sequence[Specimen], settings: MergeSett
 # --- rate and temperature ------------------------------------------------------------------------------
 
 
-def _near(values: Sequence[float], within: float) -> list[list[int]]:
+def near_groups(values: Sequence[float], within: float) -> list[list[int]]:
     """Indices of sorted values, cut into groups no wider than ``within`` from their first member."""
     groups: list[list[int]] = []
     for i in np.argsort(values, kind="stable"):
@@ -277,7 +277,7 @@ def _near(values: Sequence[float], within: float) -> list[list[int]]:
 
 def _rates(conditions: tuple[Repeats, ...], settings: MergeSettings) -> tuple[RateStudy, ...]:
     studies = []
-    for group in _near([c.temperature_k for c in conditions], 2 * settings.repeats.temperature_k):
+    for group in near_groups([c.temperature_k for c in conditions], 2 * settings.repeats.temperature_k):
         for strain in settings.strains:
             points = [p for i in group if (p := rate_point(conditions[i], strain)) is not None]
             if len(points) < 2:
@@ -303,7 +303,7 @@ def _courses(
     for name in dict.fromkeys(c.range for c in conditions):
         members = [i for i, c in enumerate(conditions) if c.range is name]
         decades = [float(np.log10(conditions[i].mean_rate_per_s)) for i in members]
-        for group in _near(decades, settings.course_decades):
+        for group in near_groups(decades, settings.course_decades):
             chosen = {members[i] for i in group}
             for strain in settings.strains:
                 part = [row for row in rows if row.condition in chosen and row.plastic_strain == strain]

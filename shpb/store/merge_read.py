@@ -16,6 +16,7 @@ from shpb.errors import StoreError
 from shpb.merge.from_shot import LeftOut
 from shpb.merge.settings import MergeSettings
 from shpb.store import merge_layout as layout
+from shpb.store.gate import require_format
 from shpb.store.plain import from_plain
 
 if TYPE_CHECKING:
@@ -135,19 +136,9 @@ def changed_since(path: Path | str, folder: Path | str) -> list[ChangedFile]:
 
 
 def _require_readable(file: h5py.File, path: Path) -> None:
-    if file.attrs.get("format") != layout.FORMAT:
-        raise StoreError(
-            "is an HDF5 file, but not a merge of this program",
-            where=str(path),
-            mend="Give a file that `shpb merge` wrote",
-        )
-    version = int(file.attrs["format_version"])
-    if version > layout.FORMAT_VERSION:
-        raise StoreError(
-            f"has format version {version}; this program reads up to {layout.FORMAT_VERSION}",
-            where=str(path),
-            mend="Update the program",
-        )
+    require_format(
+        file, path, name=layout.FORMAT, version=layout.FORMAT_VERSION, what="a merge", verb="merge"
+    )
 
 
 def _read(file: h5py.File, path: Path) -> StoredMerge:

@@ -24,6 +24,7 @@ from shpb.rig.sheet import ShotSheet
 from shpb.settings import Settings
 from shpb.store import layout
 from shpb.store.forward_run import write_closure, write_corrections
+from shpb.store.gate import require_format
 from shpb.store.plain import from_plain, to_plain
 from shpb.trust.finding import Finding
 from shpb.version import VERSION
@@ -312,19 +313,9 @@ def load(path: Path | str) -> StoredShot:
 
 
 def _require_readable(file: h5py.File, path: Path) -> None:
-    if file.attrs.get("format") != layout.FORMAT:
-        raise StoreError(
-            "is an HDF5 file, but not a shot of this program",
-            where=str(path),
-            mend="Give a file that `shpb reduce` wrote",
-        )
-    version = int(file.attrs["format_version"])
-    if version > layout.FORMAT_VERSION:
-        raise StoreError(
-            f"has format version {version}; this program reads up to {layout.FORMAT_VERSION}",
-            where=str(path),
-            mend="Update the program",
-        )
+    require_format(
+        file, path, name=layout.FORMAT, version=layout.FORMAT_VERSION, what="a shot", verb="reduce"
+    )
 
 
 def _read(file: h5py.File, path: Path) -> StoredShot:

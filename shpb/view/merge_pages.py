@@ -12,7 +12,7 @@ from typing import Any, NamedTuple
 
 import numpy as np
 
-from shpb.merge.campaign import Merged, MergedMaterial
+from shpb.merge.campaign import Merged, MergedMaterial, near_groups
 from shpb.merge.material_curve import RateRange
 from shpb.merge.model_fit import ModelFit
 from shpb.merge.repeats import Repeats
@@ -94,17 +94,6 @@ def fitted_to(fit: ModelFit, number: int) -> bool:
 def on_path(fit: ModelFit, condition: Repeats) -> bool:
     """Whether the law is asked along its heated path for this condition, as in the fit."""
     return fit.points.heat_k_m3_j is not None and condition.temperature_rise_k is not None
-
-
-def near_groups(values: Sequence[float], within: float) -> list[list[int]]:
-    """Places of rising values, cut into groups no wider than ``within`` from their first member."""
-    groups: list[list[int]] = []
-    for i in np.argsort(values, kind="stable"):
-        if groups and values[i] - values[groups[-1][0]] <= within:
-            groups[-1].append(int(i))
-        else:
-            groups.append([int(i)])
-    return groups
 
 
 def temperature_groups(merged: Merged, material: MergedMaterial) -> list[list[int]]:

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from shpb.merge.campaign import CourseAtRate, Merged, MergedMaterial
+from shpb.merge.campaign import CourseAtRate, Merged, MergedMaterial, near_groups
 from shpb.merge.flow_table import FlowRow
 from shpb.merge.peak_shift import PeakShift
 from shpb.merge.temperature import Extreme, Place
@@ -23,7 +23,6 @@ from shpb.view.merge_pages import (
     in_words,
     key,
     looks,
-    near_groups,
     note,
     range_key,
     spread_over,
