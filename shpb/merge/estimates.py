@@ -7,8 +7,8 @@ from collections.abc import Mapping
 import numpy as np
 
 from shpb.arrays import FloatArray
+from shpb.fitting.least_squares import LeastSquaresFit, null_directions
 from shpb.merge.fit_problem import WALL, FitProblem
-from shpb.merge.least_squares import LeastSquaresFit, null_directions
 from shpb.merge.model_fit import ParameterEstimate, SharedEstimate, Standing
 from shpb.merge.models.model import Model, Parameter
 from shpb.merge.statements import bound_reason

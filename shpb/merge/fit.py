@@ -19,6 +19,7 @@ import numpy as np
 
 from shpb.arrays import BoolArray, FloatArray
 from shpb.errors import InputError
+from shpb.fitting.least_squares import LeastSquaresFit
 from shpb.merge.cross_check import corrected_akaike, overall, residuals_by_condition, unknowable
 from shpb.merge.estimates import (
     covariance_and_correlation,
@@ -29,7 +30,6 @@ from shpb.merge.estimates import (
     silent_directions,
 )
 from shpb.merge.fit_problem import FitProblem
-from shpb.merge.least_squares import LeastSquaresFit
 from shpb.merge.model_fit import ModelFit
 from shpb.merge.models.model import Model, State
 from shpb.merge.points import FlowPoints

@@ -18,9 +18,9 @@ from dataclasses import replace
 import numpy as np
 
 from shpb.arrays import BoolArray, FloatArray
+from shpb.fitting.derivatives import differences, forward_differences
+from shpb.fitting.least_squares import LeastSquaresFit, Problem, polish, summary, walk
 from shpb.merge.adiabatic import PathsOfPoints
-from shpb.merge.derivatives import differences, forward_differences
-from shpb.merge.least_squares import LeastSquaresFit, Problem, polish, summary, walk
 from shpb.merge.models.model import Model
 from shpb.merge.points import FlowPoints
 

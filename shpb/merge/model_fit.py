@@ -10,8 +10,8 @@ import numpy as np
 
 from shpb.arrays import BoolArray, FloatArray, frozen
 from shpb.errors import InputError
+from shpb.fitting.derivatives import differences
 from shpb.merge.adiabatic import adiabatic_stress_pa
-from shpb.merge.derivatives import differences
 from shpb.merge.models.model import Model
 from shpb.merge.points import FlowPoints
 

@@ -9,9 +9,9 @@ from dataclasses import dataclass
 import numpy as np
 
 from shpb.errors import InputError
+from shpb.fitting.weighted_line import Estimate, fitted
 from shpb.merge.sensitivity import BOLTZMANN_J_K
 from shpb.merge.temperature import Extreme, Place
-from shpb.merge.weighted_line import Estimate, fitted
 
 _AVOGADRO_PER_MOL = 6.02214076e23  # exact in the SI since 2019
 

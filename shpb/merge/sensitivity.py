@@ -10,9 +10,9 @@ import numpy as np
 
 from shpb.arrays import FloatArray
 from shpb.errors import InputError
+from shpb.fitting.weighted_line import Estimate, Fit, common_covariance, fitted
 from shpb.merge.material_curve import RateRange
 from shpb.merge.repeats import Repeats
-from shpb.merge.weighted_line import Estimate, Fit, common_covariance, fitted
 
 BOLTZMANN_J_K = 1.380649e-23  # exact in the SI since 2019
 _SAME_TEMPERATURE_K = 10.0

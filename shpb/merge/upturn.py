@@ -15,8 +15,8 @@ import numpy as np
 
 from shpb.arrays import FloatArray
 from shpb.errors import InputError
+from shpb.fitting.weighted_line import Estimate, Fit, fitted
 from shpb.merge.sensitivity import RatePoint, relative_covariance
-from shpb.merge.weighted_line import Estimate, Fit, fitted
 
 USUAL_BREAK_PER_S = 1000.0
 _SEARCHED = (200.0, 5000.0)

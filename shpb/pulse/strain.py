@@ -66,14 +66,23 @@ def gauge_strain(record: Record, rig: Rig, kind: TestKind) -> GaugeStrain:
         If a channel named in the rig file is not in the record, or holds a NaN.
     """
     return GaugeStrain(
-        _station(record, rig.incident_gauge, rig.incident_bar, kind),
-        _station(record, rig.transmitted_gauge, rig.transmitted_bar, kind),
+        station_strain(record, rig.incident_gauge, rig.incident_bar, kind),
+        station_strain(record, rig.transmitted_gauge, rig.transmitted_bar, kind),
         record.sample_interval_s,
         record.start_s,
     )
 
 
-def _station(record: Record, gauge: Gauge, bar: Bar, kind: TestKind) -> StationStrain:
+def station_strain(record: Record, gauge: Gauge, bar: Bar, kind: TestKind) -> StationStrain:
+    """Convert the channels of one station to strain, positive under the loading pulse.
+
+    Raises
+    ------
+    InputError
+        If a channel is not in the record, or holds a NaN.
+    UnusableShotError
+        If a voltage means more strain than any bar lives through.
+    """
     voltages = [record.channel(channel) for channel in gauge.channels]
     for channel, voltage in zip(gauge.channels, voltages, strict=True):
         require_finite(

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 from shpb.errors import InputError
 from shpb.quantity import Quantity
+from shpb.rig.propagation_table import PropagationTable
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -29,6 +30,7 @@ class Bar:
         None  # what the wave speed was worked out from, where it was not measured
     )
     modulus_temperature_coefficient_per_k: Quantity | None = None  # dE/dT/E, negative for metals
+    propagation: PropagationTable | None = None  # of a bar that is not elastic, from a calibration
 
     def __post_init__(self) -> None:
         for name in ("diameter_m", "length_m", "density_kg_m3", "wave_speed_m_s"):

@@ -150,6 +150,7 @@ class Table:
     keys: tuple[Key, ...]
     required: bool = True
     one_of: tuple[OneOf, ...] = ()
+    in_forms: bool = True  # False for what only few need: the documentation has it alone
 
     def lookup(self) -> dict[str, tuple[Key, Unit]]:
         """Every accepted key name with its key and unit."""

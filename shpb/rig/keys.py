@@ -90,6 +90,14 @@ RIG_KEYS = (
         meaning="Day of the calibration that these values hold for",
         example="2024-03-11",
     ),
+    Key(
+        stem="calibration",
+        kind=Kind.FILE,
+        meaning="The calibration in force, seen from the folder of this file: its values stand in place of those "
+        "here. shpb calibrate writes it",
+        example='"rig_2024-03-11.toml"',
+        default="the values of this file",
+    ),
     _text("remarks", "Anything a reader of the results should know", "Gauges renewed after shot 212"),
 )
 
@@ -345,6 +353,20 @@ HINTS = Table(
     meaning="What the record file leaves unsaid. What both say must agree",
 )  # fmt: skip
 
+
+def _more_gauges() -> tuple[Table, ...]:
+    """Further stations on either bar, up to four: for calibration and for pulses that overlap at every one of them."""
+    return tuple(
+        Table(
+            name=f"{side}_gauge_{number}",
+            keys=_gauge_keys(f"CH{number + 2}", "300"), one_of=(POLARITY,), required=False, in_forms=False,
+            meaning=f"Gauge station {number} on the {side} bar",
+        )
+        for side in ("incident", "transmitted")
+        for number in (2, 3, 4)
+    )  # fmt: skip
+
+
 RIG_FILE = (
     Table(name="rig", meaning="The rig as a whole", keys=RIG_KEYS),
     Table(
@@ -361,6 +383,7 @@ RIG_FILE = (
         name="transmitted_gauge", meaning="The gauge station on the transmitted bar",
         keys=_gauge_keys("CH2", "600"), one_of=(POLARITY,),
     ),
+    *_more_gauges(),
     Table(name="striker", meaning="The striker", keys=STRIKER_KEYS, required=False),
     HINTS,
     Table(

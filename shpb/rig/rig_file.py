@@ -15,7 +15,7 @@ from shpb.rig.gauge import Arrangement, Gauge
 from shpb.rig.keys import BAR_KEYS, RIG_FILE
 from shpb.rig.mistakes import Collector, shown
 from shpb.rig.overrides import hints_in, overrides_in
-from shpb.rig.rig import Rig
+from shpb.rig.rig import Rig, station_name
 from shpb.rig.tables import Values, read_tables
 from shpb.rig.text_file import read_text, toml_tables
 
@@ -78,6 +78,7 @@ def rig_from_document(document: Mapping[str, Any], text: str, name: str) -> Rig:
     incident_bar, transmitted_bar = (_bar(tables[side], speed, seen) for side, speed in speeds.items())
     incident_gauge = _gauge(tables["incident_gauge"], seen)
     transmitted_gauge = _gauge(tables["transmitted_gauge"], seen)
+    more = {side: _more_gauges(side, tables, seen) for side in ("incident", "transmitted")}
     bar_speed = speeds["incident_bar"]
     striker, striker_speed = _striker(tables["striker"], tables["incident_bar"], bar_speed, seen)
     settings = overrides_in(tables, seen)
@@ -93,6 +94,8 @@ def rig_from_document(document: Mapping[str, Any], text: str, name: str) -> Rig:
         transmitted_bar=transmitted_bar,
         incident_gauge=incident_gauge,
         transmitted_gauge=transmitted_gauge,
+        more_incident_gauges=more["incident"],
+        more_transmitted_gauges=more["transmitted"],
         striker=striker,
         record=hints_in(tables["record"]),
         text=text,
@@ -255,9 +258,29 @@ def _striker(
     return striker, speed
 
 
+def _stations(tables: Mapping[str, Values]) -> dict[str, Values]:
+    """The tables of all gauge stations that stand in the file."""
+    return {name: values for name, values in tables.items() if "_gauge" in name and values.stands}
+
+
+def _more_gauges(side: str, tables: Mapping[str, Values], seen: Collector) -> tuple[Gauge, ...]:
+    """Stations 2, 3, ... of a bar; none may be left out between."""
+    first = f"{side}_gauge"
+    numbers = sorted(
+        int(name.removeprefix(f"{first}_")) for name in _stations(tables) if name.startswith(f"{first}_")
+    )
+    if numbers != list(range(2, 2 + len(numbers))):
+        seen.add(
+            f"[{station_name(side, numbers[-1])}]", f"stations {', '.join(map(str, (1, *numbers)))}",
+            "stations numbered without a gap", "Number them 2, 3, 4; the first bears no number",
+        )  # fmt: skip
+    gauges = (_gauge(tables[station_name(side, number)], seen) for number in numbers)
+    return tuple(gauge for gauge in gauges if gauge is not None)
+
+
 def _check_positions(tables: Mapping[str, Values], seen: Collector) -> None:
-    for side in ("incident", "transmitted"):
-        gauge, bar = tables[f"{side}_gauge"], tables[f"{side}_bar"]
+    for name, gauge in _stations(tables).items():
+        bar = tables[f"{name.split('_', maxsplit=1)[0]}_bar"]
         position, length = gauge.quantity("to_specimen"), bar.quantity("length")
         if position is not None and length is not None and position >= length:
             seen.add(
@@ -269,15 +292,17 @@ def _check_positions(tables: Mapping[str, Values], seen: Collector) -> None:
 
 
 def _check_channels(tables: Mapping[str, Values], seen: Collector) -> None:
-    incident, transmitted = tables["incident_gauge"], tables["transmitted_gauge"]
-    shared = set(incident.given.get("channel", ())) & set(transmitted.given.get("channel", ()))
-    if shared:
-        seen.add(
-            transmitted.key("channel"),
-            f"{shown(shared.pop())}, which is a channel of the incident gauge too",
-            "channels of its own",
-            "Name the scope channel of each gauge",
-        )
+    taken: dict[object, str] = {}
+    for name, gauge in _stations(tables).items():
+        for channel in gauge.given.get("channel", ()):
+            if taken.setdefault(channel, name) != name:
+                other = taken[channel].replace("_", " ")
+                seen.add(
+                    gauge.key("channel"),
+                    f"{shown(channel)}, which is a channel of the {other} too",
+                    "channels of its own",
+                    "Name the scope channel of each gauge",
+                )
 
 
 def _check_pulse_fits(

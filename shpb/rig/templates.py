@@ -104,7 +104,11 @@ def write_templates(folder: str | Path, *, overwrite: bool = False) -> tuple[Pat
 
 
 def _toml_template(title: str, tables: Sequence[Table]) -> str:
-    return _comment(title) + _comment(_HOW) + "".join(_table_template(table) for table in tables)
+    return (
+        _comment(title)
+        + _comment(_HOW)
+        + "".join(_table_template(table) for table in tables if table.in_forms)
+    )
 
 
 def _table_template(table: Table) -> str:

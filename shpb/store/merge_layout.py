@@ -8,11 +8,11 @@ from typing import NamedTuple, TypeVar
 import numpy as np
 
 from shpb.arrays import FloatArray
+from shpb.fitting.weighted_line import Estimate
 from shpb.merge.campaign import MergedMaterial
 from shpb.merge.model_fit import ModelFit
 from shpb.merge.sensitivity import RateSensitivity
 from shpb.merge.temperature import Extreme
-from shpb.merge.weighted_line import Estimate
 
 FORMAT = "shpb-merge"
 FORMAT_VERSION = 1

@@ -45,7 +45,8 @@ def from_plain(kind: Any, data: Any) -> Any:
     if origin in (tuple, list) or origin is Sequence:
         return _from_sequence(typing.get_args(kind), data)
     if origin in (dict, Mapping):
-        return dict(data)
+        of = (typing.get_args(kind) or (str, object))[1]
+        return {key: from_plain(of, item) for key, item in dict(data).items()}
     if kind is Quantity:
         if isinstance(data, dict):
             return Quantity(data["value"], data["u"], data["origin"])

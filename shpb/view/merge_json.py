@@ -7,13 +7,13 @@ from __future__ import annotations
 
 from typing import Any
 
+from shpb.fitting.weighted_line import Estimate
 from shpb.merge.campaign import CourseAtRate, Merged, MergedMaterial, RateStudy
 from shpb.merge.model_fit import ModelFit
 from shpb.merge.peak_shift import PeakShift
 from shpb.merge.repeats import Repeats
 from shpb.merge.sensitivity import RateSensitivity
 from shpb.merge.temperature import Extreme
-from shpb.merge.weighted_line import Estimate
 from shpb.version import VERSION
 from shpb.view.merge_words import why_not_fitted
 from shpb.view.summary import SCHEMA_VERSION

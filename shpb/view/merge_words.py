@@ -5,11 +5,11 @@ from __future__ import annotations
 import re
 from collections import Counter
 
+from shpb.fitting.weighted_line import Estimate
 from shpb.merge.campaign import Merged, MergedMaterial, NotFitted
 from shpb.merge.material_curve import RateRange
 from shpb.merge.repeats import Repeats
 from shpb.merge.temperature import Extreme, Place
-from shpb.merge.weighted_line import Estimate
 from shpb.view.digits import to_uncertainty, uncertainty
 from shpb.view.text import printable
 

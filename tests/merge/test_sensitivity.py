@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from shpb.errors import InputError
+from shpb.fitting.weighted_line import common_covariance, fitted
 from shpb.merge.material_curve import RateRange
 from shpb.merge.repeats import average_repeats
 from shpb.merge.sensitivity import (
@@ -16,7 +17,6 @@ from shpb.merge.sensitivity import (
     two_point_sensitivity,
 )  # fmt: skip
 from shpb.merge.upturn import UpturnOutcome, upturn
-from shpb.merge.weighted_line import common_covariance, fitted
 
 from .curves import material_curve
 

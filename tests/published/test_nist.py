@@ -17,7 +17,7 @@ import numpy as np
 import pytest
 
 from shpb.arrays import FloatArray
-from shpb.merge.least_squares import LeastSquaresFit, fit_function
+from shpb.fitting.least_squares import LeastSquaresFit, fit_function
 
 FOLDER = Path(__file__).parent / "data" / "nist-strd"
 FILES = sorted(FOLDER.glob("*.dat"))

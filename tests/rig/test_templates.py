@@ -52,7 +52,7 @@ def test_every_key_stands_in_the_templates_with_its_example():
                 strict=True,
             )
         )
-        for table in tables:
+        for table in (table for table in tables if table.in_forms):
             for key in table.keys:
                 assert re.search(rf"^#?{key.name} = {re.escape(key.example)}$", parts[table.name], re.M), (
                     key.name

@@ -3,7 +3,7 @@
 ``scipy.optimize.least_squares`` walks to the neighbourhood of the minimum in scaled parameters; Gauss-Newton
 steps with a fourth-order Jacobian then take it to the last digits, and the covariance comes from that Jacobian.
 Where the walk ends badly (no convergence, parameters that the data do not determine), other starts are tried
-(:mod:`shpb.merge.starts`).
+(:mod:`shpb.fitting.starts`).
 
 References
 ----------
@@ -22,7 +22,7 @@ import numpy as np
 
 from shpb.arrays import BoolArray, FloatArray, frozen
 from shpb.errors import InputError
-from shpb.merge.derivatives import differences
+from shpb.fitting.derivatives import differences
 
 Residuals = Callable[[FloatArray], FloatArray]
 Function = Callable[[FloatArray, FloatArray], FloatArray]
@@ -391,7 +391,7 @@ def fit_function(
     fit = solve(problem, [first], covariance=covariance)
     spread = _sum_of_squares(root * (y - np.average(y, weights=root**2)).astype(float))
     if search and not (fit.sound and fit.sum_of_squares < 0.5 * spread):
-        from shpb.merge.starts import other_starts
+        from shpb.fitting.starts import other_starts
 
         others = other_starts(problem, first)
         fits = [fit, *(solve(problem, [one], covariance=covariance) for one in others)]

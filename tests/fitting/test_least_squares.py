@@ -7,9 +7,9 @@ import pytest
 
 from shpb.arrays import FloatArray
 from shpb.errors import InputError
-from shpb.merge.derivatives import differences, forward_differences
-from shpb.merge.least_squares import Problem, best_of, fit_function, solve
-from shpb.merge.starts import linear_parameters
+from shpb.fitting.derivatives import differences, forward_differences
+from shpb.fitting.least_squares import Problem, best_of, fit_function, solve
+from shpb.fitting.starts import linear_parameters
 
 X = np.linspace(0.0, 4.0, 21)
 

@@ -13,7 +13,7 @@ from __future__ import annotations
 import numpy as np
 
 from shpb.arrays import FloatArray
-from shpb.merge.least_squares import Problem
+from shpb.fitting.least_squares import Problem
 
 _SEED = 20240229
 _SCATTERED = 400  # of each of the two kinds of scatter

@@ -1,0 +1,1 @@
+"""Least squares of any kind: generalised straight fits and non-linear fits with covariance; no physics."""
