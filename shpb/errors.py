@@ -9,6 +9,16 @@ from __future__ import annotations
 from collections.abc import Iterable
 from dataclasses import dataclass
 
+# Names and keys come from files: a damaged one may have thousands of characters, which would bury the message.
+_LONGEST, _LONGEST_NAME = 1500, 400
+
+
+def _clipped(text: str, longest: int) -> str:
+    """``text`` as it is, or its beginning and its end where it is far too long."""
+    if len(text) <= longest:
+        return text
+    return f"{text[: longest // 2]} ... ({len(text)} characters) ... {text[-longest // 4 :]}"
+
 
 class ShpbError(Exception):
     """Base of all errors that the package raises on purpose.
@@ -35,7 +45,8 @@ class ShpbError(Exception):
         super().__init__(what, where, mend)
 
     def __str__(self) -> str:
-        text = f"{self.where}: {self.what}" if self.where else self.what
+        what, where = _clipped(self.what, _LONGEST), _clipped(self.where, _LONGEST)
+        text = f"{where}: {what}" if where else what
         return f"{text.rstrip('.')}. {self.mend}" if self.mend else text
 
     def __reduce__(self) -> tuple[object, ...]:
@@ -80,7 +91,8 @@ class Mistake:
     mend: str = ""
 
     def __str__(self) -> str:
-        text = f"{self.file}: {self.key}: found {self.found}, expected {self.expected}"
+        file, key, found = (_clipped(part, _LONGEST_NAME) for part in (self.file, self.key, self.found))
+        text = f"{file}: {key}: found {found}, expected {self.expected}"
         return f"{text}. {self.mend}" if self.mend else text
 
 

@@ -6,6 +6,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, fields, replace
 from typing import TYPE_CHECKING
 
+from shpb.pulse.by_hand import ByHand
 from shpb.pulse.pulse import Pulses
 from shpb.pulse.pulses import find_pulses
 from shpb.pulse.strain import GaugeStrain, gauge_strain
@@ -14,13 +15,14 @@ from shpb.response.response import Response, specimen_response
 from shpb.rig.overrides import settings_for
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
-from shpb.settings import Settings
+from shpb.settings import Settings, Waves
 from shpb.trust.budget import Budget, uncertainty_budget
 from shpb.trust.closure import Closure, close
 from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Finding, Verdict, verdict_of
 from shpb.trust.judge import judge
 from shpb.wave.faces import FacePulses, carry_to_faces
+from shpb.wave.station_waves import station_pulses
 
 if TYPE_CHECKING:
     from shpb.trust.draws import Draws
@@ -51,6 +53,7 @@ class ShotResult:
     closure: Closure | None
     findings: tuple[Finding, ...]
     draws: Draws | None = None  # by :func:`draw_shot`
+    by_hand: tuple[ByHand, ...] = ()  # windows and feet that people moved, oldest first
 
     @property
     def verdict(self) -> Verdict:
@@ -91,8 +94,9 @@ def reduce(record: Record, rig: Rig, sheet: ShotSheet, settings: Settings | None
     accept 1500.0 1/s
     """
     settings = settings_for(rig, sheet) if settings is None else settings
-    strain = gauge_strain(record, rig, sheet.kind)
-    pulses = find_pulses(strain, rig, sheet.specimen, settings)
+    by_stations = settings.waves is Waves.STATIONS
+    strain = gauge_strain(record, rig, sheet.kind, every=by_stations)
+    pulses = (station_pulses if by_stations else find_pulses)(strain, rig, sheet.specimen, settings)
     faces = carry_to_faces(pulses, rig, sheet, settings)
     response = specimen_response(faces, pulses, rig, sheet, settings)
     evidence = Evidence(

@@ -26,6 +26,13 @@ class Alignment(StrEnum):
     FEET = "feet"  # reflected and transmitted feet laid on the incident foot
 
 
+class Waves(StrEnum):
+    """How the waves of a bar are told apart."""
+
+    WINDOWS = "windows"  # in time: each passes the gauge alone
+    STATIONS = "stations"  # by two or more gauge stations, though they lie on each other
+
+
 class Analysis(StrEnum):
     """Which curve is put forward as the result; the others stand beside it."""
 
@@ -62,6 +69,7 @@ class Settings:
     100000.0
     """
 
+    waves: Waves = Waves.WINDOWS
     dispersion: Dispersion = Dispersion.PHASE
     alignment: Alignment = Alignment.PHYSICAL
     # Cut-off of the one low-pass for all pulses, as f a/c0 of the thicker bar. Beyond 0.25 the
@@ -92,7 +100,8 @@ class Settings:
                 f"found {self.limits!r}", where="settings.limits", mend="Give a Limits value or leave it out"
             )
         self.limits.require_order()
-        for name, kind in (("dispersion", Dispersion), ("alignment", Alignment), ("analysis", Analysis)):
+        kinds = {"waves": Waves, "dispersion": Dispersion, "alignment": Alignment, "analysis": Analysis}
+        for name, kind in kinds.items():
             try:
                 object.__setattr__(self, name, kind(getattr(self, name)))
             except ValueError:

@@ -56,6 +56,7 @@ class Session:
     name: str = ""  # of the calibration file, without its ending; empty for rig file and date
     holds_days: int = 365
     temperature_k: Quantity | None = None
+    propagation_of: tuple[str, ...] = ()  # bars whose complex propagation is asked for
     operator: str = ""
     remarks: str = ""
     hints: RecordHints = field(default_factory=RecordHints)

@@ -3,13 +3,15 @@
 from __future__ import annotations
 
 import argparse
+from collections.abc import Sequence
 from pathlib import Path
 
 NAME = "forms"
-HELP = "write a rig file, a shot sheet and a shot list to fill in"
+HELP = "write rig file, shot sheet, shot list and calibration session to fill in"
 DESCRIPTION = """\
-Write a commented rig file, shot sheet and shot list into a folder: every key
-with its unit, its meaning, an example value, and whether it may be left out."""
+Write a commented rig file, shot sheet, shot list and calibration session into
+a folder: every key with its unit, its meaning, an example value, and whether it
+may be left out."""
 EXAMPLE = """\
 example:
   shpb forms my-lab
@@ -19,14 +21,27 @@ example:
 def add_arguments(verb: argparse.ArgumentParser) -> None:
     """Declare the arguments."""
     verb.add_argument("folder", type=Path, metavar="FOLDER", help="folder to write to; made if need be")
+    verb.add_argument("--json", action="store_true", help="print JSON for other programs")
 
 
 def run(options: argparse.Namespace) -> int:
-    """Write the three forms."""
+    """Write the forms."""
     from shpb.cli.status import DONE
     from shpb.rig.templates import write_templates
     from shpb.view.text import printable
 
-    for path in write_templates(options.folder):
-        print(printable(path))
+    files = write_templates(options.folder)
+    if options.json:
+        _print_json(files)
+    else:
+        for path in files:
+            print(printable(path))
     return DONE
+
+
+def _print_json(files: Sequence[Path]) -> None:
+    from shpb.version import VERSION
+    from shpb.view.summary import SCHEMA_VERSION, json_text
+
+    said = {"schema": "shpb forms", "schema_version": SCHEMA_VERSION, "program_version": VERSION}
+    print(json_text(said | {"files_written": [str(path) for path in files]}))

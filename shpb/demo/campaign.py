@@ -2,16 +2,15 @@
 
 from __future__ import annotations
 
-import hashlib
-import json
-import os
-import shutil
-import tempfile
 from collections.abc import Callable
 from dataclasses import dataclass
 from importlib import resources
-from pathlib import Path, PurePosixPath
+from pathlib import Path
 
+from shpb.demo.calibration_files import calibration_files
+from shpb.demo.calibration_scenario import calibration_truths
+from shpb.demo.calibration_truth import CalibrationTruth
+from shpb.demo.folder import MARKER, Kind, earlier_files, marker, put, refuse_changed
 from shpb.demo.materials import WRENMOOR
 from shpb.demo.merge_files import MERGE_BENCHES, merge_files, merge_truth
 from shpb.demo.paper import quasistatic_files, shot_list, shot_sheet
@@ -19,10 +18,7 @@ from shpb.demo.record_files import record_files
 from shpb.demo.scenario import BENCHES, DemoShot, bench_text, demo_shots
 from shpb.demo.scope import scope_record
 from shpb.demo.truth import DemoTruth, campaign_truth
-from shpb.errors import InputError
 
-MARKER = "demo_campaign.json"
-_FORMAT = "shpb-demo-campaign"
 LIST_NAME = "shot_list.csv"
 
 Progress = Callable[[str], None]
@@ -86,7 +82,8 @@ def write_demo(
     """
     folder = Path(folder)
     say = progress if progress is not None else _silent
-    earlier = _earlier_files(folder, to_merge=to_merge)
+    kind = Kind.TO_MERGE if to_merge else Kind.EVERY_KIND
+    earlier = earlier_files(folder, kind)
     say("firing the shots")
     truths = merge_truth() if to_merge else campaign_truth()
     say("writing the records")
@@ -94,22 +91,62 @@ def write_demo(
         files, shots = _to_merge_files(truths, folder)
     else:
         files, shots = _campaign_files(truths, folder)
-    _refuse_changed(folder, files, earlier)
+    refuse_changed(folder, files, earlier)
     say("moving the files into place")
-    try:
-        _put(folder, files)
-    except OSError as error:
-        raise InputError(
-            f"the demo cannot be written: {error.strerror or error}",
-            where=str(folder),
-            mend="Choose a folder that you may write to, with some 5 MB of room",
-        ) from error
+    put(folder, files)
     return DemoCampaign(
         folder=folder,
         shots=shots,
         shot_list=folder / LIST_NAME,
         rig_files=tuple(folder / _rig_name(bench) for bench in (MERGE_BENCHES if to_merge else BENCHES)),
         quasistatic_files=tuple(folder / name for name in files if name.startswith("quasistatic/")),
+    )
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class WrittenSession:
+    """One calibration session of the demo, where its files are, and what is really true."""
+
+    session_file: Path
+    rig_file: Path
+    truth: CalibrationTruth
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class DemoCalibration:
+    """The calibration sessions of the demo as they lie in a folder, by date."""
+
+    folder: Path
+    sessions: tuple[WrittenSession, ...]
+
+
+def write_calibration_demo(folder: str | Path, *, progress: Progress | None = None) -> DemoCalibration:
+    """Write the calibration sessions of the invented laboratory: rig files, session files, records.
+
+    Into a folder of their own, in the manner of :func:`write_demo`.
+
+    Raises
+    ------
+    InputError
+        As :func:`write_demo`.
+    """
+    folder = Path(folder)
+    say = progress if progress is not None else _silent
+    earlier = earlier_files(folder, Kind.CALIBRATION)
+    say("firing the shots")
+    files = calibration_files()
+    files[MARKER] = marker(files, Kind.CALIBRATION)
+    refuse_changed(folder, files, earlier)
+    say("moving the files into place")
+    put(folder, files)
+    return DemoCalibration(
+        folder=folder,
+        sessions=tuple(
+            WrittenSession(
+                session_file=folder / truth.session_file, rig_file=folder / truth.rig_file, truth=truth
+            )
+            for truth in calibration_truths()
+        ),
     )
 
 
@@ -149,7 +186,7 @@ def _campaign_files(
     files[LIST_NAME] = shot_list(listed).encode()
     files.update({f"quasistatic/{name}": content for name, content in quasistatic_files().items()})
     files["README.txt"] = _readme().encode()
-    files[MARKER] = _marker(files)
+    files[MARKER] = marker(files, Kind.EVERY_KIND)
     return files, tuple(shots)
 
 
@@ -168,7 +205,7 @@ def _to_merge_files(
         )
         for truth in truths.values()
     )
-    files[MARKER] = _marker(files, to_merge=True)
+    files[MARKER] = marker(files, Kind.TO_MERGE)
     return files, shots
 
 
@@ -176,70 +213,3 @@ def _readme() -> str:
     text = resources.files("shpb.demo").joinpath("texts", "README.txt").read_text(encoding="utf-8")
     lines = (f"  {shot.shot_id}  {shot.special}\n        expected: {shot.expected}" for shot in demo_shots())
     return text.replace("{shots}", "\n".join(lines))
-
-
-def _marker(files: dict[str, bytes], *, to_merge: bool = False) -> bytes:
-    """What tells a demo folder from others, and a changed file from one as it was written."""
-    digests = {name: hashlib.sha256(content).hexdigest() for name, content in sorted(files.items())}
-    head = {"format": _FORMAT, "version": 1, **({"to_merge": True} if to_merge else {})}
-    return (json.dumps({**head, "files": digests}, indent=1) + "\n").encode()
-
-
-def _earlier_files(folder: Path, *, to_merge: bool) -> dict[str, str]:
-    """Digests of an earlier demo's files; empty for a new or an empty folder."""
-    if folder.exists() and not folder.is_dir():
-        raise InputError("this is a file", where=str(folder), mend="Give the name of a folder")
-    if not folder.exists() or not any(folder.iterdir()):
-        return {}
-    try:
-        marker = json.loads((folder / MARKER).read_text(encoding="utf-8"))
-        files = {str(name): str(digest) for name, digest in marker["files"].items()}
-        known, other = marker["format"] == _FORMAT, bool(marker.get("to_merge")) != to_merge
-    except (OSError, ValueError, KeyError, TypeError, AttributeError):
-        known = False
-    if known and other:
-        raise InputError(
-            "the folder holds the other demo campaign",
-            where=str(folder),
-            mend="Give a new or an empty folder; nothing was written",
-        )
-    if known:
-        return files
-    raise InputError(
-        "the folder holds files and is no demo campaign",
-        where=str(folder),
-        mend="Give a new or an empty folder; nothing was written",
-    )
-
-
-def _refuse_changed(folder: Path, files: dict[str, bytes], earlier: dict[str, str]) -> None:
-    """Refuse to write over anything that this program did not write itself."""
-    for name, content in files.items():
-        path = folder / name
-        if name == MARKER or not path.exists():
-            continue
-        present = path.read_bytes() if path.is_file() else None
-        if present is None or (
-            present != content and hashlib.sha256(present).hexdigest() != earlier.get(name)
-        ):
-            raise InputError(
-                "this file was changed since the demo was written",
-                where=str(path),
-                mend="Move it elsewhere, or give another folder; nothing was written",
-            )
-
-
-def _put(folder: Path, files: dict[str, bytes]) -> None:
-    folder.parent.mkdir(parents=True, exist_ok=True)
-    with tempfile.TemporaryDirectory(prefix=f".{folder.name}-", dir=folder.parent) as made:
-        inside = Path(made) / "demo"
-        for name, content in files.items():
-            path = inside / PurePosixPath(name)
-            path.parent.mkdir(parents=True, exist_ok=True)
-            path.write_bytes(content)
-        if not folder.exists():
-            shutil.move(inside, folder)
-            return
-        for name in files:  # the marker comes last
-            (folder / name).parent.mkdir(parents=True, exist_ok=True)
-            os.replace(inside / name, folder / name)

@@ -7,23 +7,43 @@ from __future__ import annotations
 
 import io
 from collections.abc import Callable, Iterable
+from typing import Protocol
 
 import numpy as np
 
 from shpb.arrays import FloatArray
-from shpb.demo.scenario import DemoShot, Format
+from shpb.demo.scenario import Format
 from shpb.demo.scope import ScopeRecord
 from shpb.forward.recording import Digitised
 
 Files = dict[str, bytes]
 
 
-def record_files(shot: DemoShot, record: ScopeRecord) -> Files:
+class Recorded(Protocol):
+    """What a record's files say of the shot, and how they are written."""
+
+    @property
+    def shot_id(self) -> str:
+        """Name of the shot, and of its files."""
+        ...
+
+    @property
+    def date(self) -> str:
+        """Day of the shot."""
+        ...
+
+    @property
+    def format(self) -> Format:
+        """How the record is written."""
+        ...
+
+
+def record_files(shot: Recorded, record: ScopeRecord) -> Files:
     """Return the files of one record, by name."""
     return _WRITERS[shot.format](shot, record)
 
 
-def _comma(shot: DemoShot, record: ScopeRecord) -> Files:
+def _comma(shot: Recorded, record: ScopeRecord) -> Files:
     head = [
         f"Shot,{shot.shot_id}",
         f"Date,{shot.date}",
@@ -37,20 +57,20 @@ def _comma(shot: DemoShot, record: ScopeRecord) -> Files:
     return {f"{shot.shot_id}.csv": _text(head, rows)}
 
 
-def _semicolon(shot: DemoShot, record: ScopeRecord) -> Files:
+def _semicolon(shot: Recorded, record: ScopeRecord) -> Files:
     head = [";".join(("t [µs]", *(f"{name} [V]" for name in record.names)))]
     rows = _rows(";", (f"{t * 1e6:.2f}" for t in record.time_s), record.channels)
     text = _text(head, (row.replace(".", ",") for row in rows), newline="\r\n", encoding="latin-1")
     return {f"{shot.shot_id}.csv": text}
 
 
-def _tab(shot: DemoShot, record: ScopeRecord) -> Files:
+def _tab(shot: Recorded, record: ScopeRecord) -> Files:
     head = ["\t".join(("time (ms)", *(f"{name} (mV)" for name in record.names)))]
     times = (f"{t * 1e3:.5f}" for t in record.time_s)
     return {f"{shot.shot_id}.txt": _text(head, _rows("\t", times, record.channels, scale=1e3))}
 
 
-def _per_channel(shot: DemoShot, record: ScopeRecord) -> Files:
+def _per_channel(shot: Recorded, record: ScopeRecord) -> Files:
     files = {}
     for name, channel in zip(record.names, record.channels, strict=True):
         rows = _rows(",", (f"{t:.8e}" for t in record.time_s), (channel,))
@@ -58,7 +78,7 @@ def _per_channel(shot: DemoShot, record: ScopeRecord) -> Files:
     return files
 
 
-def _codes(shot: DemoShot, record: ScopeRecord) -> Files:
+def _codes(shot: Recorded, record: ScopeRecord) -> Files:
     head = [
         f"# shot: {shot.shot_id}",
         f"# sample interval: {record.interval_s * 1e6:g} us",
@@ -72,7 +92,7 @@ def _codes(shot: DemoShot, record: ScopeRecord) -> Files:
     }
 
 
-def _npz(shot: DemoShot, record: ScopeRecord) -> Files:
+def _npz(shot: Recorded, record: ScopeRecord) -> Files:
     out = io.BytesIO()
     arrays = {name: ch.voltage_v for name, ch in zip(record.names, record.channels, strict=True)}
     facts = {
@@ -84,7 +104,7 @@ def _npz(shot: DemoShot, record: ScopeRecord) -> Files:
     return {f"{shot.shot_id}.npz": out.getvalue()}
 
 
-def _hdf5(shot: DemoShot, record: ScopeRecord) -> Files:
+def _hdf5(shot: Recorded, record: ScopeRecord) -> Files:
     import h5py
 
     out = io.BytesIO()
@@ -101,7 +121,7 @@ def _hdf5(shot: DemoShot, record: ScopeRecord) -> Files:
 _MAT_TEXT_BYTES = 116  # descriptive text at the head of a MAT file, level 5
 
 
-def _matlab(shot: DemoShot, record: ScopeRecord) -> Files:
+def _matlab(shot: Recorded, record: ScopeRecord) -> Files:
     from scipy.io import savemat
 
     columns: dict[str, FloatArray | str] = {"time_s": record.time_s, "voltage_unit": "V"}
@@ -113,7 +133,7 @@ def _matlab(shot: DemoShot, record: ScopeRecord) -> Files:
     return {f"{shot.shot_id}.mat": head + out.getvalue()[_MAT_TEXT_BYTES:]}
 
 
-_WRITERS: dict[Format, Callable[[DemoShot, ScopeRecord], Files]] = {
+_WRITERS: dict[Format, Callable[[Recorded, ScopeRecord], Files]] = {
     Format.COMMA: _comma,
     Format.SEMICOLON: _semicolon,
     Format.TAB: _tab,

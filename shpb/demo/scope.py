@@ -97,11 +97,17 @@ def _disturbance(
     pulse = strain[(time_s >= span_s[0]) & (time_s < span_s[1])]
     ratio = bridge_ratio(-pulse, gauge, bar.poisson_ratio)
     peak = float(np.abs(ratio).max() * gauge.excitation_v * gauge.gain)
-    duration = float(time_s[-1] - time_s[0])
+    return usual_disturbance(peak, float(time_s[-1] - time_s[0]), peak_to_noise_db, random)
+
+
+def usual_disturbance(
+    peak_v: float, duration_s: float, peak_to_noise_db: float, random: np.random.Generator
+) -> Disturbance:
+    """What the laboratory's chains add to a channel whose first pulse has this peak [V]; 0 for a silent one."""
     return Disturbance(
-        white_rms_v=max(peak * 10 ** (-peak_to_noise_db / 20), _LEAST_NOISE_V),
-        hum_v=0.003 * peak + 0.002,
+        white_rms_v=max(peak_v * 10 ** (-peak_to_noise_db / 20), _LEAST_NOISE_V),
+        hum_v=0.003 * peak_v + 0.002,
         hum_phase_rad=float(random.uniform(0, 2 * np.pi)),
         offset_v=float(random.uniform(-0.05, 0.05)),
-        drift_v_per_s=float(random.uniform(-1, 1)) * 0.004 * peak / duration,
+        drift_v_per_s=float(random.uniform(-1, 1)) * 0.004 * peak_v / duration_s,
     )

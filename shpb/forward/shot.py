@@ -12,7 +12,7 @@ whose spectrum has fallen off by then.
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -65,8 +65,8 @@ class ForwardShot:
     Forces are those on the bar faces, velocities those of the bar faces, less the mean indentation as
     one-dimensional theory has them; strain, rate, stress and temperature are the specimen's own (means over
     its length). The bar faces have come nearer by the specimen's shortening and both indentations.
-    ``incident_strain`` and
-    ``transmitted_strain`` are what a perfect gauge on the bar's surface sees.
+    ``incident_strain`` and ``transmitted_strain`` are what a perfect gauge on the bar's surface sees;
+    ``station_strain`` holds the same for every station of :attr:`shpb.rig.rig.Rig.gauges`, by name.
     """
 
     plan: ShotPlan
@@ -74,6 +74,7 @@ class ForwardShot:
     time_s: FloatArray
     incident_strain: FloatArray
     transmitted_strain: FloatArray
+    station_strain: Mapping[str, FloatArray]
     incident_force_n: FloatArray  # of the wave that comes to the front face
     force_in_n: FloatArray
     force_out_n: FloatArray
@@ -196,19 +197,21 @@ class _Lines:
         )
         return self.direct - self.incident.history(echo), -self.transmitted.history(far)
 
-    def gauges(self, reflected: FloatArray, transmitted: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """Surface strain at the two gauges."""
-        rig, bar, gauge = self.rig, self.rig.incident_bar, self.rig.incident_gauge
-        left = self.incident.spectrum(reflected)
-        waves = self.incident.carried(self.impact, bar.length_m - gauge.to_specimen_m)
-        waves = waves + self.incident.carried(left, gauge.to_specimen_m)
-        waves = waves - self.incident.carried(left, 2 * bar.length_m - gauge.to_specimen_m)
-        seen_in = self.incident.gauge_strain(waves, gauge.length_m)
-        bar, gauge = rig.transmitted_bar, rig.transmitted_gauge
-        right = self.transmitted.spectrum(transmitted)
-        waves = self.transmitted.carried(right, gauge.to_specimen_m)
-        waves = waves - self.transmitted.carried(right, 2 * bar.length_m - gauge.to_specimen_m)
-        return seen_in, self.transmitted.gauge_strain(waves, gauge.length_m)
+    def gauges(self, reflected: FloatArray, transmitted: FloatArray) -> dict[str, FloatArray]:
+        """Surface strain at every station of the rig."""
+        left, right = self.incident.spectrum(reflected), self.transmitted.spectrum(transmitted)
+        seen = {}
+        for name, gauge in self.rig.gauges.items():
+            length, x = self.rig.bar_of(name).length_m, gauge.to_specimen_m
+            if name.startswith("incident"):
+                bar = self.incident
+                waves = bar.carried(self.impact, length - x) + bar.carried(left, x)
+                waves = waves - bar.carried(left, 2 * length - x)
+            else:
+                bar = self.transmitted
+                waves = bar.carried(right, x) - bar.carried(right, 2 * length - x)
+            seen[name] = bar.gauge_strain(waves, gauge.length_m)
+        return seen
 
 
 def _impact(plan: ShotPlan, time_s: FloatArray) -> FloatArray:
@@ -273,15 +276,16 @@ def _march(run: SpecimenRun, lines: Sequence[_Lines], time_s: FloatArray, zero: 
 def _shot(plan: ShotPlan, lines: _Lines, time_s: FloatArray, faces: _Faces) -> ForwardShot:
     rig, history = plan.rig, faces.history
     force_in, force_out = history.force_in_n, history.force_out_n
-    strain_in, strain_out = lines.gauges(force_in - faces.incoming, force_out - faces.returning)
+    strain = lines.gauges(force_in - faces.incoming, force_out - faces.returning)
     velocity_in = (2 * faces.incoming - force_in) / rig.incident_bar.impedance_n_s_m
     velocity_out = (force_out - 2 * faces.returning) / rig.transmitted_bar.impedance_n_s_m
     return ForwardShot(
         plan=plan,
         arrivals_s=arrivals(plan),
         time_s=frozen(time_s),
-        incident_strain=frozen(strain_in),
-        transmitted_strain=frozen(strain_out),
+        incident_strain=frozen(strain["incident_gauge"]),
+        transmitted_strain=frozen(strain["transmitted_gauge"]),
+        station_strain=strain,
         incident_force_n=frozen(faces.incoming),
         force_in_n=frozen(force_in),
         force_out_n=frozen(force_out),

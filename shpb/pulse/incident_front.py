@@ -42,7 +42,7 @@ def incident_front_s(strain: GaugeStrain, rig: Rig, settings: Settings) -> float
                 f"the {name} pulse comes out negative: the polarity is inverted",
                 where=f"{name} gauge",
                 mend="Check kind in the shot sheet; else turn voltage_under_compression (or _tension) round in the rig "
-                "file, or check the wiring",
+                "file, or check the wiring; a record that begins on the pulse looks the same",
                 check="polarity",
             )
     if settings.incident_foot_s is not None:
@@ -72,8 +72,8 @@ def _front_or_refuse(station: StationStrain, interval: float, smoothing: float, 
 def _refuse_swapped(strain: GaugeStrain, incident: Front, transmitted: Front, rig: Rig) -> None:
     interval = strain.sample_interval_s
     expected = (
-        rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
-        + rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s
+        rig.incident_gauge.to_specimen_m / rig.incident_bar.front_speed_m_s
+        + rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.front_speed_m_s
     )
     lag = (transmitted.at - incident.at) * interval
     clear = transmitted.peak > 20 * transmitted.noise

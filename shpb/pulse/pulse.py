@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from shpb.arrays import FloatArray
 from shpb.pulse.arrivals import Arrivals
 from shpb.pulse.foot import Foot
+from shpb.pulse.separated import SeparatedBar
 from shpb.pulse.zero_line import ZeroLine
 from shpb.settings import Span
 
@@ -35,7 +36,7 @@ class Pulse:
     zero : ZeroLine
         The line that was removed.
     noise : float
-        Standard deviation of one sample of strain.
+        Standard deviation of one sample of strain; of a wave told apart by stations, where it begins.
     level_at_start, u_level_at_start : float
         Level where the window begins, share of the pulse's peak: not zero if the pulse came sooner.
     """
@@ -65,7 +66,11 @@ class Pulse:
 
 @dataclass(frozen=True, slots=True, eq=False, kw_only=True)
 class Pulses:
-    """The three pulses of a shot at their gauges, and what was seen on the way."""
+    """The three pulses of a shot at their gauges, and what was seen on the way.
+
+    Where stations tell the waves of a bar apart (``separated``), the pulses are whole waves at the bar's first station
+    and may lie on each other in time; ``returning`` is then the wave that comes back in the transmitted bar.
+    """
 
     incident: Pulse
     reflected: Pulse
@@ -75,7 +80,25 @@ class Pulses:
     # Level of the incident pulse's tail where the reflected pulse begins, share of its peak.
     tail_at_reflection: float
     remarks: tuple[str, ...] = field(default=())
+    returning: Pulse | None = None
+    separated: tuple[SeparatedBar, ...] = ()
 
     def __iter__(self) -> Iterator[Pulse]:
         """Incident, reflected, transmitted."""
         yield from (self.incident, self.reflected, self.transmitted)
+
+    def noise_at(self, pulse: Pulse, time_s: float) -> float:
+        """Noise of a pulse at a time on the record's clock [1]: it grows in a wave that stations have told apart."""
+        bar = self.waves(pulse.name)
+        if bar is None:
+            return pulse.noise
+        at = bar.begin + round((time_s - bar.begin_s) / self.sample_interval_s)
+        return bar.noise_at(at, "right" if pulse.name in ("incident", "transmitted") else "left")
+
+    def separated_bar(self, side: str) -> SeparatedBar | None:
+        """The separated waves of the "incident" or the "transmitted" bar; None where windows told them apart."""
+        return next((bar for bar in self.separated if bar.side == side), None)
+
+    def waves(self, name: str) -> SeparatedBar | None:
+        """The separated bar that a pulse of this name comes from; None where a window cut it out."""
+        return self.separated_bar("incident" if name in ("incident", "reflected") else "transmitted")

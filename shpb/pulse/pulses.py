@@ -39,9 +39,9 @@ def find_pulses(strain: GaugeStrain, rig: Rig, specimen: Specimen, settings: Set
     lead_i, lead_t = (LEAD_RADII * bar.radius_time_s for bar in (rig.incident_bar, rig.transmitted_bar))
     split = arrivals.reflected_s - lead_i  # the incident window ends and the reflected one begins
 
-    cut = _Cutter(strain, settings)
-    at_incident = _Trace(strain.incident, rig.incident_bar, zeros.incident_noise)
-    at_transmitted = _Trace(strain.transmitted, rig.transmitted_bar, zeros.transmitted_noise)
+    cut = Cutter(strain, settings)
+    at_incident = Trace(strain.incident, rig.incident_bar, zeros.incident_noise)
+    at_transmitted = Trace(strain.transmitted, rig.transmitted_bar, zeros.transmitted_noise)
     incident = cut(
         "incident",
         at_incident,
@@ -94,8 +94,8 @@ def _remarks(
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class _Trace:
-    """One gauge's trace: its strain, its bar, its noise."""
+class Trace:
+    """One gauge's trace, or one wave's: its strain, its bar, its noise."""
 
     station: StationStrain
     bar: Bar
@@ -103,17 +103,24 @@ class _Trace:
 
 
 @dataclass(frozen=True, slots=True)
-class _Cutter:
+class Cutter:
     """Cuts one pulse: window, zero line, foot, tapers; what the sheet says overrides."""
 
     strain: GaugeStrain
     settings: Settings
 
-    def __call__(self, name: str, trace: _Trace, zero: ZeroLine, automatic: Span, arrival_s: float) -> Pulse:
+    def __call__(self, name: str, trace: Trace, zero: ZeroLine, automatic: Span, arrival_s: float) -> Pulse:
+        """Cut the pulse ``name`` out of a trace; its foot is sought about ``arrival_s``.
+
+        Raises
+        ------
+        UnusableShotError
+            If the window holds next to nothing, or a foot set by hand lies outside it.
+        """
         strain, interval = self.strain, self.strain.sample_interval_s
         record_span = (strain.start_s, strain.time(strain.samples))
         automatic = (max(automatic[0], record_span[0]), min(automatic[1], record_span[1]))
-        window: Span = getattr(self.settings, f"{name}_window_s") or automatic
+        window: Span = getattr(self.settings, f"{name}_window_s", None) or automatic
         start, stop = strain.index(window[0]), strain.index(window[1])
         if stop - start < 16:
             raise UnusableShotError(
@@ -133,7 +140,7 @@ class _Cutter:
             SMOOTHING_RADII * trace.bar.radius_time_s,
             1 if name == "incident" else None,
         )
-        by_hand = getattr(self.settings, f"{name}_foot_s")
+        by_hand = getattr(self.settings, f"{name}_foot_s", None)
         foot = picked
         if by_hand is not None:
             if not window[0] <= by_hand <= window[1]:

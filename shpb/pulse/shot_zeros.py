@@ -41,8 +41,8 @@ def shot_zeros(strain: GaugeStrain, arrivals: Arrivals, rig: Rig) -> ShotZeros:
     index, interval = strain.index, strain.sample_interval_s
     front, split = index(arrivals.incident_s), index(arrivals.reflected_s - lead_i)
 
-    before = _quiet_or_refuse(incident, index(arrivals.incident_s - lead_i), interval, "incident")
-    peak = _peak_above(incident, before, front, split)
+    before = quiet_or_refuse(incident, index(arrivals.incident_s - lead_i), interval, "incident")
+    peak = peak_above(incident, before, front, split)
     settled = _level(incident, split, lead_i / interval)
     gap = None
     # A trace that stands at a quarter of the peak is the pulse itself, not a shifted zero.
@@ -53,8 +53,8 @@ def shot_zeros(strain: GaugeStrain, arrivals: Arrivals, rig: Rig) -> ShotZeros:
     zero_r = zero_i if gap is None else zero_line(gap, (before,), peak, interval)
 
     # The transmitted gauge is quiet until anything can have come through the bars.
-    before_t = _quiet_or_refuse(transmitted, index(arrivals.transmitted_s - lead_t), interval, "transmitted")
-    peak_t = _peak_above(transmitted, before_t, before_t.stop, index(arrivals.end_reflection_s - lead_t))
+    before_t = quiet_or_refuse(transmitted, index(arrivals.transmitted_s - lead_t), interval, "transmitted")
+    peak_t = peak_above(transmitted, before_t, before_t.stop, index(arrivals.end_reflection_s - lead_t))
     return ShotZeros(
         incident=zero_i,
         reflected=zero_r,
@@ -67,7 +67,14 @@ def shot_zeros(strain: GaugeStrain, arrivals: Arrivals, rig: Rig) -> ShotZeros:
     )
 
 
-def _quiet_or_refuse(trace: FloatArray, front: int, interval: float, name: str) -> QuietWindow:
+def quiet_or_refuse(trace: FloatArray, front: int, interval: float, name: str) -> QuietWindow:
+    """The quiet stretch before sample ``front`` of the gauge ``name``.
+
+    Raises
+    ------
+    UnusableShotError
+        If there is none.
+    """
     window = quiet_before_front(trace, front, interval)
     if window is None:
         # Little pre-trigger: the last resort is whatever stands before the front.
@@ -82,7 +89,8 @@ def _quiet_or_refuse(trace: FloatArray, front: int, interval: float, name: str) 
     return window
 
 
-def _peak_above(trace: FloatArray, quiet: QuietWindow, start: int, stop: int) -> float:
+def peak_above(trace: FloatArray, quiet: QuietWindow, start: int, stop: int) -> float:
+    """Greatest distance of a stretch from a quiet window's level, never zero."""
     values = trace[start : max(stop, start + 1)]
     return max(float(np.abs(values - quiet.level).max()), 1e-12)
 

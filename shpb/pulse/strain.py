@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -13,6 +14,8 @@ from shpb.record.record import Record
 from shpb.rig.bar import Bar
 from shpb.rig.gauge import Gauge, TestKind
 from shpb.rig.rig import Rig
+
+_BLOCK = 1 << 20
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -36,12 +39,21 @@ class StationStrain:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class GaugeStrain:
-    """Strain at both stations on the record's clock."""
+    """Strain at both stations on the record's clock.
+
+    ``more`` holds further stations by their names in :attr:`shpb.rig.rig.Rig.gauges`, where they were asked for.
+    """
 
     incident: StationStrain
     transmitted: StationStrain
     sample_interval_s: float
     start_s: float
+    more: Mapping[str, StationStrain] = field(default_factory=dict)
+
+    @property
+    def stations(self) -> dict[str, StationStrain]:
+        """Every station by its name in :attr:`shpb.rig.rig.Rig.gauges`."""
+        return {"incident_gauge": self.incident, "transmitted_gauge": self.transmitted, **self.more}
 
     @property
     def samples(self) -> int:
@@ -57,8 +69,8 @@ class GaugeStrain:
         return self.start_s + index * self.sample_interval_s
 
 
-def gauge_strain(record: Record, rig: Rig, kind: TestKind) -> GaugeStrain:
-    """Convert the record of a shot to strain at both stations.
+def gauge_strain(record: Record, rig: Rig, kind: TestKind, *, every: bool = False) -> GaugeStrain:
+    """Convert the record of a shot to strain at both stations; with ``every`` at further ones of the rig too.
 
     Raises
     ------
@@ -70,6 +82,11 @@ def gauge_strain(record: Record, rig: Rig, kind: TestKind) -> GaugeStrain:
         station_strain(record, rig.transmitted_gauge, rig.transmitted_bar, kind),
         record.sample_interval_s,
         record.start_s,
+        {
+            name: station_strain(record, gauge, rig.bar_of(name), kind)
+            for name, gauge in rig.gauges.items()
+            if every and name not in ("incident_gauge", "transmitted_gauge")
+        },
     )
 
 
@@ -94,19 +111,25 @@ def station_strain(record: Record, gauge: Gauge, bar: Bar, kind: TestKind) -> St
     sign = 1.0 if kind is TestKind.TENSION else -1.0
     sides = []
     for voltage in voltages:
-        side = strain_from_voltage(voltage - _first_zero(voltage), gauge, bar.poisson_ratio)
+        zero, side = _first_zero(voltage), np.empty_like(voltage)
+        # By blocks: a record of tens of millions of samples needs no second one beside it.
+        for start in range(0, voltage.size, _BLOCK):
+            block = slice(start, start + _BLOCK)
+            side[block] = strain_from_voltage(voltage[block] - zero, gauge, bar.poisson_ratio)
         side *= sign
         sides.append(side)
     _require_possible(sides, gauge)
     axial = sides[0] if len(sides) == 1 else 0.5 * (sides[0] + sides[1])
     bending = None if len(sides) == 1 else frozen(0.5 * (sides[0] - sides[1]))
-    return StationStrain(frozen(axial), bending, np.stack(voltages))
+    # One channel is seen, not copied.
+    as_recorded = voltages[0][np.newaxis] if len(voltages) == 1 else np.stack(voltages)
+    return StationStrain(frozen(axial), bending, as_recorded)
 
 
 def _require_possible(sides: list[FloatArray], gauge: Gauge) -> None:
     """No bar lives through 5 % of strain: such a number comes from a wrong unit, gain or a spike."""
     for channel, strain in zip(gauge.channels, sides, strict=True):
-        worst = int(np.argmax(np.abs(strain)))
+        worst = max(int(np.argmax(strain)), int(np.argmin(strain)), key=lambda i: abs(strain[i]))
         if abs(strain[worst]) > 0.05:
             raise UnusableShotError(
                 f"the voltage at sample {worst} means {100 * float(strain[worst]):.3g} % of strain in the bar",

@@ -10,7 +10,12 @@ With load-positive strains at the faces (I, R in the incident bar i, T in the tr
     stress_3w = (F_in + F_out)/(2 A_s)       rate_3w = (v_in - v_out)/L
 
 The one- and two-wave rates put F_in = F_out to do without I or without R; for equal bars they are the
-familiar -2 c R/L and 2 c (I - T)/L. Stress and rate are engineering values.
+familiar -2 c R/L and 2 c (I - T)/L. Stress and rate are engineering values. For bars with a measured propagation
+table c, E and Z are complex and differ by frequency: they are in the force and velocity strains, and F_out/Z_i is
+worked out in the spectrum.
+
+Where stations tell apart the wave B that comes back in the transmitted bar, F_out = E_t A_t (T + B) and
+v_out = c_t (T - B), and the rates hold F_out/Z_i - v_out in place of F_out (1/Z_i - 1/Z_t).
 
 References
 ----------
@@ -30,6 +35,7 @@ from shpb.arrays import FloatArray
 from shpb.rig.gauge import TestKind
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import Specimen
+from shpb.wave.complex_propagation import velocity_of_one_wave_m_s
 from shpb.wave.faces import FacePulses
 
 
@@ -62,11 +68,14 @@ def face_motion(faces: FacePulses, rig: Rig) -> FaceMotion:
     """Force and velocity at both specimen faces."""
     bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
     incident, reflected, transmitted = faces.incident, faces.reflected, faces.transmitted
+    force, velocity = transmitted.force_strain, transmitted.velocity_strain
+    if faces.returning is not None:
+        force, velocity = force + faces.returning.force_strain, velocity - faces.returning.velocity_strain
     return FaceMotion(
         bar_i.force_per_strain_n * (incident.force_strain + reflected.force_strain),
-        bar_t.force_per_strain_n * transmitted.force_strain,
+        bar_t.force_per_strain_n * force,
         bar_i.wave_speed_m_s * (incident.velocity_strain - reflected.velocity_strain),
-        bar_t.wave_speed_m_s * transmitted.velocity_strain,
+        bar_t.wave_speed_m_s * velocity,
     )
 
 
@@ -84,7 +93,7 @@ def one_wave(
     Without ``own_bars`` the formula for equal bars is taken, whatever they are.
     """
     velocity = -2 * rig.incident_bar.wave_speed_m_s * faces.reflected.velocity_strain
-    if own_bars and _unlike(faces, rig):
+    if faces.returning is not None or (own_bars and _unlike(faces, rig)):
         velocity = velocity + _force_as_velocity_in(faces, motion, rig) - motion.velocity_out_m_s
     return curve_of(faces, velocity, motion.force_out_n, specimen, kind)
 
@@ -101,7 +110,7 @@ def two_wave(
     """Front-face stress; rate from incident and transmitted pulse, equilibrium assumed; else as :func:`one_wave`."""
     bar_i = rig.incident_bar
     velocity = 2 * bar_i.wave_speed_m_s * faces.incident.velocity_strain
-    if own_bars and _unlike(faces, rig):
+    if faces.returning is not None or (own_bars and _unlike(faces, rig)):
         velocity = velocity - _force_as_velocity_in(faces, motion, rig) - motion.velocity_out_m_s
     else:
         velocity = velocity - 2 / bar_i.impedance_n_s_m * motion.force_out_n
@@ -109,16 +118,23 @@ def two_wave(
 
 
 def _unlike(faces: FacePulses, rig: Rig) -> bool:
-    """Whether the two bars answer differently at the faces."""
+    """Whether the two bars answer differently at the faces, or their impedance is not one number."""
     return (
         faces.face_impedance_ratio != 1.0
+        or rig.incident_bar.propagation is not None
+        or rig.transmitted_bar.propagation is not None
         or rig.incident_bar.impedance_n_s_m != rig.transmitted_bar.impedance_n_s_m
     )
 
 
 def _force_as_velocity_in(faces: FacePulses, motion: FaceMotion, rig: Rig) -> FloatArray:
     """Velocity that a single wave with the force F_out would have in the incident bar's face [m/s]."""
-    return motion.force_out_n / (rig.incident_bar.impedance_n_s_m * faces.face_impedance_ratio)
+    bar, force = rig.incident_bar, motion.force_out_n
+    rigid = faces.transmitted.force_strain is faces.transmitted.strain  # carried without a complex impedance
+    if bar.propagation is None or rigid:
+        return force / (bar.impedance_n_s_m * faces.face_impedance_ratio)
+    wave = velocity_of_one_wave_m_s(force, faces.interval_s, bar, faces.low_pass.stop_hz)
+    return wave / faces.face_impedance_ratio
 
 
 def three_wave(faces: FacePulses, motion: FaceMotion, specimen: Specimen, kind: TestKind) -> Curve:

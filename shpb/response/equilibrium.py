@@ -31,6 +31,8 @@ from shpb.rig.rig import Rig
 from shpb.rig.sheet import Specimen
 from shpb.settings import Settings
 from shpb.wave.faces import FacePulses
+from shpb.wave.propagation import CarriedPulse
+from shpb.wave.station_noise import FaceKernels, left_at_face_s
 
 R_DEFINITION = "R = 2 |F_in - F_out| / (F_in + F_out), running mean over two specimen transits"
 _SHARE_WITHIN = 0.90  # of the rest of the loading for which R must stay within the limit
@@ -98,16 +100,32 @@ def force_uncertainties(
     u_time = max(faces.u_misalignment_s, 0.2 * pulses.sample_interval_s)
     band = faces.low_pass.noise_share(pulses.sample_interval_s)
 
-    def variance(strain: FloatArray, noise: float, u_zero: float) -> FloatArray:
-        slope = np.gradient(strain, faces.interval_s)
-        return (settings.pulse_error * strain) ** 2 + (slope * u_time) ** 2 + (noise * band) ** 2 + u_zero**2
+    def variance(wave: CarriedPulse) -> FloatArray:
+        slope = np.gradient(wave.strain, faces.interval_s)
+        found: FloatArray = (settings.pulse_error * wave.strain) ** 2 + (slope * u_time) ** 2
+        return found
 
+    def of_record(side: str, names: tuple[str, ...]) -> FloatArray | float:
+        """By noise and zero lines: of pulses on their own, or grown in waves that stations have told apart."""
+        bar = pulses.separated_bar(side)
+        if bar is None:
+            cut = [pulse for pulse in pulses if pulse.name in names]
+            return sum((pulse.noise * band) ** 2 + pulse.zero.u_level**2 for pulse in cut)
+        interval, material = pulses.sample_interval_s, rig.bar_of(side)
+        kernels = FaceKernels(bar, material, faces.low_pass, interval, settings.dispersion)
+        left = pulses.reflected if side == "incident" else pulses.returning
+        from_s = np.inf if left is None else left_at_face_s(bar, left, material)
+        return kernels.force_variance(faces.time_s + (faces.record_time_of_zero_s - bar.begin_s), from_s)
+
+    squares_in = variance(faces.incident) + variance(faces.reflected)
+    squares_out = variance(faces.transmitted)
+    if faces.returning is not None:
+        squares_out = squares_out + variance(faces.returning)
     u_in = rig.incident_bar.force_per_strain_n * np.sqrt(
-        variance(faces.incident.strain, pulses.incident.noise, pulses.incident.zero.u_level)
-        + variance(faces.reflected.strain, pulses.reflected.noise, pulses.reflected.zero.u_level)
+        squares_in + of_record("incident", ("incident", "reflected"))
     )
     u_out = rig.transmitted_bar.force_per_strain_n * np.sqrt(
-        variance(faces.transmitted.strain, pulses.transmitted.noise, pulses.transmitted.zero.u_level)
+        squares_out + of_record("transmitted", ("transmitted",))
     )
     return u_in, u_out
 

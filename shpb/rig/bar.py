@@ -17,6 +17,10 @@ class Bar:
     ``wave_speed_m_s`` is the one-dimensional bar speed c0. Where a rig file states Young's
     modulus instead, c0 = sqrt(E/rho) is put here; where both stand, the measured speed rules,
     because a handbook modulus is uncertain by 1 to 3 %.
+
+    With a measured ``propagation`` table the wave speed is only a reference: that of slow waves, at the table's first
+    frequencies. ``young_modulus_pa``, ``force_per_strain_n`` and ``impedance_n_s_m`` then hold for slow waves alone;
+    what a pulse does at other frequencies is in its force and velocity strain (:mod:`shpb.wave.propagation`).
     """
 
     material: str
@@ -51,6 +55,19 @@ class Bar:
     def radius_time_s(self) -> float:
         """a/c0 [s], the natural unit of time of the bar's dispersion."""
         return self.radius_m / self.wave_speed_m_s
+
+    @property
+    def front_speed_m_s(self) -> float:
+        """Speed of a front [m/s], by which pulses are expected and windows laid.
+
+        That of slow waves in an elastic bar; in one whose propagation was measured the greatest phase speed that is
+        known within 1 %, because what is stiffer at high frequency sends its fronts ahead.
+        """
+        table = self.propagation
+        if table is None:
+            return float(self.wave_speed_m_s)
+        pairs = zip(table.phase_speed_m_s, table.u_phase_speed_m_s, strict=True)
+        return max((c for c, u in pairs if u < 0.01 * c), default=float(self.wave_speed_m_s))
 
     @property
     def area_m2(self) -> float:
@@ -102,6 +119,16 @@ class Striker:
     def pulse_duration_s(self) -> float:
         """Duration of the pulse without a shaper, 2 L/c [s]."""
         return 2 * self.length_m / self.wave_speed_m_s
+
+
+def one_stock(a: Bar, b: Bar) -> bool:
+    """Whether two bars share their values: the same numbers with the same uncertainty from the same origin."""
+
+    def said(value: object) -> tuple[object, ...]:
+        return value, getattr(value, "u", None), getattr(value, "origin", "")
+
+    names = ("material", "density_kg_m3", "wave_speed_m_s", "diameter_m", "poisson_ratio", "propagation")
+    return all(said(getattr(a, name)) == said(getattr(b, name)) for name in names)
 
 
 def _require_positive(value: float, where: str) -> None:

@@ -7,7 +7,8 @@ excitation and the gain that the rig file states it gives the right strain, and 
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import math
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field, replace
 
 from shpb.quantity import Quantity
@@ -21,11 +22,12 @@ IN_THE_CHAIN = "within the calibrated gauge factor"
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class BarCalibration:
-    """What was measured of one bar; None where it was not."""
+    """What was measured of one bar (None where it was not), and what the rig file said of it that day."""
 
     wave_speed_m_s: Quantity | None = None
     poisson_ratio: Quantity | None = None
     propagation: PropagationTable | None = None
+    as_stated: Mapping[str, str | float] = field(default_factory=dict)  # see :func:`stated_of_bar`
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -86,7 +88,87 @@ def stated_of(gauge: Gauge) -> dict[str, str | float]:
         "gain": float(gauge.gain),
         "lead_resistance_ohm": float(gauge.lead_resistance_ohm),
         "tension_sign": float(gauge.tension_sign),
+        "to_specimen_m": float(gauge.to_specimen_m),
     }
+
+
+def stated_of_bar(bar: Bar) -> dict[str, str | float]:
+    """What identifies a bar: a wave speed measured on it follows from its stated length, a modulus from its density."""
+    return {
+        "material": bar.material,
+        "length_m": float(bar.length_m),
+        "diameter_m": float(bar.diameter_m),
+        "density_kg_m3": float(bar.density_kg_m3),
+    }
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Departure:
+    """Something in the rig file that is no longer as it was on the day of the calibration.
+
+    ``grave`` where the calibrated values are wrong for what stands in the lab now.
+    """
+
+    table: str  # of the rig file
+    key: str
+    then: str | float
+    now: str | float
+    grave: bool = True
+
+    def __str__(self) -> str:
+        then, now = (f"{value:.6g}" if isinstance(value, float) else value for value in (self.then, self.now))
+        return f"{self.table} {self.key} {now}, at the calibration {then}"
+
+
+def departures(
+    rig: str, bars: Mapping[str, Bar], gauges: Mapping[str, Gauge], calibration: Calibration
+) -> tuple[Departure, ...]:
+    """What in a rig is not as the calibration found it.
+
+    Parameters
+    ----------
+    rig : str
+        Name of the rig.
+    bars, gauges : mapping
+        As the rig file states them now, by their tables.
+    calibration : Calibration
+        Measured on the rig as it was.
+    """
+    found: list[Departure] = []
+    if rig != calibration.rig:
+        found.append(Departure(table="rig", key="name", then=calibration.rig, now=rig))
+    for name, bar_then in calibration.bars.items():
+        found += _changes(name, bar_then.as_stated, stated_of_bar(bars[name]), {})
+    for name, then in calibration.gauges.items():
+        if name not in gauges:
+            found.append(
+                Departure(
+                    table=name, key="station", then="calibrated", now="not in the rig file", grave=False
+                )
+            )
+            continue
+        measured = {"gauge_factor": then.gauge_factor, "to_specimen_m": then.to_specimen_m}
+        found += _changes(name, then.as_stated, stated_of(gauges[name]), measured)
+    return tuple(found)
+
+
+def _changes(
+    table: str,
+    then: Mapping[str, str | float],
+    now: Mapping[str, str | float],
+    measured: Mapping[str, Quantity | None],
+) -> Iterator[Departure]:
+    for key, before in then.items():
+        after = now.get(key, before)
+        if isinstance(before, float) and isinstance(after, float):
+            value = measured.get(key)
+            # Who copies a measured value into the rig file, rounded, has changed nothing in the lab.
+            copied = value is not None and math.isclose(after, value, rel_tol=1e-4)
+            if copied or math.isclose(after, before, rel_tol=1e-9, abs_tol=1e-12):
+                continue
+        elif after == before:
+            continue
+        yield Departure(table=table, key=key, then=before, now=after)
 
 
 def calibrated_bar(bar: Bar, by: BarCalibration | None) -> Bar:

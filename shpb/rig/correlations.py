@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Iterator, Mapping, Set
 from dataclasses import dataclass
 from typing import Any
 
@@ -15,6 +15,12 @@ _BAR = ("density", "diameter", "wave speed", "modulus", "Poisson's ratio")
 NAMES = (
     *(f"{side} {what}" for side in ("incident", "transmitted") for what in _GAUGE),
     *(f"{bar}: {what}" for bar in ("bars", "incident bar", "transmitted bar") for what in _BAR),
+    *(
+        f"{side} gauge {number} {what}"
+        for side in ("incident", "transmitted")
+        for number in (2, 3, 4)
+        for what in ("factor", "distance")
+    ),
 )
 
 
@@ -25,6 +31,55 @@ class Correlation:
     first: str
     second: str
     coefficient: float
+
+    @property
+    def of_further_station(self) -> bool:
+        """Whether it is about station 2, 3 or 4 of a bar."""
+        return any(f" gauge {n}" in name for name in (self.first, self.second) for n in (2, 3, 4))
+
+
+def correlations_after(
+    stated: Iterable[Correlation],
+    calibrated: Iterable[Correlation],
+    measured: Set[str],
+    shared: Iterable[str] = (),
+) -> tuple[Correlation, ...]:
+    """Correlations of a rig once a calibration has measured some of its values.
+
+    Parameters
+    ----------
+    stated : iterable of Correlation
+        Of the rig file. What it says of a value that was measured since no longer holds.
+    calibrated : iterable of Correlation
+        Of the measured values.
+    measured : set of str
+        Their names.
+    shared : iterable of str
+        What both bars had from one stock ("density") before the calibration told them apart: what was not measured
+        of either bar is still one and the same value.
+
+    Returns
+    -------
+    tuple of Correlation
+        Those that hold, by names of the uncertainty budget.
+    """
+    shared = tuple(shared)
+    kept = [one for pair in stated for one in (_of_each_bar(pair) if shared else (pair,))]
+    kept += [Correlation(f"incident bar: {what}", f"transmitted bar: {what}", 1.0) for what in shared]
+    kept = [one for one in kept if one.first not in measured and one.second not in measured]
+    return (*dict.fromkeys(kept), *calibrated)
+
+
+def _of_each_bar(pair: Correlation) -> Iterator[Correlation]:
+    """A correlation with values of both bars at once, said of each bar by itself."""
+    bars = ("incident bar", "transmitted bar")
+    firsts, seconds = (
+        [name.replace("bars:", f"{bar}:", 1) for bar in bars] if name.startswith("bars:") else [name]
+        for name in (pair.first, pair.second)
+    )
+    for first in firsts:
+        for second in seconds:
+            yield Correlation(first, second, pair.coefficient)
 
 
 def correlations_in(document: Mapping[str, Any], seen: Collector) -> tuple[Correlation, ...]:

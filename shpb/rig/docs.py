@@ -5,6 +5,7 @@ from __future__ import annotations
 from shpb.rig.columns import COLUMNS
 from shpb.rig.key import Key, Kind, OneOf, Table
 from shpb.rig.keys import RIG_FILE, SHEET_FILE
+from shpb.rig.session_keys import SESSION_FILE
 
 _HEAD = "| key | value | range | needed | meaning | example |\n|---|---|---|---|---|---|\n"
 
@@ -70,6 +71,7 @@ def key_blocks() -> dict[str, str]:
     """Every table of keys by its name in the README."""
     rig = {table.name: key_table(table) for table in RIG_FILE}
     sheet = {table.name: key_table(table) for table in SHEET_FILE}
+    session = {table.name: key_table(table) for table in SESSION_FILE}
     # Both bars have the same keys; so have both gauges but for the example of the channel.
     return {
         "rig": rig["rig"],
@@ -82,4 +84,6 @@ def key_blocks() -> dict[str, str]:
         "shot": sheet["shot"],
         "specimen": sheet["specimen"],
         "columns": column_table(),
+        "session": session["calibration"],
+        "session-shot": session["shot"],
     }

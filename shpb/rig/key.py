@@ -151,6 +151,7 @@ class Table:
     required: bool = True
     one_of: tuple[OneOf, ...] = ()
     in_forms: bool = True  # False for what only few need: the documentation has it alone
+    repeated: bool = False  # written [[name]], once for each of several
 
     def lookup(self) -> dict[str, tuple[Key, Unit]]:
         """Every accepted key name with its key and unit."""

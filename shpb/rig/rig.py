@@ -6,9 +6,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
 from shpb.errors import InputError
-from shpb.rig.bar import Bar, Striker
-from shpb.rig.calibration import Calibration, calibrated_bar, calibrated_gauge
-from shpb.rig.correlations import Correlation
+from shpb.rig.bar import Bar, Striker, one_stock
+from shpb.rig.calibration import Calibration, Departure, calibrated_bar, calibrated_gauge, departures
+from shpb.rig.correlations import Correlation, correlations_after
 from shpb.rig.gauge import Gauge
 
 
@@ -55,6 +55,9 @@ class Rig:
     correlations: tuple[Correlation, ...] = ()  # between its values, from one calibration
     calibration_date: str = ""  # the day these values hold for
     calibration: Calibration | None = None  # the one in force; its values stand above already
+    departures: tuple[
+        Departure, ...
+    ] = ()  # what the rig file no longer says as on the day of the calibration
     remarks: str = ""
     source: str = ""  # the file it was read from, for messages
 
@@ -71,8 +74,15 @@ class Rig:
 
     @property
     def correlation_pairs(self) -> dict[tuple[str, str], float]:
-        """Correlation coefficients by pairs of names of the uncertainty budget."""
-        return {(one.first, one.second): one.coefficient for one in self.correlations}
+        """Correlation coefficients by pairs of names of the uncertainty budget.
+
+        Further stations are no part of the budget of a shot, so pairs with one of them are left out.
+        """
+        return {
+            (one.first, one.second): one.coefficient
+            for one in self.correlations
+            if not one.of_further_station
+        }
 
     @property
     def gauges(self) -> dict[str, Gauge]:
@@ -88,7 +98,12 @@ class Rig:
         return self.incident_bar if station.startswith("incident") else self.transmitted_bar
 
     def calibrated(self, calibration: Calibration) -> Rig:
-        """The rig with the values of a calibration in place of the stated ones."""
+        """The rig with the values of a calibration in place of the stated ones.
+
+        To be asked of the rig as its file states it: what has changed since the calibration is noted in
+        ``departures``, and what was measured takes its covariance along.
+        """
+        bars = {"incident_bar": self.incident_bar, "transmitted_bar": self.transmitted_bar}
         gauges = {
             name: calibrated_gauge(gauge, calibration.gauges.get(name)) for name, gauge in self.gauges.items()
         }
@@ -96,22 +111,64 @@ class Rig:
         def on(side: str) -> tuple[Gauge, ...]:
             return tuple(gauge for name, gauge in gauges.items() if name.startswith(side))
 
-        measured = {frozenset((one.first, one.second)) for one in calibration.correlations}
+        measured = {name: calibrated_bar(bar, calibration.bars.get(name)) for name, bar in bars.items()}
         return replace(
             self,
-            incident_bar=calibrated_bar(self.incident_bar, calibration.bars.get("incident_bar")),
-            transmitted_bar=calibrated_bar(self.transmitted_bar, calibration.bars.get("transmitted_bar")),
+            incident_bar=measured["incident_bar"],
+            transmitted_bar=measured["transmitted_bar"],
             incident_gauge=on("incident")[0],
             transmitted_gauge=on("transmitted")[0],
             more_incident_gauges=on("incident")[1:],
             more_transmitted_gauges=on("transmitted")[1:],
-            correlations=(
-                *(one for one in self.correlations if frozenset((one.first, one.second)) not in measured),
-                *calibration.correlations,
+            correlations=correlations_after(
+                self.correlations,
+                calibration.correlations,
+                _measured_names(calibration),
+                shared=_shared(*bars.values()) if not one_stock(*measured.values()) else (),
             ),
             calibration_date=calibration.date,
             calibration=calibration,
+            departures=departures(self.name, bars, self.gauges, calibration),
         )
+
+
+def _shared(a: Bar, b: Bar) -> tuple[str, ...]:
+    """What two bars of one stock have in common, by the names of the uncertainty budget; empty for others."""
+    if not one_stock(a, b):
+        return ()
+    modulus = a.stated_modulus_pa
+    speed = "wave speed" if modulus is None or modulus.u is None else "modulus"
+    return "density", "diameter", speed, "Poisson's ratio"
+
+
+def _measured_names(calibration: Calibration) -> set[str]:
+    """Values that were measured, by their names in the uncertainty budget."""
+    names: set[str] = set()
+    for table, bar in calibration.bars.items():
+        side = table.replace("_", " ")
+        if bar.wave_speed_m_s is not None:
+            names |= {f"{side}: wave speed", f"{side}: modulus"}
+        if bar.poisson_ratio is not None:
+            names.add(f"{side}: Poisson's ratio")
+    for table, gauge in calibration.gauges.items():
+        if gauge.gauge_factor is not None:
+            names |= {budget_name(table, what) for what in ("factor", "excitation", "gain")}
+        if gauge.to_specimen_m is not None:
+            names.add(budget_name(table, "distance"))
+    return names
+
+
+def budget_name(station: str, what: str) -> str:
+    """Name in the uncertainty budget of a station's ``factor``, ``distance``, ``excitation`` or ``gain``.
+
+    Examples
+    --------
+    >>> budget_name("incident_gauge_2", "factor"), budget_name("transmitted_gauge", "gain")
+    ('incident gauge 2 factor', 'transmitted gain')
+    """
+    words = station.replace("_", " ")
+    further = not words.endswith("gauge")
+    return f"{words} {what}" if further or what in {"factor", "distance"} else f"{words[:-6]} {what}"
 
 
 def station_name(side: str, number: int) -> str:

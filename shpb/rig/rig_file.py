@@ -7,8 +7,11 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
 
+from shpb.errors import InputError
 from shpb.quantity import Quantity
 from shpb.rig.bar import Bar, Striker
+from shpb.rig.calibration import Calibration
+from shpb.rig.calibration_file import read_calibration
 from shpb.rig.correlations import TABLE as CORRELATIONS
 from shpb.rig.correlations import correlations_in
 from shpb.rig.gauge import Arrangement, Gauge
@@ -18,18 +21,21 @@ from shpb.rig.overrides import hints_in, overrides_in
 from shpb.rig.rig import Rig, station_name
 from shpb.rig.tables import Values, read_tables
 from shpb.rig.text_file import read_text, toml_tables
+from shpb.settings import Waves
 
 SPEED_AGREEMENT = 0.03  # handbook moduli are uncertain by 1 to 3 %, so a speed from one by half of it
 _SPEED = next(key for key in BAR_KEYS if key.stem == "wave_speed")
 
 
-def read_rig(path: str | Path) -> Rig:
-    """Read and check a rig file.
+def read_rig(path: str | Path, *, as_stated: bool = False) -> Rig:
+    """Read and check a rig file, and put the calibration in force that it names.
 
     Parameters
     ----------
     path : str or Path
         The TOML file; ``calibration/README.md`` lists its keys.
+    as_stated : bool
+        Leave the calibration aside: the values of the file itself, for a new calibration.
 
     Returns
     -------
@@ -51,22 +57,52 @@ def read_rig(path: str | Path) -> Rig:
     'hardened steel'
     """
     path = Path(path)
-    return rig_from_text(read_text(path, "rig file"), str(path))
+    return rig_from_text(read_text(path, "rig file"), str(path), as_stated=as_stated)
 
 
-def rig_from_text(text: str, name: str) -> Rig:
-    """Return the rig that the text of a rig file describes; ``name`` stands in messages.
+def rig_from_text(text: str, name: str, *, as_stated: bool = False) -> Rig:
+    """Return the rig that the text of a rig file describes.
+
+    Parameters
+    ----------
+    text : str
+        The TOML text, for example as stored with a result.
+    name : str
+        Stands in messages; the calibration that the file names is looked for in the folder of this name.
+    as_stated : bool
+        As for :func:`read_rig`.
 
     Raises
     ------
     FileMistakes, InputError
         As :func:`read_rig`.
     """
-    return rig_from_document(toml_tables(text, name), text, name)
+    document = toml_tables(text, name)
+    rig = rig_from_document(document, text, name)
+    named = document["rig"].get("calibration")
+    if as_stated or not named:
+        return rig
+    return rig.calibrated(_calibration_in_force(str(named).strip().replace("\\", "/"), name))
+
+
+def _calibration_in_force(named: str, rig_file: str) -> Calibration:
+    path = Path(rig_file).parent / named
+    try:
+        there = path.is_file()
+    except OSError:  # a name longer than the system takes
+        there = False
+    if not there:
+        raise InputError(
+            f"there is no calibration file {named}",
+            where=f"{rig_file}, rig.calibration",
+            mend=f"Looked for {path}. Name the file as seen from the folder of the rig file, or remove the key to "
+            "use the values that the rig file states",
+        )
+    return read_calibration(path)
 
 
 def rig_from_document(document: Mapping[str, Any], text: str, name: str) -> Rig:
-    """Return the rig that the parsed tables of a rig file describe."""
+    """Return the rig that the parsed tables of a rig file state, without the calibration that it may name."""
     seen = Collector(name)
     correlations = correlations_in(document, seen)
     plain = {name: content for name, content in document.items() if name != CORRELATIONS}
@@ -84,7 +120,8 @@ def rig_from_document(document: Mapping[str, Any], text: str, name: str) -> Rig:
     settings = overrides_in(tables, seen)
     _check_positions(tables, seen)
     _check_channels(tables, seen)
-    _check_pulse_fits(tables["incident_gauge"], tables["striker"], bar_speed, striker_speed, seen)
+    if not (settings.get("waves") is Waves.STATIONS and more["incident"]):
+        _check_pulse_fits(tables["incident_gauge"], tables["striker"], bar_speed, striker_speed, seen)
     seen.finish()
     # No mistake means that every part was built; this only tells the type checker so.
     assert incident_bar and transmitted_bar and incident_gauge and transmitted_gauge  # noqa: PT018
@@ -325,5 +362,6 @@ def _check_pulse_fits(
         f"reflection is back at the incident gauge after {1e6 * room_s:.4g} µs",
         f"a striker shorter than {1e3 * striker_speed * room_s / 2:.5g} mm, or "
         f"{gauge.key('to_specimen')} above {1e3 * bar_speed * pulse_s / 2:.5g} mm",
-        "Otherwise incident and reflected pulse lie on each other; leave room for the rise too",
+        "Otherwise incident and reflected pulse lie on each other; leave room for the rise too. Or describe a second "
+        'station ([incident_gauge_2]) and set waves = "stations" in [settings]',
     )

@@ -35,6 +35,10 @@ _WINDOW = "Window of the {} pulse on the record's clock, in place of the program
 _FOOT = "Foot of the {} pulse on the record's clock, in place of the program's own"
 
 FACTS: dict[str, Fact] = {
+    "waves": Fact(
+        "How the waves of a bar are told apart: each in its window, or by two or more gauge stations on the bar, "
+        "for pulses longer than the gauge's place allows"
+    ),
     "dispersion": Fact(
         "What is done about dispersion between gauge and specimen face: a rigid shift, the phase of the "
         "first mode, or phase and amplitude"

@@ -1,4 +1,4 @@
-"""Commented files for a new lab to fill in: a rig file, a shot sheet and a shot list."""
+"""Commented files for a new lab to fill in: rig file, shot sheet, shot list and calibration session."""
 
 from __future__ import annotations
 
@@ -11,8 +11,9 @@ from shpb.rig.columns import COLUMNS, RECORD_COLUMNS, Column
 from shpb.rig.docs import needed_text
 from shpb.rig.key import Key, Kind, OneOf, Table
 from shpb.rig.keys import RIG_FILE, SHEET_FILE
+from shpb.rig.session_keys import EXAMPLE_SHOTS, SESSION_FILE
 
-RIG_NAME, SHEET_NAME, LIST_NAME = "rig.toml", "shot.toml", "shots.csv"
+RIG_NAME, SHEET_NAME, LIST_NAME, SESSION_NAME = "rig.toml", "shot.toml", "shots.csv", "calibration.toml"
 _WIDTH = 100
 _HOW = (
     "All values here are examples: put in your own. A line that begins with # is a remark; remove the # "
@@ -60,8 +61,14 @@ def list_template() -> str:
     return _comment(_LIST_HOW) + "#\n" + "".join(facts) + "".join(",".join(row) + "\n" for row in rows)
 
 
+def session_template() -> str:
+    """Text of a commented calibration session."""
+    title = "Calibration session: the shots of one day that calibrate a rig. It lies beside their records."
+    return _toml_template(title, SESSION_FILE) + "\n" + _comment(EXAMPLE_SHOTS[0]) + EXAMPLE_SHOTS[1]
+
+
 def write_templates(folder: str | Path, *, overwrite: bool = False) -> tuple[Path, ...]:
-    """Write a commented rig file, shot sheet and shot list into ``folder``.
+    """Write a commented rig file, shot sheet, shot list and calibration session into ``folder``.
 
     Parameters
     ----------
@@ -73,7 +80,7 @@ def write_templates(folder: str | Path, *, overwrite: bool = False) -> tuple[Pat
     Returns
     -------
     tuple of Path
-        The three files: ``rig.toml``, ``shot.toml`` and ``shots.csv``.
+        The four files: ``rig.toml``, ``shot.toml``, ``shots.csv`` and ``calibration.toml``.
 
     Raises
     ------
@@ -81,7 +88,12 @@ def write_templates(folder: str | Path, *, overwrite: bool = False) -> tuple[Pat
         If one of the files is there already (then none is written) or the folder cannot be written to.
     """
     folder = Path(folder)
-    texts = {RIG_NAME: rig_template(), SHEET_NAME: sheet_template(), LIST_NAME: list_template()}
+    texts = {
+        RIG_NAME: rig_template(),
+        SHEET_NAME: sheet_template(),
+        LIST_NAME: list_template(),
+        SESSION_NAME: session_template(),
+    }
     present = [name for name in texts if (folder / name).exists()]
     if present and not overwrite:
         raise InputError(
@@ -113,7 +125,8 @@ def _toml_template(title: str, tables: Sequence[Table]) -> str:
 
 def _table_template(table: Table) -> str:
     needed = "" if table.required else " This table may be left out."
-    lines = [f"\n[{table.name}]\n", _comment(f"{table.meaning}.{needed}")]
+    heading = f"[[{table.name}]]" if table.repeated else f"[{table.name}]"
+    lines = [f"\n{heading}\n", _comment(f"{table.meaning}.{needed}")]
     chosen: set[str] = set()  # one-of groups of which a key already stands
     for key in table.keys:
         group = table.group_of(key)

@@ -79,7 +79,9 @@ def decoded(raw: bytes, where: str, what: str, *, latin_1: bool = False) -> str:
                 ) from None
             text = raw.decode("latin-1")
     if not text.strip():
-        raise InputError(f"the {what} is empty", where=where, mend="Fill it in; the templates show every key")
+        raise InputError(
+            f"the {what} is empty", where=where, mend="Fill it in; `shpb forms FOLDER` shows every key"
+        )
     return text
 
 

@@ -7,9 +7,10 @@ Layout and names: :mod:`shpb.store.layout`. Groups that hold curves carry the Ne
 from __future__ import annotations
 
 import datetime
+import io
 import json
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -17,6 +18,7 @@ import numpy as np
 
 from shpb.arrays import FloatArray
 from shpb.errors import StoreError
+from shpb.pulse.by_hand import ByHand
 from shpb.record.record import Record, Source
 from shpb.reduction import ShotResult, reduce
 from shpb.rig.rig import Rig
@@ -55,6 +57,7 @@ class StoredShot:
     arrays: Mapping[str, FloatArray]
     units: Mapping[str, str]
     attributes: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
+    by_hand: tuple[ByHand, ...] = ()  # what people moved, oldest first
 
     @property
     def verdict(self) -> str:
@@ -74,7 +77,8 @@ class StoredShot:
 
     def reduce_again(self, settings: Settings | None = None) -> ShotResult:
         """Reduce the stored record again, with the stored settings or others."""
-        return reduce(self.record, self.rig, self.sheet, settings or self.settings)
+        result = reduce(self.record, self.rig, self.sheet, settings or self.settings)
+        return replace(result, by_hand=self.by_hand)
 
 
 # --- out ---------------------------------------------------------------------------------------
@@ -110,12 +114,12 @@ def save_shot(result: ShotResult, path: Path | str, *, replace_other: bool = Fal
     if target.exists() and not replace_other:
         _require_same_shot(target, result)
     # Built in memory and written as plain bytes: on a full disk the HDF5 library itself may bring the process down.
-    with h5py.File(target.name, "w", driver="core", backing_store=False, libver=("earliest", "v110")) as file:
+    # A buffer of Python's own, which is written as it stands: the library's would have to be copied out first.
+    buffer = io.BytesIO()
+    with h5py.File(buffer, "w", libver=("earliest", "v110")) as file:
         _write(file, result)
-        file.flush()
-        image = file.id.get_file_image()
     with whole_file(target) as part:
-        part.write_bytes(image)
+        part.write_bytes(buffer.getbuffer())
     return target
 
 
@@ -218,6 +222,11 @@ def _write_inputs(file: h5py.File, result: ShotResult) -> None:
     group["shot_sheet"] = result.sheet.text
     for name, value in (("rig", result.rig), ("sheet", result.sheet), ("settings", result.settings)):
         group[f"{name}_as_used"] = json.dumps(to_plain(value))
+    calibration = result.rig.calibration
+    if calibration is not None:
+        file = group.create_dataset("calibration_file", data=calibration.text)
+        names = {"name": calibration.name, "date": calibration.date, "sha256": calibration.sha256}
+        file.attrs.update(names)
 
 
 def _write_pulses(file: h5py.File, result: ShotResult) -> None:
@@ -244,6 +253,9 @@ def _write_pulses(file: h5py.File, result: ShotResult) -> None:
         for name, foot in (("foot", pulse.foot), ("automatic_foot", pulse.automatic_foot)):
             if foot is not None:
                 group.attrs.update({name: foot.time_s, f"u_{name}": foot.u_time_s})
+    if result.by_hand:
+        parent["by_hand"] = json.dumps([to_plain(kept) for kept in result.by_hand])
+        parent["by_hand"].attrs["long_name"] = "Windows and feet moved by hand, times [s] on the record's clock"
 
 
 def _write_fields(
@@ -344,7 +356,15 @@ def _read(file: h5py.File, path: Path) -> StoredShot:
         arrays=arrays,
         units=units,
         attributes=attributes,
+        by_hand=by_hand_in(file),
     )
+
+
+def by_hand_in(file: h5py.File) -> tuple[ByHand, ...]:
+    """What people moved in a shot, oldest first; nothing in files of before that was kept."""
+    if "pulse/by_hand" not in file:
+        return ()
+    return tuple(from_plain(ByHand, item) for item in json.loads(_text(file["pulse/by_hand"])))
 
 
 def _read_record(file: h5py.File) -> Record:

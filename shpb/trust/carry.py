@@ -50,7 +50,9 @@ class PerUnit(NamedTuple):
         rig, specimen = evidence.rig, evidence.sheet.specimen
         bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
         # The one-wave rate looks at the difference of the impedances only where that is asked for.
-        own_bars = float(evidence.settings.switched_on(Correction.MISMATCH))
+        own_bars = float(
+            evidence.settings.switched_on(Correction.MISMATCH) or evidence.faces.returning is not None
+        )
         return cls(
             float(bar_i.force_per_strain_n),
             float(bar_t.force_per_strain_n),
@@ -98,6 +100,10 @@ class Carrier:
         self.closing_r_m_s = (
             self.curves[1] * self.per.length_m - (self.per.by_z_in - self.per.by_z_out) * motion.force_out_n
         )
+        self.comes_back = evidence.faces.returning is not None
+        if self.comes_back:
+            # F_out/Z_i - v_out stands in place of F_out (1/Z_i - 1/Z_t).
+            self.closing_r_m_s += motion.velocity_out_m_s - self.per.by_z_out * motion.force_out_n
         curve = response.curve
         self.sign = 1.0 if evidence.sheet.kind is TestKind.TENSION else -1.0
         self.stretch = np.maximum(1.0 + self.sign * curve.strain[at], 1e-3)
@@ -123,7 +129,7 @@ class Carrier:
         scene = self.scene
         out = np.empty((len(ways), len(ALL_OUTPUTS), scene.time_s.size))
         for rows, way in zip(out, ways, strict=True):
-            pulses: list[FloatArray | float] = [0.0, 0.0, 0.0]
+            pulses: list[FloatArray | float] = [0.0, 0.0, 0.0, 0.0]
             by = dict.fromkeys(SCALES, 0.0)
             added_rate: FloatArray | float = 0.0
             added: tuple[FloatArray | float, FloatArray | float] = (0.0, 0.0)
@@ -153,15 +159,21 @@ class Carrier:
     ) -> None:
         """Fill in stresses and rates, and the difference of the forces for D."""
         motion, per, curves = self.scene.motion, self.per, self.curves
-        incident, reflected, transmitted = pulses
+        incident, reflected, transmitted, returning = pulses
         force_in = per.force_in_n * (incident + reflected) + by["force_in"] * motion.force_in_n
-        force_out = per.force_out_n * transmitted + by["force_out"] * motion.force_out_n
+        force_out = per.force_out_n * (transmitted + returning) + by["force_out"] * motion.force_out_n
         velocity_in = per.speed_in_m_s * (incident - reflected) + by["velocity_in"] * motion.velocity_in_m_s
-        velocity_out = per.speed_out_m_s * transmitted + by["velocity_out"] * motion.velocity_out_m_s
+        velocity_out = (
+            per.speed_out_m_s * (transmitted - returning) + by["velocity_out"] * motion.velocity_out_m_s
+        )
         closing = -2 * per.speed_in_m_s * reflected + by["velocity_in"] * self.closing_r_m_s
         # One-wave closing has F_out (1/Z_i - 1/Z_t) besides, for different bars alone.
-        closing = closing + (per.by_z_in - per.by_z_out) * force_out
-        by_z = by["impedance_out"] * per.by_z_out - by["impedance_in"] * per.by_z_in
+        if self.comes_back:
+            closing = closing + per.by_z_in * force_out - velocity_out
+            by_z = -by["impedance_in"] * per.by_z_in
+        else:
+            closing = closing + (per.by_z_in - per.by_z_out) * force_out
+            by_z = by["impedance_out"] * per.by_z_out - by["impedance_in"] * per.by_z_in
         if by_z:
             closing = closing + by_z * motion.force_out_n
         out[0] = force_out / per.area_m2 - by["area"] * curves[0]
@@ -196,7 +208,10 @@ class Carrier:
         """
         scene, per = self.scene, self.per
         faces = scene.evidence.faces
-        pulse = PULSES.index(way[0][0].removeprefix("noise_"))
+        which = way[0][0].removeprefix("noise_")
+        if which not in PULSES:
+            return self._noise_of_station(which)
+        pulse = PULSES.index(which)
         sampled = scene.evidence.pulses.sample_interval_s
         passed = faces.low_pass.noise_share(sampled) ** 2
         summed = (scene.time_s - scene.time_s[0]) * sampled
@@ -217,12 +232,57 @@ class Carrier:
             for rate_row, strain_row in ((1, 2), (4, 5)):
                 out[rate_row] += self._noise_of_derivative() * taken
                 out[strain_row] += passed * taken
+        self._true_variances(out)
+        out[9] = self.averaged * (self.weights[pulse == 2] * force * self.by_force) ** 2
+        return out
+
+    def _true_variances(self, out: FloatArray) -> None:
+        """Fill in the variances of true values: noise of stress and noise of strain are taken as independent."""
         stress, strain = (out[0], out[2]) if self.first else (out[3], out[5])
         out[6] = strain / self.stretch**2
         out[7] = self.stretch**2 * stress + self.stress**2 * strain
         tilt = self.sign * self.stress - self.slope / self.stretch
         out[8] = (self.stretch**2 * stress + tilt**2 * strain) * self.share**2
-        out[9] = self.averaged * (self.weights[pulse == 2] * force * self.by_force) ** 2
+
+    def _noise_of_station(self, station: str) -> FloatArray:
+        """As :meth:`noise`, of a station that tells waves apart: it grows, and both waves of the bar have it."""
+        scene, per = self.scene, self.per
+        side = station.split("_", 1)[0]
+        changes = self.pulse_changes.stations
+        bar = scene.evidence.pulses.separated_bar(side)
+        assert changes is not None, station
+        assert bar is not None, station
+        k, kernels, since = bar.stations.index(station), changes.kernels(side), changes.since_s(side)
+        incident, interval = side == "incident", scene.evidence.pulses.sample_interval_s
+        ea, speed = (per.force_in_n, per.speed_in_m_s) if incident else (per.force_out_n, per.speed_out_m_s)
+        back = scene.evidence.faces.returning is not None
+        by_z = per.by_z_in if back else per.by_z_in - per.by_z_out
+        weight = self.weights[0 if incident else 1] * self.by_force
+        taken = None if self.faces_m_n is None else (self.faces_m_n[0 if incident else 1] / per.length_m) ** 2
+        width = max(round(self.mean_s / interval), 1)
+
+        def variance(kernel: FloatArray) -> FloatArray:
+            return kernels.variance(kernel, k, since)
+
+        def filled(left: FloatArray) -> FloatArray:
+            right = kernels.right[k]
+            force, velocity = ea * (right + left), speed * (right - left)
+            one = -2 * speed * left if incident else by_z * force - (velocity if back else 0.0 * velocity)
+            three = velocity if incident else -velocity
+            out = np.empty((len(ALL_OUTPUTS), scene.time_s.size))
+            out[0] = 0.0 if incident else variance(force / per.area_m2)
+            out[3] = variance(0.5 * force / per.area_m2)
+            for row, rate in ((1, one / per.length_m), (4, three / per.length_m)):
+                out[row], out[row + 1] = variance(rate), variance(np.cumsum(rate) * interval)
+                if taken is not None:
+                    out[row] += taken * variance(np.gradient(force, interval))
+                    out[row + 1] += taken * variance(force)
+            out[9] = variance(moving_mean(force, width)) * weight**2
+            return out
+
+        left = kernels.left[k]
+        out: FloatArray = np.where(changes.has_left(side), filled(left), filled(np.zeros_like(left)))
+        self._true_variances(out)
         return out
 
     def _noise_of_derivative(self) -> float:

@@ -16,7 +16,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from shpb.arrays import FloatArray
+from shpb.arrays import ComplexArray, FloatArray
 from shpb.pulse.pulse import Pulse
 from shpb.pulse.pulses import TAPER_RADII
 from shpb.response.bar_analysis import FaceMotion
@@ -24,6 +24,8 @@ from shpb.rig.bar import Bar
 from shpb.settings import Dispersion
 from shpb.trust.evidence import Evidence
 from shpb.trust.sources import BAND_SHARE, PULSES, laid_on_feet
+from shpb.trust.station_changes import StationChanges
+from shpb.wave.complex_propagation import measured_wave, u_attenuation_per_m
 from shpb.wave.pochhammer import first_mode_at_frequency
 from shpb.wave.propagation import LowPass, fast_length
 
@@ -41,7 +43,7 @@ SCALES = (
     "length",
 )
 
-_DISPERSED = ("poisson", "diameter", "speed", "distance")
+_DISPERSED = ("poisson", "diameter", "speed", "distance", "attenuation")
 _POISSON_STEP = 0.005
 _MODE_POINTS = 48
 POINTS_IN_A_PERIOD = 6  # of the shortest that passes the low-pass
@@ -107,12 +109,23 @@ class PulseChanges:
     def __init__(self, scene: Scene) -> None:
         self._scene = scene
         self._known: dict[str, dict[int, FloatArray]] = {}
+        self.stations = (
+            StationChanges(scene.evidence, scene.time_s, scene.strains, scene.slopes)
+            if scene.evidence.pulses.separated
+            else None
+        )
 
     def __call__(self, parameter: str) -> dict[int, FloatArray]:
-        """Changes by position of the pulse in ``PULSES``, shape (thinned samples,) each."""
+        """Changes by position of the pulse in ``PULSES``, shape (thinned samples,) each.
+
+        Number 3 is the wave that comes back in the transmitted bar, where stations tell it apart.
+        """
         if parameter not in self._known:
             what, _, which = parameter.rpartition("_")
-            if parameter == "band":
+            by_stations = None if self.stations is None else self.stations(parameter)
+            if by_stations is not None:
+                found = by_stations
+            elif parameter == "band":
                 found = self._band()
             elif what in _DISPERSED:
                 found = _together(self._rigid(what, which), self._dispersed(what, which))
@@ -146,12 +159,12 @@ class PulseChanges:
         """What is added to a time at the gauge to have it on the clock of the faces [s]."""
         evidence = self._scene.evidence
         rig, faces = evidence.rig, evidence.faces
+        travel_i = rig.incident_gauge.to_specimen_m / rig.incident_bar.front_speed_m_s
+        travel_t = rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.front_speed_m_s
         travel = {
-            "incident": rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s,
-            "reflected": -rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
-            + faces.reflected_shift_s,
-            "transmitted": -rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s
-            + faces.transmitted_shift_s,
+            "incident": travel_i,
+            "reflected": faces.reflected_shift_s - travel_i,
+            "transmitted": faces.transmitted_shift_s - travel_t,
         }
         return float(travel[which] - faces.record_time_of_zero_s)
 
@@ -183,24 +196,20 @@ class PulseChanges:
         rig = evidence.rig
         x_i, x_t = rig.incident_gauge.to_specimen_m, rig.transmitted_gauge.to_specimen_m
         ways = {0: x_i, 1: -x_i} if bar == "in" else {2: -x_t}
-        slope = _slowness_change(
-            what,
-            rig.incident_bar if bar == "in" else rig.transmitted_bar,
-            scene.frequency_hz,
-            evidence.faces.low_pass,
-        )
+        of = rig.incident_bar if bar == "in" else rig.transmitted_bar
+        slope = _slowness_change(what, of, scene.frequency_hz, evidence.faces.low_pass)
         phase = -2j * np.pi * scene.frequency_hz * slope
+        if what == "attenuation" and of.propagation is not None:
+            # The short spectrum's first bin stands for all below half the next one.
+            phase[0] = -u_attenuation_per_m(of.propagation, scene.frequency_hz[1:2] / 2)[0]
         changed = scene.back(np.stack([phase * (way * scene.spectra[n]) for n, way in ways.items()]))
         return dict(zip(ways, changed, strict=True))
 
     def _band(self) -> dict[int, FloatArray]:
         """All three pulses with a lower cut-off, less what they are: one filter serves them all."""
         scene = self._scene
-        return dict(
-            enumerate(
-                scene.back(scene.spectra * lower_band(scene.evidence.faces.low_pass, scene.frequency_hz))
-            )
-        )
+        lower = lower_band(scene.evidence.faces.low_pass, scene.frequency_hz)
+        return dict(enumerate(scene.back(scene.spectra * lower)))
 
 
 def lower_band(low_pass: LowPass, frequency_hz: FloatArray) -> FloatArray:
@@ -240,11 +249,15 @@ def _together(first: dict[int, FloatArray], second: dict[int, FloatArray]) -> di
     return first | {n: change + first[n] if n in first else change for n, change in second.items()}
 
 
-def _slowness_change(what: str, bar: Bar, frequency_hz: FloatArray, low_pass: LowPass) -> FloatArray:
+def _slowness_change(
+    what: str, bar: Bar, frequency_hz: FloatArray, low_pass: LowPass
+) -> FloatArray | ComplexArray:
     """Change of 1/c - 1/c0 [s/m] by Poisson's ratio, or by a relative change of diameter, wave speed or distance.
 
     With P = c0/c of x = f a/c0: dP/dnu, x P', -(x P' + P - 1), and for the distance P - 1 itself, all by c0.
     """
+    if bar.propagation is not None:
+        return _measured_slowness_change(what, bar, frequency_hz)
     at, minus_one, steep, by_poisson = _mode(
         float(bar.poisson_ratio), round(low_pass.stop_hz * bar.radius_time_s, 6)
     )
@@ -253,6 +266,24 @@ def _slowness_change(what: str, bar: Bar, frequency_hz: FloatArray, low_pass: Lo
     ]
     laid: FloatArray = np.interp(frequency_hz * bar.radius_time_s, at, row)
     return laid / bar.wave_speed_m_s
+
+
+def _measured_slowness_change(what: str, bar: Bar, frequency_hz: FloatArray) -> ComplexArray:
+    """The same for a bar with a measured table: its speed is in error by one share at all frequencies, its attenuation
+    by its own standard uncertainty; neither diameter nor Poisson's ratio move what was measured.
+    """
+    if what == "attenuation":
+        return attenuation_slowness(bar, frequency_hz)
+    slowness = measured_wave(bar, frequency_hz).slowness_s_m - 1.0 / bar.wave_speed_m_s
+    return {"speed": -1.0, "distance": 1.0}.get(what, 0.0) * slowness
+
+
+def attenuation_slowness(bar: Bar, frequency_hz: FloatArray) -> ComplexArray:
+    """Change of xi/(i w) by one standard uncertainty of the measured attenuation [s/m], zero at rest."""
+    assert bar.propagation is not None
+    omega = 2j * np.pi * np.where(frequency_hz > 0, frequency_hz, 1.0)
+    change: ComplexArray = u_attenuation_per_m(bar.propagation, frequency_hz) / omega
+    return change
 
 
 @lru_cache(maxsize=32)

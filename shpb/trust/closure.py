@@ -95,15 +95,17 @@ class _Grid(NamedTuple):
 def close(evidence: Evidence, budget: Budget) -> Closure | None:
     """Run the reduced curve forwards and compare; None where the model does not hold.
 
-    It does not hold with hot bar ends taken into account (the faces then have another impedance than the bars) or
-    where no plastic curve is left to run.
+    It does not hold with hot bar ends taken into account (the faces then have another impedance than the bars), for
+    bars with a measured propagation table (their impedance is not one number) or where no plastic curve is left to
+    run.
     """
     curve = _flow_curve(evidence)
     applied = {report.correction for report in evidence.response.corrections if report.applied}
-    if curve is None or Correction.BAR_TEMPERATURE in applied:
-        return None
     faces, rig = evidence.faces, evidence.rig
     bar_i, bar_t = rig.incident_bar, rig.transmitted_bar
+    measured = bar_i.propagation is not None or bar_t.propagation is not None
+    if curve is None or measured or Correction.BAR_TEMPERATURE in applied:
+        return None
     grid = _grid(evidence)
     incident = faces.incident.force_strain[grid.at]
     passage = pass_through(
@@ -138,9 +140,13 @@ def close(evidence: Evidence, budget: Budget) -> Closure | None:
 
 
 def _grid(evidence: Evidence) -> _Grid:
-    faces = evidence.faces
+    faces, bar = evidence.faces, evidence.rig.transmitted_bar
     stride = max(int(_INTERVAL_S / faces.interval_s), 1)
-    at = slice(0, evidence.response.loading[1], stride)
+    stop = evidence.response.loading[1]
+    if faces.returning is not None:
+        # The forward run knows nothing that comes back in the transmitted bar.
+        stop = min(stop, faces.index(2 * bar.length_m / bar.wave_speed_m_s - _LEAD_S))
+    at = slice(0, stop, stride)
     return _Grid(at, stride * faces.interval_s, faces.time_s[at])
 
 
@@ -238,7 +244,8 @@ def _noise(evidence: Evidence) -> tuple[float, float]:
     pulses, rig = evidence.pulses, evidence.rig
     share = evidence.faces.low_pass.noise_share(evidence.pulses.sample_interval_s)
     across = rig.transmitted_bar.force_per_strain_n / rig.incident_bar.force_per_strain_n
-    i, r, t = (pulse.noise * share for pulse in pulses)
+    end_s = evidence.faces.record_time_of_zero_s + evidence.response.time_s[evidence.response.loading[1] - 1]
+    i, r, t = (pulses.noise_at(pulse, end_s) * share for pulse in pulses)
     return float(np.sqrt(i**2 + r**2 + (across * t) ** 2)), float(np.sqrt(2) * t)
 
 
@@ -266,9 +273,13 @@ def _delays(evidence: Evidence) -> tuple[float, float]:
     rig = evidence.rig
     travel_in = rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
     travel_out = rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s
-    reflected = {"distance_in": 2 * travel_in, "speed_in": -2 * travel_in}
+    # Where stations tell the waves apart, as if the first alone gave their places: approximate.
+    reflected = {
+        "distance_in": 2 * travel_in, "distance:incident_gauge": 2 * travel_in, "speed_in": -2 * travel_in,
+    }  # fmt: skip
     transmitted = {
         "distance_in": travel_in, "speed_in": -travel_in, "distance_out": travel_out, "speed_out": -travel_out,
+        "distance:incident_gauge": travel_in, "distance:transmitted_gauge": travel_out,
     }  # fmt: skip
 
     def u(by: dict[str, float]) -> float:

@@ -23,15 +23,24 @@ from shpb.arrays import ComplexArray, FloatArray
 from shpb.pulse.pulse import Pulse
 from shpb.rig.bar import Bar
 from shpb.settings import Dispersion
-from shpb.trust.changes import POINTS_IN_A_PERIOD, lower_band, soft_s, soft_window, window_change
+from shpb.trust.changes import (
+    POINTS_IN_A_PERIOD,
+    attenuation_slowness,
+    lower_band,
+    soft_s,
+    soft_window,
+    window_change,
+)
 from shpb.trust.evidence import Evidence
 from shpb.trust.sources import PULSES, laid_on_feet
 from shpb.wave.pochhammer import first_mode_at_frequency
-from shpb.wave.propagation import LowPass, capped_factor, fast_length
+from shpb.wave.propagation import LowPass, capped_factor, fast_length, measured_factors
 
 _LEAST_STEP = 0.005  # of the nodes: relative for radius by wave speed, absolute for Poisson's ratio
 _BARS = ("in", "out")
 _BAR_OF = ("in", "in", "out")  # of each pulse
+
+Factor = FloatArray | ComplexArray
 
 
 class FaceStrains(NamedTuple):
@@ -226,7 +235,15 @@ class _Modes:
         middle = min(max(nu, step), 0.49 - step)
         self._poisson = np.array([middle - step, middle, middle + step])
         self._stretch = np.array([-1.0, 0.0, 1.0]) * max(2 * spread[1], _LEAST_STEP)
+        self._attenuation: ComplexArray | None = None  # by one standard uncertainty, of a bar with a measured table
         if dispersion is Dispersion.NONE:
+            return
+        if bar.propagation is not None:
+            # One table for all nodes: neither radius nor Poisson's ratio move what was measured.
+            measured = measured_factors(bar, frequency_hz, dispersion)
+            self._table, *factors = (row[None] for row in measured)
+            self._measured_factors = factors[0], factors[1]
+            self._attenuation = attenuation_slowness(bar, frequency_hz)
             return
         slowness, force, velocity = [], [], []
         for poisson in self._poisson:
@@ -241,15 +258,20 @@ class _Modes:
         self._slowness = np.stack(slowness)
         self._factors = tuple(map(np.stack, (force, velocity))) if force else ()
 
-    def slowness(self, drawn: Drawn, side: str) -> FloatArray:
+    def slowness(self, drawn: Drawn, side: str) -> FloatArray | ComplexArray:
         """1/c - 1/c0, shape (draws, bins) [s/m]."""
         if self._dispersion is Dispersion.NONE:
             return np.zeros((drawn.draws, 1))
+        if self._attenuation is not None:
+            lossy: ComplexArray = self._table / drawn.factor(f"speed_{side}")
+            return lossy + drawn.sum(f"attenuation_{side}") * self._attenuation
         found: FloatArray = np.einsum("dk,kb->db", self._weights(drawn, side), self._slowness)
         return found / drawn.factor(f"speed_{side}")
 
-    def factors(self, drawn: Drawn, side: str) -> tuple[FloatArray, FloatArray] | None:
+    def factors(self, drawn: Drawn, side: str) -> tuple[Factor, Factor] | None:
         """Surface strain to force strain and to velocity strain, shape (draws, bins); None without amplitude."""
+        if self._attenuation is not None:
+            return self._measured_factors
         if self._dispersion is not Dispersion.FULL:
             return None
         weights = self._weights(drawn, side)

@@ -115,6 +115,12 @@ def draw_evidence(
     InputError
         If the number of draws or the seed is out of range, or a correlation impossible.
     """
+    if evidence.pulses.separated:
+        raise InputError(
+            "draws change pulses in their windows, and this shot's waves were told apart by stations",
+            where="draws",
+            mend="Use the linear budget, which carries every station's share, or reduce with waves = windows",
+        )
     sources = sources_of(evidence)
     faces = DrawnFaces(evidence, _spread(sources))
     single = Drawn({}, {}, {}, 1)

@@ -18,7 +18,7 @@ from shpb.trust.evidence import Evidence
 from shpb.trust.finding import Answer, Finding, Weight
 
 # A cause is named before what follows from it: findings of equal weight stand in this order of their modules.
-CAUSES_FIRST = ("recording", "gauges", "pulses", "specimen", "forward", "response")
+CAUSES_FIRST = ("recording", "calibration", "gauges", "stations", "pulses", "specimen", "forward", "response")
 
 Ask = Callable[[Evidence], Answer | None]
 

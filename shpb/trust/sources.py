@@ -25,9 +25,12 @@ import numpy as np
 
 from shpb.arrays import FloatArray
 from shpb.pulse.bridge import bridge_form
-from shpb.pulse.pulse import Pulse
-from shpb.rig.bar import Bar
+from shpb.pulse.separated import SeparatedBar
+from shpb.pulse.strain import StationStrain
+from shpb.quantity import Quantity
+from shpb.rig.bar import Bar, one_stock
 from shpb.rig.gauge import Arrangement, Gauge
+from shpb.rig.propagation_table import PropagationTable
 from shpb.settings import Alignment, Correction
 from shpb.trust.evidence import Evidence
 from shpb.trust.gum import Distribution
@@ -143,9 +146,17 @@ def _relative(value: float, name: str) -> tuple[float, bool]:
 
 def _rig_sources(evidence: Evidence) -> Iterator[Source]:
     rig = evidence.rig
-    yield from _gauge("incident", rig.incident_gauge, "in", PULSES[:2])
-    yield from _gauge("transmitted", rig.transmitted_gauge, "out", PULSES[2:])
-    if _one_stock(rig.incident_bar, rig.transmitted_bar):
+    for side, bar, pulses in (("incident", "in", PULSES[:2]), ("transmitted", "out", PULSES[2:])):
+        separated = evidence.pulses.separated_bar(side)
+        if separated is None:
+            strain = {f"strain_{pulse}": -1.0 for pulse in pulses}
+            yield from _gauge(side, rig.gauges[f"{side}_gauge"], strain, {f"distance_{bar}": 1.0})
+            continue
+        # Each station has its own share in both waves of its bar.
+        for station in separated.stations:
+            acts = {f"strain:{station}": -1.0}, {f"distance:{station}": 1.0}
+            yield from _gauge(_words(station), rig.gauges[station], *acts)
+    if one_stock(rig.incident_bar, rig.transmitted_bar):
         # Bars of one stock: what was measured once acts on both.
         yield from _bar(evidence, "bars", rig.incident_bar, BARS)
     else:
@@ -153,29 +164,25 @@ def _rig_sources(evidence: Evidence) -> Iterator[Source]:
         yield from _bar(evidence, "transmitted bar", rig.transmitted_bar, BARS[1:])
 
 
-def _one_stock(a: Bar, b: Bar) -> bool:
-    """Whether two bars share their values: the same numbers with the same uncertainty from the same origin."""
-
-    def said(value: object) -> tuple[object, ...]:
-        return value, getattr(value, "u", None), getattr(value, "origin", "")
-
-    names = ("material", "density_kg_m3", "wave_speed_m_s", "diameter_m", "poisson_ratio")
-    return all(said(getattr(a, name)) == said(getattr(b, name)) for name in names)
+def _words(station: str) -> str:
+    """A station as the budget's lines name it: "incident" for the first, "incident gauge 2" for the second."""
+    return station.removesuffix("_gauge").replace("_", " ")
 
 
-def _gauge(side: str, gauge: Gauge, bar: str, pulses: tuple[str, ...]) -> Iterator[Source]:
+def _gauge(
+    name: str, gauge: Gauge, strain: Mapping[str, float], distance: Mapping[str, float]
+) -> Iterator[Source]:
     """Strain is inverse to gauge factor, excitation and gain; the distance shifts pulses against each other."""
-    for name, value in (
-        ("gauge factor", gauge.gauge_factor),
-        ("excitation", gauge.excitation_v),
-        ("gain", gauge.gain),
+    of_gauge = name if name[-1].isdigit() else f"{name} gauge"
+    for what, full, value in (
+        ("gauge factor", f"{of_gauge} factor", gauge.gauge_factor),
+        ("excitation", f"{name} excitation", gauge.excitation_v),
+        ("gain", f"{name} gain", gauge.gain),
     ):
-        u, assumed = _relative(value, name)
-        acts = {f"strain_{pulse}": -1.0 for pulse in pulses}
-        yield Source(name=f"{side} {name}", shared=True, assumed=assumed, u=u, acts=acts)
+        u, assumed = _relative(value, what)
+        yield Source(name=full, shared=True, assumed=assumed, u=u, acts=strain)
     u, assumed = _relative(gauge.to_specimen_m, "gauge distance")
-    acts = {f"distance_{bar}": 1.0}
-    yield Source(name=f"{side} gauge distance", shared=True, assumed=assumed, u=u, acts=acts)
+    yield Source(name=f"{of_gauge} distance", shared=True, assumed=assumed, u=u, acts=distance)
 
 
 def _bar(evidence: Evidence, name: str, bar: Bar, sides: tuple[str, ...]) -> Iterator[Source]:
@@ -184,7 +191,14 @@ def _bar(evidence: Evidence, name: str, bar: Bar, sides: tuple[str, ...]) -> Ite
         ("density", {"density": 1.0}, bar.density_kg_m3),
         ("bar diameter", {"diameter": 1.0}, bar.diameter_m),
     ]
-    if modulus is None or modulus.u is None:
+    if bar.propagation is not None:
+        lines.append(("wave speed", {"speed": 1.0}, _measured_speed(bar, bar.propagation)))
+        # One unit is the table's own standard uncertainty, in the same direction at all frequencies.
+        acts = {f"attenuation_{side}": 1.0 for side in sides}
+        yield Source(
+            name=f"{name}: attenuation", shared=True, u=1.0, acts=acts, note="of the measured propagation"
+        )
+    elif modulus is None or modulus.u is None:
         lines.append(("wave speed", {"speed": 1.0}, bar.wave_speed_m_s))
     else:
         # c = sqrt(E/rho) was worked out from the two: what is known of them acts through both.
@@ -207,6 +221,17 @@ def _bar(evidence: Evidence, name: str, bar: Bar, sides: tuple[str, ...]) -> Ite
         if side in sides and gauge.arrangement in (Arrangement.HALF_POISSON, Arrangement.FULL_POISSON):
             acts |= {f"strain_{pulse}": -1.0 / (1.0 + nu) for pulse in pulses}
     yield Source(name=f"{name}: Poisson's ratio", shared=True, assumed=assumed, u=u * nu, acts=acts)
+
+
+def _measured_speed(bar: Bar, table: PropagationTable) -> Quantity:
+    """Reference speed of a bar with a measured table, as uncertain as the table's middle if that is more.
+
+    Its line stands for one common share of error in all phase speeds, and so in travel time, modulus and impedance.
+    """
+    speed = bar.wave_speed_m_s
+    shares = sorted(u / c for u, c in zip(table.u_phase_speed_m_s, table.phase_speed_m_s, strict=True))
+    of_table = shares[len(shares) // 2] * speed
+    return Quantity(float(speed), max(speed.u or 0.0, of_table), speed.origin)
 
 
 # --- the shot's own ----------------------------------------------------------------------------------
@@ -273,8 +298,15 @@ def _indentation_taken_off(evidence: Evidence) -> bool:
 def _pulse_sources(evidence: Evidence) -> Iterator[Source]:
     """What each pulse has on its own: linearity, bending and dispersion; zero line, window, noise and digits."""
     error, interval = evidence.settings.pulse_error, evidence.pulses.sample_interval_s
+    for bar in evidence.pulses.separated:
+        yield from _of_stations(evidence, bar)
     for pulse in evidence.pulses:
         name = pulse.name
+        if evidence.pulses.waves(name) is not None:
+            # Approximate: linearity and bending act at the stations; here each wave has an error of its own, as where
+            # windows tell the pulses apart.
+            yield Source(name=f"{name} pulse", shared=False, u=error, acts={f"strain_{name}": 1.0})
+            continue
         for what, u, act in (
             ("pulse", error, "strain"),
             ("zero level", pulse.zero.u_level, "level"),
@@ -285,7 +317,11 @@ def _pulse_sources(evidence: Evidence) -> Iterator[Source]:
             name=f"{name} window", shared=False, u=1 / np.sqrt(3), acts={f"window_{name}": 1.0},
             distribution="rectangular", note="both ends drawn in by up to their soft length",
         )  # fmt: skip
-        yield from _digits_and_noise(evidence, pulse)
+        at = evidence.rig.incident_gauge if name != "transmitted" else evidence.rig.transmitted_gauge
+        station = evidence.strain.incident if name != "transmitted" else evidence.strain.transmitted
+        bar_of = evidence.rig.bar_of("transmitted" if name == "transmitted" else "incident")
+        step = _step_strain(at, bar_of, station, evidence.strain.index(pulse.window_s[0]))
+        yield from _digits_and_noise(name, name, step, pulse.noise)
     yield Source(
         name="band limit",
         shared=False,
@@ -295,40 +331,53 @@ def _pulse_sources(evidence: Evidence) -> Iterator[Source]:
     )
 
 
-def _digits_and_noise(evidence: Evidence, pulse: Pulse) -> Iterator[Source]:
-    """Noise as measured holds the rounding of the digitiser, as long as it is more than half a step."""
-    step = _step_strain(evidence, pulse)
+def _of_stations(evidence: Evidence, bar: SeparatedBar) -> Iterator[Source]:
+    """Zero line, noise and digits of each station of a bar whose waves were told apart."""
+    interval = evidence.pulses.sample_interval_s
+    for n, station in enumerate(bar.stations):
+        name, zero = f"{_words(station)} station", bar.zeros[n]
+        for what, u, act in (
+            ("zero level", zero.u_level, "level"),
+            ("zero slope", zero.u_slope / interval, "slope"),
+        ):
+            yield Source(name=f"{name} {what}", shared=False, u=u, acts={f"{act}:{station}": 1.0})
+        step = _step_strain(
+            evidence.rig.gauges[station],
+            evidence.rig.bar_of(station),
+            evidence.strain.stations[station],
+            bar.begin,
+        )
+        yield from _digits_and_noise(name, station, step, bar.noise[n])
+
+
+def _digits_and_noise(name: str, what: str, step: float, noise: float) -> Iterator[Source]:
+    """Noise as measured holds the rounding of the digitiser, as long as it is more than half a step.
+
+    ``what`` is the pulse or the station that they act on.
+    """
     rounding = step / np.sqrt(12.0)
-    name = pulse.name
-    if pulse.noise >= 0.5 * step:
-        rest = float(np.sqrt(max(pulse.noise**2 - rounding**2, 0.0)))
+    if noise >= 0.5 * step:
+        rest = float(np.sqrt(max(noise**2 - rounding**2, 0.0)))
         note = "" if step else "the step of the digitiser is too small to be seen, and not stated"
         yield Source(
-            name=f"{name} quantisation", shared=False, u=rounding, acts={f"noise_{name}": 1.0}, note=note
+            name=f"{name} quantisation", shared=False, u=rounding, acts={f"noise_{what}": 1.0}, note=note
         )
     else:
         # A quiet signal stays in one step: its rounding is the same from sample to sample, and no filter helps.
-        rest = pulse.noise
+        rest = noise
+        level = f"level_{what}" if what in PULSES else f"level:{what}"
         yield Source(
-            name=f"{name} quantisation", shared=False, u=rounding, acts={f"level_{name}": 1.0},
+            name=f"{name} quantisation", shared=False, u=rounding, acts={level: 1.0},
             distribution="rectangular", note="noise below half a step: not white, one level through the pulse",
         )  # fmt: skip
-    yield Source(name=f"{name} noise", shared=False, u=rest, acts={f"noise_{name}": 1.0})
+    yield Source(name=f"{name} noise", shared=False, u=rest, acts={f"noise_{what}": 1.0})
 
 
-def _step_strain(evidence: Evidence, pulse: Pulse) -> float:
+def _step_strain(gauge: Gauge, bar: Bar, station: StationStrain, start: int) -> float:
     """One step of the digitiser as strain at the gauge; from range and bits, else from the record; 0 if unseen."""
-    at_incident = pulse.name != "transmitted"
-    rig, strain = evidence.rig, evidence.strain
-    gauge, bar, station = (
-        (rig.incident_gauge, rig.incident_bar, strain.incident)
-        if at_incident
-        else (rig.transmitted_gauge, rig.transmitted_bar, strain.transmitted)
-    )
     if gauge.scope_range_v is not None and gauge.scope_bits is not None:
         step = (gauge.scope_range_v[1] - gauge.scope_range_v[0]) / 2**gauge.scope_bits
     else:
-        start = strain.index(pulse.window_s[0])
         step = _least_step(station.voltage_v[0, start : start + _SAMPLES_FOR_A_STEP])
     form = bridge_form(gauge.arrangement, bar.poisson_ratio)
     per_volt = form.n / (form.B * gauge.effective_gauge_factor * gauge.excitation_v * gauge.gain)

@@ -18,10 +18,11 @@ from shpb.response.equilibrium import R_DEFINITION
 from shpb.trust.finding import Verdict
 from shpb.version import VERSION
 from shpb.view import strain_panels, time_panels
+from shpb.view.by_hand_words import by_hand_words
 from shpb.view.ink import BODY, INK, RC, SMALL
 from shpb.view.page import HEIGHT, WIDTH, Page
 from shpb.view.text import rounded
-from shpb.view.wording import formulas, processing_words, telling, verdict_sentence
+from shpb.view.wording import calibration_words, formulas, processing_words, telling, verdict_sentence
 from shpb.whole_file import whole_file
 
 if TYPE_CHECKING:
@@ -219,16 +220,24 @@ def _findings(page: Page, result: ShotResult) -> None:
 
 def _footer(page: Page, result: ShotResult) -> None:
     names = ", ".join(source.name for source in result.record.sources)
-    parts = [
-        f"record {names}" if names else "",
-        f"rig {result.rig.name}",
-        result.sheet.date,
-        f"shpb {VERSION}",
-    ]
+    record, version = f"record {names}" if names else "", f"shpb {VERSION}"
+    parts = [record, f"rig {result.rig.name}", result.sheet.date, version]
+    calibrated = calibration_words(result)
+    if calibrated:
+        _foot_line(page, 0.22, [f"calibration {calibrated}", version])
+        parts.remove(version)
+    above = 0.36 if calibrated else 0.22
+    _foot_line(page, above, parts)
+    moved = [_typeset(line) for line in by_hand_words(result)]
+    # Two lines have room: what is too much for them stands in terminal and file.
+    for number, parts in enumerate(part for part in (moved[1:], moved[:1]) if part):
+        _foot_line(page, above + 0.14 * (number + 1), parts)
+
+
+def _foot_line(page: Page, y: float, parts: list[str]) -> None:
     text = page.safe("; ".join(part for part in parts if part))
-    right = _RIGHT + _RIGHT_WIDTH
     page.text(
-        right, 0.22, page.fitted(text, SMALL, _RIGHT_WIDTH + 0.45), fontsize=SMALL, color="#555555",
+        _RIGHT + _RIGHT_WIDTH, y, page.fitted(text, SMALL, _RIGHT_WIDTH + 0.45), fontsize=SMALL, color="#555555",
         horizontalalignment="right",
     )  # fmt: skip
 

@@ -50,7 +50,10 @@ def closure_lines(result: ShotResult, width: int, label: int) -> list[str]:
     """The forward run beside the record, pulse by pulse."""
     if result.closure is None:
         hot = result.response.correction(Correction.BAR_TEMPERATURE).applied
+        bars = (result.rig.incident_bar, result.rig.transmitted_bar)
         why = "hot bar ends are corrected for" if hot else "no plastic curve is left to run"
+        if any(bar.propagation is not None for bar in bars):
+            why = "the impedance of bars with a measured propagation is not one number"
         return wrapped(f"no forward run: {why}", width, "Closure".ljust(label))
     both = (_pulse_words(one) for one in (result.closure.reflected, result.closure.transmitted))
     return wrapped(f"forward run against record: {'; '.join(both)}", width, "Closure".ljust(label))

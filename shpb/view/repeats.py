@@ -13,7 +13,7 @@ def repeat_lines(shots: Iterable[RepeatShot], width: int) -> list[str]:
     """Lines on every group of repeats, none where there are no repeats."""
     lines: list[str] = []
     for group in find_repeats(shots):
-        lines += wrapped(f"{_condition(group)}: {_said(group)}.", width, "repeats: ", " " * 9)
+        lines += wrapped(f"{_condition(group)}: {agreement_words(group)}.", width, "repeats: ", " " * 9)
     return lines
 
 
@@ -25,7 +25,8 @@ def _condition(group: Repeats) -> str:
     return f"{names} ({printable(first.material)}, {first.kind}, {kelvin:.0f} K, {rounded(rate)} /s)"
 
 
-def _said(group: Repeats) -> str:
+def agreement_words(group: Repeats) -> str:
+    """Whether the shots of a group agree, and which of them does not."""
     if not group.compared:
         return "no flow stress at a common strain"
     if not group.disagreements:

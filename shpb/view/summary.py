@@ -17,8 +17,10 @@ from shpb.pulse.pulse import Pulse
 from shpb.record.record import Record, Source
 from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION, Equilibrium
+from shpb.rig.calibration import Calibration
 from shpb.trust.budget import ALL_OUTPUTS, COVERAGE_FACTOR, flow_stress_uncertainty_pa
 from shpb.version import VERSION
+from shpb.view.by_hand_words import by_hand_json
 from shpb.view.forward_words import closure_json, corrections_json
 from shpb.view.wording import cutoff_fa_c0, formulas, verdict_sentence
 
@@ -58,6 +60,7 @@ def shot_json(result: ShotResult) -> Json:
             ],
             "rig": result.rig.source,
             "sheet": sheet.source,
+            "calibration": calibration_json(result.rig.calibration),
         },
         "counts": _span(result),
         "uncertainty": _uncertainty(result),
@@ -88,6 +91,7 @@ def shot_json(result: ShotResult) -> Json:
         "incident_impulse_n_s": response.balance.incident_impulse_n_s,
         "striker_momentum_n_s": response.balance.striker_momentum_n_s,
         "pulses": {pulse.name: _pulse(pulse) for pulse in result.pulses},
+        "by_hand": by_hand_json(result.by_hand),
         "processing": _processing(result),
         "remarks": [*result.record.remarks, *result.pulses.remarks],
         "limits_set_by_lab": {
@@ -107,6 +111,20 @@ def shot_json(result: ShotResult) -> Json:
         ],
     }  # fmt: skip
     return _plain(summary)  # type: ignore[no-any-return]
+
+
+def calibration_json(calibration: Calibration | None) -> Json | None:
+    """Which calibration, for other programs; None where there is none."""
+    if calibration is None:
+        return None
+    return {
+        "name": calibration.name,
+        "rig": calibration.rig,
+        "date": calibration.date,
+        "holds_days": calibration.holds_days,
+        "sha256": calibration.sha256,
+        "file": calibration.source,
+    }
 
 
 def record_json(record: Record) -> Json:
@@ -291,6 +309,7 @@ def _pulse(pulse: Pulse) -> Json:
 def _processing(result: ShotResult) -> Json:
     faces = result.faces
     return {
+        "waves": result.settings.waves.value,
         "dispersion": result.settings.dispersion.value,
         "alignment": result.settings.alignment.value,
         "analysis": result.response.analysis.value,

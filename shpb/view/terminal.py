@@ -18,6 +18,7 @@ from shpb.view.summary import error_json, json_text, record_json, shot_json
 from shpb.view.text import NOT_KNOWN, printable, rounded, wrapped
 from shpb.view.uncertainty import budget_lines, budget_table, draw_lines
 from shpb.view.wording import (
+    calibration_words,
     finding_named,
     misalignment_words,
     processing_words,
@@ -65,6 +66,10 @@ def shot_text(result: ShotResult, *, width: int = 80, full: bool = False) -> str
     lines += ["", *_reasons(result, width)]
     lines += ["", *_numbers(result, width)]
     lines += ["", *wrapped(processing_words(result) + ".", width, "Processing".ljust(_LABEL))]
+    if calibrated := calibration_words(result):
+        lines += wrapped(
+            f"{calibrated}, rig {printable(result.rig.name)}.", width, "Calibration".ljust(_LABEL)
+        )
     for number, remark in enumerate(remarks_of(result)):
         lines += wrapped(remark + ".", width, ("" if number else "Remarks").ljust(_LABEL))
     if full:

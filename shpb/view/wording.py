@@ -7,6 +7,7 @@ from shpb.reduction import ShotResult
 from shpb.response.equilibrium import R_DEFINITION
 from shpb.settings import Alignment, Analysis, Dispersion
 from shpb.trust.finding import Finding, Verdict, Weight
+from shpb.view.by_hand_words import by_hand_words
 from shpb.view.text import fitted, printable, rounded
 
 _DISPERSION = {
@@ -21,13 +22,20 @@ _SHOWN_LIMITS = 4
 
 def verdict_sentence(result: ShotResult) -> str:
     """The verdict in one sentence: where the shot counts, or what speaks against it."""
-    span = result.response.strain_span
-    if result.verdict is Verdict.REJECT:
-        against = [_against(result, f) for f in result.findings if f.weight is Weight.REJECT]
+    outcome = result.response.equilibrium.outcome.value
+    return verdict_in_words(result.verdict, result.findings, result.response.strain_span, outcome)
+
+
+def verdict_in_words(
+    verdict: Verdict, findings: tuple[Finding, ...], span: tuple[float, float] | None, outcome: str
+) -> str:
+    """The same of a reduced or a stored shot: its true strain span that counts, its outcome of equilibrium."""
+    if verdict is Verdict.REJECT:
+        against = [_against(f, outcome) for f in findings if f.weight is Weight.REJECT]
         return f"The shot does not count. Against it: {', '.join(against)}."
     if span is None:
         return "The shot counts, but no span of strain in equilibrium is known."
-    only = "only " if result.verdict is Verdict.RESTRICT else ""
+    only = "only " if verdict is Verdict.RESTRICT else ""
     return f"The shot counts {only}from true strain {strain_text(span[0])} to {strain_text(span[1])}."
 
 
@@ -36,9 +44,8 @@ def strain_text(strain: float) -> str:
     return f"{strain:.3f}" if abs(strain) >= 0.01 else f"{strain:.4f}"
 
 
-def _against(result: ShotResult, finding: Finding) -> str:
-    outcome = f" {result.response.equilibrium.outcome.value}" if finding.check == "force equilibrium" else ""
-    return printable(finding.check) + outcome
+def _against(finding: Finding, outcome: str) -> str:
+    return printable(finding.check) + (f" {outcome}" if finding.check == "force equilibrium" else "")
 
 
 def telling(findings: tuple[Finding, ...]) -> tuple[Finding, ...]:
@@ -75,6 +82,14 @@ def low_pass_words(result: ShotResult) -> str:
     )
 
 
+def calibration_words(result: ShotResult) -> str:
+    """The calibration that the values of the rig come from; empty where the rig file names none."""
+    calibration = result.rig.calibration
+    if calibration is None:
+        return ""
+    return f"{printable(calibration.name)} of {printable(calibration.date)}"
+
+
 def alignment_words(result: ShotResult) -> str:
     """How the pulses were laid on one clock, with what was tuned or what is left over."""
     faces = result.faces
@@ -103,6 +118,8 @@ def formulas(result: ShotResult) -> str:
     """Name and formulas of the analysis put forward; e_I, e_R, e_T are the strains at the faces."""
     if result.response.analysis is Analysis.THREE_WAVE:
         return "three-wave: stress = (F_in + F_out)/(2 A_s), rate = (v_in - v_out)/L"
+    if result.faces.returning is not None:
+        return "one-wave: stress = F_out/A_s, rate = (-2 c_i e_R + F_out/Z_i - v_out)/L"
     mismatch = result.rig.incident_bar.impedance_n_s_m != result.rig.transmitted_bar.impedance_n_s_m
     general = " + F_out (1/Z_i - 1/Z_t)" if mismatch else ""
     rate = f"(-2 c_i e_R{general})/L" if mismatch else "-2 c_i e_R/L"
@@ -113,6 +130,7 @@ def processing_words(result: ShotResult) -> str:
     """Everything between volts and curve that a reader must know, in one sentence."""
     return "; ".join(
         (
+            *([apart] if (apart := stations_words(result)) else []),
             _DISPERSION[result.settings.dispersion],
             low_pass_words(result),
             alignment_words(result),
@@ -121,6 +139,12 @@ def processing_words(result: ShotResult) -> str:
             *([own] if (own := lab_limits_words(result)) else []),
         )
     )
+
+
+def stations_words(result: ShotResult) -> str:
+    """By how many stations the waves of which bar were told apart; empty where windows did it."""
+    counts = [f"{bar.side} bar's by {len(bar.stations)}" for bar in result.pulses.separated]
+    return f"waves told apart by stations ({', '.join(counts)})" if counts else ""
 
 
 def corrected_words(result: ShotResult) -> str:
@@ -162,9 +186,7 @@ def lab_limits_words(result: ShotResult) -> str:
 
 def remarks_of(result: ShotResult) -> tuple[str, ...]:
     """What a reader of the numbers should know besides: what was set by hand, what was noticed on the way."""
-    by_hand = [pulse.name for pulse in result.pulses if pulse.set_by_hand]
-    said = [f"window or foot set by hand: {', '.join(by_hand)}"] if by_hand else []
-    said += [*result.record.remarks, *result.pulses.remarks]
+    said = [*by_hand_words(result), *result.record.remarks, *result.pulses.remarks]
     if result.sheet.remarks:
         said.append(f"shot sheet: {result.sheet.remarks}")
     return tuple(map(printable, said))

@@ -15,8 +15,8 @@ from shpb.rig.bar import Bar
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 from shpb.settings import Alignment, Settings
-from shpb.wave.propagation import CarriedPulse, Grid, LowPass
-from shpb.wave.to_faces import ToFaces
+from shpb.wave.propagation import STOP_BY_CUTOFF, CarriedPulse, Grid, LowPass
+from shpb.wave.to_faces import Solved, ToFaces
 
 # The common clock begins this long before the front, in a/c0 of the incident bar.
 _BEFORE_RADII = 12.0
@@ -52,8 +52,13 @@ class FacePulses:
         The tuned part: what was added to the physical delay [s]; zero in physical time.
     untuned : FacePulses or None
         The same without the tuned part, where there is one.
+    returning : CarriedPulse or None
+        The wave that comes back to the specimen in the transmitted bar, where its stations tell it apart.
     face_impedance_ratio : float
         Impedance of the incident bar at its face by that of the bar: other than 1 where a hot end is corrected.
+    undone_hz : tuple of float
+        Up to where gauge and amplifier of incident, reflected and transmitted pulse can be undone [Hz]; zero where
+        nothing is stated of them.
     """
 
     time_s: FloatArray
@@ -71,6 +76,8 @@ class FacePulses:
     transmitted_shift_s: float = 0.0
     untuned: FacePulses | None = None
     face_impedance_ratio: float = 1.0
+    undone_hz: tuple[float, ...] = (0.0, 0.0, 0.0)
+    returning: CarriedPulse | None = None
 
     def index(self, time_s: float) -> int:
         """Sample at or after a time since the front, kept on the grid."""
@@ -78,25 +85,33 @@ class FacePulses:
 
 
 def low_pass_of(rig: Rig, settings: Settings) -> LowPass:
-    """The one low-pass of a rig: from the bar with the lower c0/a, or as the settings state it."""
-    if settings.cutoff_hz is not None:
-        return LowPass(settings.cutoff_hz)
-    slower = min(1 / bar.radius_time_s for bar in (rig.incident_bar, rig.transmitted_bar))
-    return LowPass(settings.cutoff_fa_c0 * slower)
+    """The one low-pass of a rig: from the bar with the lower c0/a, or as the settings state it.
+
+    It ends where a measured propagation table ends, at the latest: beyond that nothing is known of the bar.
+    """
+    bars = (rig.incident_bar, rig.transmitted_bar)
+    cutoff = settings.cutoff_hz
+    if cutoff is None:
+        cutoff = settings.cutoff_fa_c0 * min(1 / bar.radius_time_s for bar in bars)
+    known = [bar.propagation.frequency_hz[-1] for bar in bars if bar.propagation is not None]
+    return LowPass(min(cutoff, *(end_hz / STOP_BY_CUTOFF for end_hz in known))) if known else LowPass(cutoff)
 
 
-def carry_to_faces(pulses: Pulses, rig: Rig, sheet: ShotSheet, settings: Settings) -> FacePulses:
+def carry_to_faces(
+    pulses: Pulses, rig: Rig, sheet: ShotSheet, settings: Settings, solved: Solved | None = None
+) -> FacePulses:
     """Carry the pulses to the specimen faces: incident forward, reflected and transmitted back.
 
     All three pass the same zero-phase low-pass and the same dispersion step, to the same place, before
-    any sum or difference is formed (Gorham 1983; Lifshitz & Leber 1994).
+    any sum or difference is formed (Gorham 1983; Lifshitz & Leber 1994). ``solved`` is for a shot that is
+    carried again with other windows.
     """
     low_pass = low_pass_of(rig, settings)
     transit = sheet.specimen.transit_time_s or 0.0
     grid = _common_grid(pulses, rig, low_pass)
-    to_faces = ToFaces(pulses, rig, sheet, settings, grid, low_pass)
+    to_faces = ToFaces(pulses, rig, sheet, settings, grid, low_pass, solved)
     at_faces = to_faces()
-    incident, reflected, transmitted, impedance_ratio = at_faces
+    incident, reflected, transmitted, impedance_ratio, returning = at_faces
     feet = _feet_at_faces(pulses, (incident, reflected, transmitted), grid, rig)
     travel = _travel_s(rig.incident_gauge.to_specimen_m, rig.incident_bar)
     zero = feet[0].time_s if feet[0] is not None else pulses.arrivals.incident_s + travel
@@ -116,6 +131,8 @@ def carry_to_faces(pulses: Pulses, rig: Rig, sheet: ShotSheet, settings: Setting
         u_misalignment_s=u_off,
         whole=_whole(grid, low_pass, rig),
         face_impedance_ratio=impedance_ratio,
+        undone_hz=to_faces.undone_hz,
+        returning=returning,
     )
     if settings.alignment is Alignment.PHYSICAL:
         return physical
@@ -127,6 +144,7 @@ def carry_to_faces(pulses: Pulses, rig: Rig, sheet: ShotSheet, settings: Setting
         incident=tuned.incident,
         reflected=tuned.reflected,
         transmitted=tuned.transmitted,
+        returning=tuned.returning,
         reflected_shift_s=shift_r,
         transmitted_shift_s=shift_t,
         untuned=physical,
@@ -138,8 +156,8 @@ def _common_grid(pulses: Pulses, rig: Rig, low_pass: LowPass) -> Grid:
 
     A record sampled much faster than anything that passes is laid on every second, third, ... of its samples.
     """
-    travel_i = rig.incident_gauge.to_specimen_m / rig.incident_bar.wave_speed_m_s
-    travel_t = rig.transmitted_gauge.to_specimen_m / rig.transmitted_bar.wave_speed_m_s
+    travel_i = _travel_s(rig.incident_gauge.to_specimen_m, rig.incident_bar)
+    travel_t = _travel_s(rig.transmitted_gauge.to_specimen_m, rig.transmitted_bar)
     front = pulses.arrivals.incident_s + travel_i
     start = front - _BEFORE_RADII * rig.incident_bar.radius_time_s
     stop = min(
@@ -166,8 +184,8 @@ def _whole(grid: Grid, low_pass: LowPass, rig: Rig) -> int:
 
 
 def _travel_s(distance_m: float, bar: Bar) -> float:
-    """Travel time over a distance at the bar speed [s]."""
-    return distance_m / bar.wave_speed_m_s
+    """Travel time of a front over a distance [s]."""
+    return distance_m / bar.front_speed_m_s
 
 
 def _feet_at_faces(
@@ -184,7 +202,7 @@ def _feet_at_faces(
         if pulse.foot is None:
             feet.append(None)
         elif pulse.foot_by_hand:
-            # A foot set by hand counts as it stands, carried to the face at c0.
+            # A foot set by hand counts as it stands, carried to the face at the speed of fronts.
             feet.append(pulse.foot._replace(time_s=pulse.foot.time_s + to_face[pulse.name]))
         else:
             smoothing, sign = _SMOOTHING_RADII * unit, pulse.foot.sign

@@ -21,12 +21,12 @@ Int. J. Impact Eng. 25 (2001) 87-101.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike
 
-from shpb.arrays import BoolArray, FloatArray, frozen
+from shpb.arrays import BoolArray, ComplexArray, FloatArray, frozen
 from shpb.errors import InputError
 
 # First zero of J1'(x). Where k a equals it, c = sqrt(2) c2 exactly, for every Poisson's ratio
@@ -35,6 +35,7 @@ LAME_WAVENUMBER = 1.8411837813406593
 # Just below x = j_{1,1}^2 = 14.6819706..., where psi has its first pole. The first mode keeps Y below it.
 _POLE_OF_PSI = 14.68197
 _ITERATIONS = 60
+_COMPLEX_ITERATIONS = 5  # from a start that is good to the square of the imaginary part
 
 
 class _Speeds(NamedTuple):
@@ -129,6 +130,33 @@ def first_mode_at_wavelength(a_over_lambda: ArrayLike, poisson_ratio: float) -> 
 def phase_speed_ratio(fa_c0: ArrayLike, poisson_ratio: float) -> FloatArray:
     """Return c/c0 of the first mode at frequencies f a/c0, see :func:`first_mode_at_frequency`."""
     return first_mode_at_frequency(fa_c0, poisson_ratio).phase_speed
+
+
+def complex_wavenumber(omega: ComplexArray, poisson_ratio: float) -> ComplexArray:
+    """Return k a of the first mode at complex frequencies omega a/c0 a little off the real axis.
+
+    The analytic continuation of the real curve, as a numerical Laplace transform needs it: the first two terms of the
+    series about the real frequency, k + (omega - Re omega) c0/c_g, and then Newton's method in the equation itself.
+
+    Parameters
+    ----------
+    omega : complex array, shape (frequencies,)
+        Real part zero or positive; imaginary part small against 1.
+    poisson_ratio : float
+        0 to 0.49.
+    """
+    speeds = _body_speeds(poisson_ratio)
+    mode = first_mode_at_frequency(omega.real / (2 * np.pi), poisson_ratio)
+    root: Any = mode.wavenumber_ka + 1j * omega.imag / mode.group_speed
+    # Very long waves: k a = omega (1 + nu^2 omega^2/4), to 1e-13, where the equation itself is all rounding.
+    long_waves = np.abs(omega) < 1e-3
+    frequency: Any = np.where(long_waves, 1.0, omega)
+    root = np.where(long_waves, 1.0, root)
+    for _ in range(_COMPLEX_ITERATIONS):
+        F, by_k, _ = _equation(root**2, frequency**2, speeds)
+        root = np.where(long_waves, root, root - F / (2 * root * by_k))
+    found: ComplexArray = np.where(long_waves, omega * (1 + (poisson_ratio * omega) ** 2 / 4), root)
+    return found
 
 
 # --- the equation ------------------------------------------------------------------------------

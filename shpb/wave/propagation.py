@@ -3,7 +3,8 @@
 A pulse that travels the distance x along the bar is delayed by x/c(f) at each frequency. That delay
 is split into the rigid part x/c0, done on the time axis, and the residual phase
 exp(-i w x (1/c - 1/c0)), done in the spectrum; so the sample grid is not rotated and the zero
-padding only has to hold the residual delay.
+padding only has to hold the residual delay. Where the propagation of a bar was measured, its table rules: the factor is
+exp(-x (xi - i w/c0)), which also undoes the attenuation, and the impedance is complex.
 
 References
 ----------
@@ -19,22 +20,24 @@ from typing import NamedTuple
 
 import numpy as np
 
-from shpb.arrays import FloatArray
+from shpb.arrays import ComplexArray, FloatArray
 from shpb.rig.bar import Bar
 from shpb.settings import Dispersion
+from shpb.wave.complex_propagation import measured_wave
 from shpb.wave.pochhammer import FirstMode, first_mode_at_frequency
 
 # The surface-strain factor M1 has a pole at f a/c0 = 0.297 (Davies 1948): the correction of the
 # amplitude is whole up to 0.20 (12 % at nu = 0.29), fades out to nothing at 0.25, and never nears it.
 AMPLITUDE_WHOLE_FA_C0 = 0.20
 AMPLITUDE_NONE_FA_C0 = 0.25
+STOP_BY_CUTOFF = 1.5  # where nothing passes the low-pass any more
 
 
 @dataclass(frozen=True, slots=True)
 class LowPass:
     """The one zero-phase low-pass: a raised cosine, half its height at the cut-off.
 
-    It is 1 below half the cut-off and 0 above one and a half: beyond that nothing enters at all.
+    It is 1 below half the cut-off and 0 above one and a half of it: beyond that nothing enters at all.
     """
 
     cutoff_hz: float
@@ -42,7 +45,7 @@ class LowPass:
     @property
     def stop_hz(self) -> float:
         """Frequency from which nothing passes [Hz]."""
-        return 1.5 * self.cutoff_hz
+        return STOP_BY_CUTOFF * self.cutoff_hz
 
     @property
     def settling_s(self) -> float:
@@ -65,7 +68,7 @@ class LowPass:
 class CarriedPulse(NamedTuple):
     """A pulse at a specimen face, on the face's time grid.
 
-    All three are strains [1] of one shape; without amplitude correction they are one array.
+    All three are strains [1] of one shape; without amplitude correction they are one array in an elastic bar.
     Force is E A times ``force_strain``, velocity c0 times ``velocity_strain``.
     """
 
@@ -100,9 +103,11 @@ class BarTransfer:
     length: int  # of the FFT
     low_pass: LowPass
     frequency_hz: FloatArray
-    slowness_s_m: FloatArray  # 1/c - 1/c0: what dispersion adds to a rigid shift
-    force_factor: FloatArray | None  # surface strain to F/(E A); None without amplitude correction
-    velocity_factor: FloatArray | None  # surface strain to v/c0
+    # 1/c - 1/c0: what dispersion adds to a rigid shift; complex where the bar attenuates, xi/(i w) - 1/c0.
+    slowness_s_m: FloatArray | ComplexArray
+    # Surface strain to F/(E A) with E = rho c0^2; None without amplitude correction in an elastic bar.
+    force_factor: FloatArray | ComplexArray | None
+    velocity_factor: FloatArray | ComplexArray | None  # surface strain to v/c0
 
     def carry(
         self,
@@ -129,7 +134,7 @@ class BarTransfer:
             gain = gain / chain
         passed = spectrum[: self.frequency_hz.size] * (gain * np.exp(phase))
 
-        def on_grid(factor: FloatArray | None) -> FloatArray:
+        def on_grid(factor: FloatArray | ComplexArray | None) -> FloatArray:
             coarse = self.length // every
             carried = np.zeros(coarse // 2 + 1, dtype=np.complex128)
             carried[: passed.size] = passed if factor is None else passed * factor
@@ -149,9 +154,12 @@ class BarTransfer:
 def bar_transfer(
     bar: Bar, interval_s: float, length: int, low_pass: LowPass, dispersion: Dispersion
 ) -> BarTransfer:
-    """Solve the first mode of a bar at the frequencies of an FFT that pass the low-pass."""
+    """Solve the first mode of a bar at the frequencies of an FFT that pass the low-pass, or look into its table."""
     frequency: FloatArray = np.fft.rfftfreq(length, interval_s).astype(np.float64, copy=False)
     frequency = frequency[: int(np.searchsorted(frequency, low_pass.stop_hz))]
+    if bar.propagation is not None and dispersion is not Dispersion.NONE:
+        measured = measured_factors(bar, frequency, dispersion)
+        return BarTransfer(bar, interval_s, length, low_pass, frequency, *measured)
     slowness, force, velocity = np.zeros_like(frequency), None, None
     if dispersion is not Dispersion.NONE:
         mode = first_mode_at_frequency(frequency * bar.radius_time_s, bar.poisson_ratio)
@@ -159,6 +167,23 @@ def bar_transfer(
         if dispersion is Dispersion.FULL:
             force, velocity = capped_factor(mode, mode.stress), capped_factor(mode, mode.velocity)
     return BarTransfer(bar, interval_s, length, low_pass, frequency, slowness, force, velocity)
+
+
+def measured_factors(
+    bar: Bar, frequency_hz: FloatArray, dispersion: Dispersion
+) -> tuple[ComplexArray, ComplexArray, ComplexArray]:
+    """Slowness, force and velocity factor of a bar with a measured table, as in :class:`BarTransfer`.
+
+    With phase alone only the material's own modulus and speed turn strain into force and velocity, with amplitude the
+    section factors too. Neither depends on c0: what the rigid shift and E A hold of it is taken out again here.
+    """
+    wave = measured_wave(bar, frequency_hz)
+    by_c0 = wave.material_speed_m_s / bar.wave_speed_m_s
+    force, velocity = by_c0**2, by_c0
+    if dispersion is Dispersion.FULL:
+        force = force * capped_factor(wave.mode, wave.mode.stress)
+        velocity = velocity * capped_factor(wave.mode, wave.mode.velocity)
+    return wave.slowness_s_m - 1.0 / bar.wave_speed_m_s, force, velocity
 
 
 def carry_pulse(

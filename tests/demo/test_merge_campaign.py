@@ -185,9 +185,9 @@ def test_readme_cautions_and_names_the_mishaps(to_merge: DemoCampaign) -> None:
 
 def test_the_two_demo_campaigns_do_not_mix(to_merge: DemoCampaign, campaign: DemoCampaign) -> None:
     before = sorted(path.name for path in to_merge.folder.rglob("*"))
-    with pytest.raises(InputError, match="holds the other demo campaign"):
+    with pytest.raises(InputError, match="holds another demo campaign"):
         write_demo(to_merge.folder)
-    with pytest.raises(InputError, match="holds the other demo campaign"):
+    with pytest.raises(InputError, match="holds another demo campaign"):
         write_demo(campaign.folder, to_merge=True)
     assert sorted(path.name for path in to_merge.folder.rglob("*")) == before
     marker = json.loads((to_merge.folder / "demo_campaign.json").read_text(encoding="utf-8"))
@@ -210,4 +210,4 @@ def test_the_verb_writes_it(tmp_path: Path, capsys: pytest.CaptureFixture[str]) 
     assert (tmp_path / "lab" / "records" / "H-2800-800C-1.npz").is_file()
     assert "written to" in capsys.readouterr().err
     assert main(["demo", str(tmp_path / "lab"), "--write-only"]) == 2
-    assert "the other demo campaign" in capsys.readouterr().err
+    assert "another demo campaign" in capsys.readouterr().err

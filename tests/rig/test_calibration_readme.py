@@ -7,6 +7,7 @@ from pathlib import Path
 
 import pytest
 
+from shpb.calibrate.session_file import session_from_text, session_on_rig
 from shpb.docs import blocks, refreshed
 from shpb.errors import InputError
 from shpb.limits import LIMIT_FACTS, key_of
@@ -57,6 +58,13 @@ def test_the_example_files_read_and_fit_together():
     ):
         assert (float(one), one.u) == (float(two), two.u)
     assert sheet.record_files == row.record_files
+    session = session_on_rig(session_from_text(_example("session"), "session", "shots"), rig)
+    assert [shot.kind.value for shot in session.shots] == [
+        "bars-apart",
+        "bars-apart",
+        "bars-together",
+        "shunt",
+    ]
     # The text below the example: 206 GPa and 7830 kg/m^3 are 5129 m/s, 1 % of modulus is 0.5 % of speed.
     speed = rig.transmitted_bar.wave_speed_m_s
     assert round(speed) == 5129

@@ -6,13 +6,15 @@ import re
 
 import pytest
 
+from shpb.calibrate.session_file import read_session, session_from_text
 from shpb.errors import InputError
 from shpb.rig.columns import COLUMNS
 from shpb.rig.keys import RIG_FILE, SHEET_FILE
 from shpb.rig.rig_file import read_rig, rig_from_text
+from shpb.rig.session_keys import SESSION_FILE
 from shpb.rig.sheet_file import read_sheet, sheet_from_text
 from shpb.rig.shot_list import read_shot_list, shot_list_from_text
-from shpb.rig.templates import list_template, rig_template, sheet_template, write_templates
+from shpb.rig.templates import list_template, rig_template, session_template, sheet_template, write_templates
 
 
 def _all_keys(text: str) -> str:
@@ -21,7 +23,7 @@ def _all_keys(text: str) -> str:
 
 
 def test_the_templates_read_back(tmp_path):
-    rig_path, sheet_path, list_path = write_templates(tmp_path / "new" / "lab")
+    rig_path, sheet_path, list_path, session_path = write_templates(tmp_path / "new" / "lab")
     rig, sheet = read_rig(rig_path), read_sheet(sheet_path)
     first, second = read_shot_list(list_path)
     assert rig.name == "Bar bench 2, 19 mm"
@@ -29,12 +31,15 @@ def test_the_templates_read_back(tmp_path):
     assert sheet.specimen.length_m.u == pytest.approx(5e-6)
     assert (first.shot_id, second.shot_id) == ("CU-017", "CU-018")
     assert first.rig_file == rig_path
+    session = read_session(session_path)
+    assert session.rig_file == rig_path
+    assert [shot.shot_id for shot in session.shots] == ["BT-1"]
     # The sheet and the first row are the same shot, as far as both tell it.
     assert first.specimen.diameter_m == sheet.specimen.diameter_m
 
 
 def test_every_key_of_the_templates_reads_back():
-    rig = rig_from_text(_all_keys(rig_template()), "rig.toml")
+    rig = rig_from_text(_all_keys(rig_template()), "rig.toml", as_stated=True)
     assert rig.incident_gauge.scope_bits == 12
     assert rig.record.channel_names == ("CH1", "CH2")
     assert rig.settings["cutoff_hz"] == 120e3
@@ -43,12 +48,30 @@ def test_every_key_of_the_templates_reads_back():
     assert sheet.temperature_k == pytest.approx(294.15)
 
 
+def test_every_key_and_every_example_of_the_session_template_reads_back():
+    text = _all_keys(session_template())
+    # The keys of one kind of shot are refused with another: here the first is a shunt, then bars together.
+    of_shunt = r"^(station|shunt_ohm) = .*\n"
+    head, *examples = re.sub(r"^#(?=\[)", "", text, flags=re.M).partition("# Other kinds")
+    session = session_from_text(re.sub(of_shunt, "", head, flags=re.M) + "".join(examples), "c.toml", ".")
+    assert [shot.kind.value for shot in session.shots] == ["bars-together", "bars-apart", "shunt"]
+    assert session.shots[0].striker.diameter_m == pytest.approx(0.019)
+    assert session.shots[0].striker_speed_m_s.u == pytest.approx(0.02)
+    assert session.shots[1].struck_end.value == "specimen"
+    assert session.shots[2].shunt_ohm == 174650
+    assert session.name == "rig_2024-03-11"
+
+
 def test_every_key_stands_in_the_templates_with_its_example():
-    for text, tables in ((rig_template(), RIG_FILE), (sheet_template(), SHEET_FILE)):
+    for text, tables in (
+        (rig_template(), RIG_FILE),
+        (sheet_template(), SHEET_FILE),
+        (session_template().partition("# Other kinds")[0], SESSION_FILE),
+    ):
         parts = dict(
             zip(
-                re.findall(r"^\[(\w+)\]$", text, re.M),
-                re.split(r"^\[\w+\]$", text, flags=re.M)[1:],
+                re.findall(r"^\[+(\w+)\]+$", text, re.M),
+                re.split(r"^\[+\w+\]+$", text, flags=re.M)[1:],
                 strict=True,
             )
         )

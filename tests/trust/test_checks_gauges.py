@@ -117,6 +117,10 @@ def test_bending(faces: FaceStrains, good: ShotResult) -> None:
         assert said.weight is weight
         percent = float(said.measured.split("bending is ")[1].split(" %")[0])
         assert percent == pytest.approx(100 * share, abs=1)
+        # Each pulse that the station sees has its own.
+        for pulse in ("incident", "reflected"):
+            percent = float(said.measured.partition("(")[2].split(f"{pulse} ")[1].split(" %")[0])
+            assert percent == pytest.approx(100 * share, abs=1)
 
 
 def test_bar_temperature(faces: FaceStrains, good: ShotResult) -> None:

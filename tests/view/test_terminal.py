@@ -91,7 +91,9 @@ def test_definition_of_r_and_the_low_pass_always_stand(shots: dict[str, ShotResu
 
 
 def test_what_a_hand_did_is_said(shots: dict[str, ShotResult]) -> None:
-    assert "window or foot set by hand: incident, reflected" in shot_text(shots["by hand"])
+    text = " ".join(shot_text(shots["by hand"]).split())
+    assert "incident window set by hand in shot sheet, list or rig file" in text
+    assert "reflected foot set by hand in shot sheet, list or rig file" in text
     words = " ".join(shot_text(shots["feet"]).split())
     assert "feet laid on the incident foot (reflected moved +" in words
     assert "without the moved feet: " in words

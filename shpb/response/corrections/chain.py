@@ -54,9 +54,7 @@ def correct(
             time_s=faces.time_s,
         )
 
-    reports = [
-        asked(one) for one in (gauge_rise(rig, faces.low_pass), bar_temperature(shot), bar_mismatch(shot))
-    ]
+    reports = [asked(one) for one in (gauge_rise(rig, faces), bar_temperature(shot), bar_mismatch(shot))]
     for step in _ON_THE_CURVES:
         report = asked(step(shot))
         reports.append(report)

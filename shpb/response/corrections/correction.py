@@ -8,6 +8,7 @@ from typing import NamedTuple
 import numpy as np
 
 from shpb.arrays import FloatArray
+from shpb.errors import InputError
 from shpb.response.bar_analysis import Curve, FaceMotion
 from shpb.response.corrections.facts import FACTS, Fact
 from shpb.rig.gauge import TestKind
@@ -101,6 +102,12 @@ class Loading:
         part = slice(*self.loading)
         stress = self.curves.three_wave.stress_pa[part]
         flows = stress > 0.5 * stress.max()
+        if not flows.any():
+            raise InputError(
+                "the force on the specimen is nowhere positive in the loading",
+                where="specimen stress",
+                mend="Check kind in the shot sheet, polarity and channel names in the rig file, and the pulses",
+            )
         values = np.broadcast_to(change, self.time_s.shape)[part]
         return float(np.abs(values[flows] / stress[flows]).max())
 

@@ -27,7 +27,8 @@ FACTS: dict[Correction, Fact] = {
     Correction.GAUGE_RISE: Fact(
         "Averaging over the gauge length and roll-off of the amplifier: undone in the spectrum of all three pulses",
         "averaging over the gauge length; second-order Butterworth amplifier",
-        "what passes the low-pass, while gauge and amplifier show at least 70 % of it",
+        "what passes the low-pass, as far as each pulse stands above its noise and gauge and amplifier show half of "
+        "it; beyond that their rise time is the limit",
         "gauge_length or bandwidth of both gauges",
     ),
     Correction.BAR_TEMPERATURE: Fact(

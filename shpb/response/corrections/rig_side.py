@@ -5,13 +5,17 @@ from __future__ import annotations
 import numpy as np
 
 from shpb.response.corrections.correction import Loading, Report
-from shpb.rig.bar import Bar
-from shpb.rig.gauge import Gauge
 from shpb.rig.rig import Rig
 from shpb.settings import Correction
+from shpb.wave.faces import FacePulses
 from shpb.wave.hot_bar import HotEnd, hot_ends, why_no_hot_ends
-from shpb.wave.propagation import LowPass
-from shpb.wave.recording_chain import chain_delay_s, chain_gain, chain_rise_s, why_no_chain
+from shpb.wave.recording_chain import (
+    chain_delay_s,
+    chain_loss,
+    chain_rise_s,
+    stations_of_pulses,
+    why_no_chain,
+)
 
 _ALIKE = 1e-9
 
@@ -34,30 +38,31 @@ def bar_mismatch(shot: Loading) -> Report:
     )
 
 
-def gauge_rise(rig: Rig, low_pass: LowPass) -> Report:
-    """Averaging over the gauge and roll-off of the amplifier, undone within the band that passes."""
-    stations = (
-        ("incident", rig.incident_gauge, rig.incident_bar),
-        ("transmitted", rig.transmitted_gauge, rig.transmitted_bar),
-    )
-    lag = chain_delay_s(rig.transmitted_gauge) - chain_delay_s(rig.incident_gauge)
-    parts = [
-        f"{name} {100 * _loss(low_pass.cutoff_hz, gauge, bar):.1f} % at {low_pass.cutoff_hz / 1e3:.0f} kHz "
+def gauge_rise(rig: Rig, faces: FacePulses) -> Report:
+    """Averaging over the gauge and roll-off of the amplifier, undone where each pulse stands above its noise."""
+    cutoff = faces.low_pass.cutoff_hz
+    (gauge_i, bar_i), _, (gauge_t, bar_t) = stations = stations_of_pulses(rig)
+    taken = [
+        f"{name} {100 * chain_loss(cutoff, gauge, bar):.1f} % at {cutoff / 1e3:.0f} kHz "
         f"(rise {1e6 * chain_rise_s(gauge, bar):.2f} us)"
-        for name, gauge, bar in stations
+        for name, gauge, bar in (("incident", gauge_i, bar_i), ("transmitted", gauge_t, bar_t))
     ]
-    worst = max(_loss(low_pass.cutoff_hz, gauge, bar) for _, gauge, bar in stations)
-    stated = any(gauge.length_m or gauge.bandwidth_hz is not None for _, gauge, _ in stations)
+    lag = chain_delay_s(gauge_t) - chain_delay_s(gauge_i)
+    size = f"{', '.join(taken)}; transmitted channel {1e6 * lag:+.2f} us late"
+    short = [
+        f"{pulse} pulse known up to {hz / 1e3:.0f} kHz, faster changes limited by the rise time"
+        for pulse, hz in zip(("incident", "reflected", "transmitted"), faces.undone_hz, strict=True)
+        if hz < cutoff
+    ]
+    refused = why_no_chain(rig, faces.undone_hz)
+    worst = max(chain_loss(cutoff, gauge, bar) for gauge, bar in stations)
+    stated = any(gauge.length_m or gauge.bandwidth_hz is not None for gauge, _ in stations)
     return Report(
         correction=Correction.GAUGE_RISE,
-        brief=f"{100 * worst:.1f} % at {low_pass.cutoff_hz / 1e3:.0f} kHz" if stated else "",
-        size=f"{', '.join(parts)}; transmitted channel {1e6 * lag:+.2f} us late",
-        refused=why_no_chain(rig, low_pass.stop_hz),
+        brief=f"{100 * worst:.1f} % at {cutoff / 1e3:.0f} kHz" if stated else "",
+        size=size if refused or not short else f"{size}; {'; '.join(short)}",
+        refused=refused,
     )
-
-
-def _loss(frequency_hz: float, gauge: Gauge, bar: Bar) -> float:
-    return float(1 - chain_gain(np.array([frequency_hz]), gauge, bar)[0])
 
 
 def bar_temperature(shot: Loading) -> Report:

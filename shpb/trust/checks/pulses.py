@@ -11,6 +11,8 @@ from shpb.trust.judge import check
 @check("overlap", gravest=Weight.REJECT)
 def overlap(evidence: Evidence) -> Answer | None:
     """The incident pulse must have died away before the reflected one begins."""
+    if evidence.pulses.separated_bar("incident") is not None:
+        return None  # they may lie on each other: stations tell them apart
     tail, limit = abs(evidence.pulses.tail_at_reflection), evidence.settings.limits.overlap
     return graded(
         tail,
@@ -26,11 +28,13 @@ def overlap(evidence: Evidence) -> Answer | None:
 def other_waves(evidence: Evidence) -> Answer | None:
     """No window may run on into the next wave: reflected front, second loading, end reflection."""
     pulses, arrivals = evidence.pulses, evidence.pulses.arrivals
-    waves = (
+    every = (
         (pulses.incident, arrivals.reflected_s, "the reflected front"),
         (pulses.reflected, arrivals.second_loading_s, "the second loading"),
         (pulses.transmitted, arrivals.end_reflection_s, "the end reflection of the transmitted bar"),
     )
+    # What stations tell apart has no window that another wave could run into.
+    waves = tuple(wave for wave in every if pulses.waves(wave[0].name) is None)
     # One sample more is the end of a window set on the arrival itself.
     interval, end = pulses.sample_interval_s, evidence.strain.time(evidence.strain.samples)
     inside = [
@@ -39,7 +43,9 @@ def other_waves(evidence: Evidence) -> Answer | None:
         if pulse.window_s[1] > arrival + interval
     ]
     kept_out = [
-        f"{wave} at {1e6 * arrival:.0f} us is kept out" for _, arrival, wave in waves[1:] if arrival < end
+        f"{wave} at {1e6 * arrival:.0f} us is kept out"
+        for pulse, arrival, wave in waves
+        if arrival < end and pulse is not pulses.incident
     ]
     if not inside and not kept_out:
         return None

@@ -48,10 +48,10 @@ def clipping(evidence: Evidence) -> Answer | None:
 
 
 def _stations(evidence: Evidence) -> tuple[tuple[str, Gauge, FloatArray], ...]:
-    strain = evidence.strain
-    return (
-        ("incident", evidence.rig.incident_gauge, strain.incident.voltage_v),
-        ("transmitted", evidence.rig.transmitted_gauge, strain.transmitted.voltage_v),
+    gauges = evidence.rig.gauges
+    return tuple(
+        (name.removesuffix("_gauge").replace("_", " "), gauges[name], station.voltage_v)
+        for name, station in evidence.strain.stations.items()
     )
 
 
@@ -83,6 +83,8 @@ def _longest_run(mask: FloatArray) -> int:
 @check("zero_line", gravest=Weight.REJECT)
 def zero_line(evidence: Evidence) -> Answer | None:
     """The zero before the reflected pulse against that before the incident one: a loose gauge shows here."""
+    if evidence.pulses.separated_bar("incident") is not None:
+        return None  # one zero line a station, for both waves
     incident, reflected = evidence.pulses.incident, evidence.pulses.reflected
     shift = abs(reflected.zero.level - incident.zero.level) / _peak(incident)
     elapsed = (reflected.zero.centre - incident.zero.centre) * evidence.pulses.sample_interval_s
@@ -117,9 +119,12 @@ def quiet_before_pulse(evidence: Evidence) -> Answer | None:
 @check("zero_after", gravest=Weight.NOTE)
 def zero_after_shot(evidence: Evidence) -> Answer | None:
     """A trace that does not come back to zero after its pulse: loose gauge, or a bar bent or yielded."""
-    shift = {
-        pulse.name: _level_at_end(pulse) for pulse in (evidence.pulses.transmitted, evidence.pulses.reflected)
-    }
+    pulses = evidence.pulses
+    # Waves that stations tell apart go on to and fro to the end of the record.
+    cut = [pulse for pulse in (pulses.transmitted, pulses.reflected) if pulses.waves(pulse.name) is None]
+    if not cut:
+        return None
+    shift = {pulse.name: _level_at_end(pulse) for pulse in cut}
     worst = max(shift, key=lambda name: shift[name])
     return graded(
         shift[worst],
@@ -176,7 +181,10 @@ def _steps(evidence: Evidence, pulse: Pulse, gauge: Gauge) -> int:
 def noise(evidence: Evidence) -> Answer | None:
     """Noise that is left in each pulse after the low-pass, against its peak."""
     share = evidence.faces.low_pass.noise_share(evidence.pulses.sample_interval_s)
-    levels = {pulse.name: pulse.noise * share / _peak(pulse) for pulse in evidence.pulses}
+    end_s = evidence.faces.record_time_of_zero_s + evidence.response.time_s[evidence.response.loading[1] - 1]
+    levels = {
+        pulse.name: evidence.pulses.noise_at(pulse, end_s) * share / _peak(pulse) for pulse in evidence.pulses
+    }
     worst = max(levels, key=lambda name: levels[name])
     return graded(
         levels[worst],

@@ -1,0 +1,1 @@
+"""Complex propagation coefficient of bars that are not elastic, from two passages."""

@@ -1,0 +1,1 @@
+"""Sensitivity of every station: pulses against each other, the striker's line, shunts, reconciled; bending."""
