@@ -5,9 +5,8 @@ from __future__ import annotations
 import argparse
 import hashlib
 import re
-import sys
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -75,7 +74,15 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
     trust.add_argument(
         "--budget", action="store_true", help="draw the ranked budget too: SHOT_budget, as with --draws"
     )
+    add_choices(verb)
+
+
+def add_choices(verb: argparse.ArgumentParser) -> None:
+    """Declare the choices of the reduction."""
     choices = verb.add_argument_group("choices of the reduction (else rig file, shot sheet, defaults)")
+    choices.add_argument(
+        "--waves", metavar="WHICH", help="told apart by windows, or by stations on a bar (long pulses)"
+    )
     choices.add_argument("--dispersion", metavar="WHICH", help="none, phase or full (phase and amplitude)")
     choices.add_argument("--alignment", metavar="WHICH", help="physical or feet")
     choices.add_argument("--analysis", metavar="WHICH", help="curve put forward: one-wave or three-wave")
@@ -103,7 +110,7 @@ def run(options: argparse.Namespace) -> int:
         folder=folder,
         figure=options.figure,
         csv=options.csv,
-        choices=_choices(options),
+        choices=choices_in(options),
         drawing=drawing,
         budget=options.budget or (drawing is not None and options.figure != "none"),
     )
@@ -139,8 +146,10 @@ def _drawing(options: argparse.Namespace) -> Drawing | None:
     return Drawing(int(options.draws), seed)
 
 
-def _choices(options: argparse.Namespace) -> dict[str, object]:
+def choices_in(options: argparse.Namespace) -> dict[str, object]:
+    """The choices of the reduction that were made."""
     given = {
+        "waves": options.waves,
         "dispersion": options.dispersion,
         "alignment": options.alignment,
         "analysis": options.analysis,
@@ -229,29 +238,12 @@ class _Work:
         return {"shot_id": task.sheet.shot_id, **error_json(error)}
 
     def reduced(self, task: Task) -> Done:
-        from shpb.record.read import read_record
-        from shpb.reduction import reduce
-        from shpb.rig.overrides import hints_for, settings_for, settings_from
         from shpb.store.shot_file import save_shot
         from shpb.view.listing import list_row
         from shpb.view.terminal import draws_text, shot_text
 
-        settings = settings_from(self.outputs.choices, settings_for(task.rig, task.sheet))
-        record = read_record(task.sheet.record_files, hints_for(task.rig, task.sheet))
-        result = reduce(record, task.rig, task.sheet, settings)
-        stem = file_stem(task.sheet.shot_id)
-        store = self.outputs.folder / f"{stem}.h5"
-        page = self.outputs.budget_page(stem)
-        kinds = [self.outputs.figure, "csv" if self.outputs.csv else "none"]
-        others = [store.with_suffix(f".{kind}") for kind in kinds if kind != "none"]
-        _require_free(task, store, others if page is None else [*others, page])
-        if not self.figure_later:
-            result = self._drawn(result)
-        files = [save_shot(result, store)]
-        if self.outputs.csv:
-            from shpb.store.curves_csv import export_csv
-
-            files.append(export_csv(result, self.outputs.folder / f"{stem}.csv"))
+        drawn = None if self.figure_later else self._drawn
+        result, files = reduce_and_store(task, self.outputs, finish=drawn)
         done = Done(
             row=list_row(result),
             text=shot_text(result, full=self.full),
@@ -264,15 +256,8 @@ class _Work:
             if self.outputs.drawing is not None:
                 result = self._drawn(result)
                 print(draws_text(result), flush=True)
-                save_shot(result, store)
-        if self.outputs.figure != "none":
-            from shpb.view.figure import save_figure
-
-            files.append(save_figure(result, self.outputs.folder / f"{stem}.{self.outputs.figure}"))
-        if page is not None:
-            from shpb.view.budget_page import save_budget_page
-
-            files.append(save_budget_page(result, page))
+                save_shot(result, files[0])
+        files += draw_pages(result, self.outputs)
         return Done(row=done.row, text=done.text, json=done.json, files=tuple(map(str, files)))
 
     def _drawn(self, result: ShotResult) -> ShotResult:
@@ -289,7 +274,73 @@ class _Work:
             return draw_shot(result, drawing.draws, seed=drawing.seed, progress=lambda done, _: step(done))
 
 
-def _require_free(task: Task, store: Path, others: Sequence[Path]) -> None:
+def reduce_and_store(
+    task: Task,
+    outputs: Outputs,
+    *,
+    finish: Callable[[ShotResult], ShotResult] | None = None,
+    before_saving: Callable[[ShotResult, Path], None] | None = None,
+) -> tuple[ShotResult, list[Path]]:
+    """Read, reduce and store one shot: its HDF5 file and, where asked for, its curves; figures come after.
+
+    Parameters
+    ----------
+    task : Task
+    outputs : Outputs
+    finish : callable
+        Adds to the result before it is stored.
+    before_saving : callable
+        Called with the result and the path of its file when all is ready to be written.
+
+    Raises
+    ------
+    ShpbError
+        If the shot cannot be reduced or stored.
+    """
+    from shpb.record.read import read_record
+    from shpb.reduction import reduce
+    from shpb.rig.overrides import hints_for, settings_for, settings_from
+    from shpb.store.kept_by_hand import with_kept
+    from shpb.store.shot_file import save_shot
+
+    settings = settings_from(outputs.choices, settings_for(task.rig, task.sheet))
+    record = read_record(task.sheet.record_files, hints_for(task.rig, task.sheet))
+    stem = file_stem(task.sheet.shot_id)
+    store, page = outputs.folder / f"{stem}.h5", outputs.budget_page(stem)
+    # What somebody moved by hand when the shot was reduced before is not lost by reducing it again.
+    settings, by_hand = with_kept(store, record, task.sheet, settings)
+    result = replace(reduce(record, task.rig, task.sheet, settings), by_hand=by_hand)
+    kinds = [outputs.figure, "csv" if outputs.csv else "none"]
+    others = [store.with_suffix(f".{kind}") for kind in kinds if kind != "none"]
+    require_free(task, store, others if page is None else [*others, page])
+    if finish is not None:
+        result = finish(result)
+    if before_saving is not None:
+        before_saving(result, store)
+    files = [save_shot(result, store)]
+    if outputs.csv:
+        from shpb.store.curves_csv import export_csv
+
+        files.append(export_csv(result, outputs.folder / f"{stem}.csv"))
+    return result, files
+
+
+def draw_pages(result: ShotResult, outputs: Outputs) -> list[Path]:
+    """Draw what is wanted of a stored shot: its figure, the page of its budget."""
+    stem, files = file_stem(result.sheet.shot_id), list[Path]()
+    if outputs.figure != "none":
+        from shpb.view.figure import save_figure
+
+        files.append(save_figure(result, outputs.folder / f"{stem}.{outputs.figure}"))
+    page = outputs.budget_page(stem)
+    if page is not None:
+        from shpb.view.budget_page import save_budget_page
+
+        files.append(save_budget_page(result, page))
+    return files
+
+
+def require_free(task: Task, store: Path, others: Sequence[Path]) -> None:
     """Nothing that goes in is written over, nor anything beside a result that this program did not write."""
     sheet, rig = task.sheet, task.sheet.rig_file
     inputs = {path.resolve() for path in (*sheet.record_files, task.named_in, *([rig] if rig else []))}
@@ -369,19 +420,20 @@ def _silent(done: int) -> None:
 
 
 def _say(error: str) -> None:
-    """An error on stderr, line by line, its outside strings made harmless."""
-    from shpb.view.text import printable
+    from shpb.cli.say import say
 
-    print("\n".join(printable(line) for line in f"shpb: {error}".splitlines()), file=sys.stderr)
+    say(error)
 
 
 def _print_json(finished: Sequence[Done]) -> None:
+    from shpb.version import VERSION
     from shpb.view.repeats import repeats_json
     from shpb.view.summary import SCHEMA_VERSION, json_text
 
     shots = [{**done.json, "files": list(done.files)} for done in finished]
     repeats = repeats_json(done.row.repeat for done in finished if done.row.repeat is not None)
-    print(json_text({"schema_version": SCHEMA_VERSION, "shots": shots, "repeats": repeats}))
+    said = {"schema": "shpb shots", "schema_version": SCHEMA_VERSION, "program_version": VERSION}
+    print(json_text(said | {"shots": shots, "repeats": repeats}))
 
 
 def _print_one(done: Done) -> None:
