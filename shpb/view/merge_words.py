@@ -130,7 +130,12 @@ def plain(text: str) -> str:
 
 def why_not_fitted(one: NotFitted) -> str:
     """Why a law was not fitted, with the mend as it is typed."""
-    why = one.why.removeprefix("points: ").removeprefix(f"{one.model.key}: ").replace(_ACROSS, "")
+    return why_in_words(one.model.key, one.why)
+
+
+def why_in_words(key: str, why: str) -> str:
+    """The same, by the key of the law and the reason as it is stored."""
+    why = why.removeprefix("points: ").removeprefix(f"{key}: ").replace(_ACROSS, "")
     return _CALL.sub(lambda call: f"State it: --fact {_typed(call[1])}", why)
 
 
