@@ -33,6 +33,7 @@ ALLOWED: dict[str, set[str]] = {
     "reduction": {"trust", "response", "wave", "pulse", "record", "rig", "settings"},
     "forward": {"wave", "rig", "settings"},
     "fitting": set(),
+    "adjust": {"reduction", "response", "wave", "pulse", "record", "rig", "settings"},
     "calibrate": {"fitting", "trust", "wave", "pulse", "record", "rig", "settings"},
     "merge": {"fitting", "record", "response", "rig", "settings"},
     "store": {
@@ -47,7 +48,19 @@ ALLOWED: dict[str, set[str]] = {
         "rig",
         "settings",
     },
+    "watch": {
+        "store",
+        "reduction",
+        "trust",
+        "response",
+        "pulse",
+        "record",
+        "rig",
+        "settings",
+    },
     "view": {
+        "adjust",
+        "watch",
         "calibrate",
         "fitting",
         "merge",
@@ -62,7 +75,7 @@ ALLOWED: dict[str, set[str]] = {
     },
     "demo": {"forward", "wave", "rig", "record", "settings"},
     "docs": {"response", "trust", "rig"},
-    "cli": {"calibrate", "demo", "view", "store", "merge", "reduction", "record", "rig", "settings"},
+    "cli": {"adjust", "calibrate", "demo", "view", "watch", "store", "merge", "reduction", "record", "rig", "settings"},
 }
 
 

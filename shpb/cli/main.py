@@ -11,12 +11,42 @@ import os
 import sys
 from collections.abc import Sequence
 
-from shpb.cli import demo, forms, merge, record, reduce
+from shpb.cli import (
+    adjust,
+    calibrate,
+    completion,
+    demo,
+    export,
+    forms,
+    help_topics,
+    merge,
+    recalibrate,
+    record,
+    reduce,
+    report,
+    show,
+    watch,
+)
 from shpb.cli.status import BAD_INPUT, FAILED
 from shpb.errors import InputError, ShpbError
 from shpb.version import VERSION
 
-_VERBS = (reduce, merge, record, forms, demo)
+_VERBS = (
+    reduce,
+    adjust,
+    watch,
+    show,
+    merge,
+    report,
+    export,
+    calibrate,
+    recalibrate,
+    record,
+    forms,
+    demo,
+    help_topics,
+    completion,
+)
 
 _EPILOG = """\
 A verdict speaks about data, never about safety: do not go near the rig because
@@ -50,6 +80,13 @@ def parser() -> argparse.ArgumentParser:
     return top
 
 
+def verb_parsers() -> dict[str, tuple[str, argparse.ArgumentParser]]:
+    """What each verb does in a line, and its parser, by its name."""
+    top = parser()
+    held = next(one for one in top._actions if isinstance(one, argparse._SubParsersAction))
+    return {module.NAME: (module.HELP, held.choices[module.NAME]) for module in _VERBS}
+
+
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run one verb and return the exit status."""
     for stream in (sys.stdout, sys.stderr):
@@ -68,7 +105,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return 0
     except OSError as error:
-        print(f"shpb: the system refused: {error.strerror or error}", file=sys.stderr)
+        where = str(error.filename) if error.filename is not None else ""
+        said = ShpbError(f"the system refused: {error.strerror or error}", where=where)
+        _say(said, as_json=getattr(options, "json", False))
         return FAILED
     except KeyboardInterrupt:
         print("shpb: stopped; what was finished is stored whole", file=sys.stderr)
@@ -76,10 +115,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 
 def _say(error: ShpbError, *, as_json: bool) -> None:
-    from shpb.view.text import printable
+    from shpb.cli.say import say
 
     if as_json:
         from shpb.view.summary import error_json, json_text
 
         print(json_text(error_json(error)))
-    print("\n".join(printable(line) for line in f"shpb: {error}".splitlines()), file=sys.stderr)
+    say(str(error))

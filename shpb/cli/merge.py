@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import argparse
-import sys
 from collections.abc import Callable, Sequence
 from contextlib import ExitStack
 from dataclasses import dataclass
@@ -29,8 +28,8 @@ it, in results/, in quasistatic/ and its other subfolders; or name files.
 Shots that are rejected stay out, restricted ones enter inside their span."""
 EXAMPLE = """\
 examples:
-  shpb merge first-campaign
-  shpb merge first-campaign --laws johnson-cook --fact melting_temperature_C=1083
+  shpb merge campaign
+  shpb merge campaign --laws johnson-cook --fact melting_temperature_C=1083
   shpb merge results/W-0*.h5 quasistatic --strains 0.05,0.1 --csv --figure pdf
 
 exit status: 0 done, 1 failed, 2 bad input or usage
@@ -342,9 +341,9 @@ def _say_changed(changed: Sequence[ChangedFile]) -> None:
 
 
 def _say(error: str) -> None:
-    from shpb.view.text import printable
+    from shpb.cli.say import say
 
-    print("\n".join(printable(line) for line in f"shpb: {error}".splitlines()), file=sys.stderr)
+    say(error)
 
 
 def _print_text(merged: Merged, *, full: bool) -> None:

@@ -228,7 +228,8 @@ def _plastic(
     strain, stress = curve.strain[first:last], curve.stress_pa[first:last]
     if np.abs(strain).max() >= 1 and (test.kind is TestKind.COMPRESSION or strain.min() <= -1):
         raise InputError(
-            f"engineering strain from {strain.min():.4g} to {strain.max():.4g} once compliance and toe are out",
+            f"with compliance and toe taken off, engineering strain runs from {strain.min():.4g} to "
+            f"{strain.max():.4g}: that cannot be",
             where=test.origin,
             mend="Check gauge length, compliance and the first readings of the table",
         )
@@ -308,5 +309,9 @@ def _uncertainty(test: QuasistaticTest, settings: CurveSettings) -> tuple[float,
         said.append("the machine is not named: all such tests are taken to share its error")
     group = (test.machine or _UNNAMED_MACHINE) if shared > 0 else ""
     if not math.isfinite(own):
-        raise InputError(f"an uncertainty of {own}", where=test.origin, mend="Give stress_u_percent")
+        raise InputError(
+            f"the standard uncertainty of its stress is {own}",
+            where=test.origin,
+            mend="Give stress_u_percent",
+        )
     return own, shared, group, said

@@ -206,7 +206,7 @@ def average_repeats(curves: Sequence[MaterialCurve], settings: RepeatSettings = 
     grid = _grid(curves, settings.step)
     if not grid.size:
         raise InputError(
-            f"no step of {settings.step:g} lies in any valid span",
+            f"the curves count over less than one step of plastic strain, {settings.step:g}",
             where=", ".join(c.origin for c in curves),
             mend="Choose a smaller step of plastic strain",
         )

@@ -11,12 +11,20 @@ import numpy as np
 
 from shpb.merge.campaign import Merged, MergedMaterial
 from shpb.merge.model_fit import ModelFit
+from shpb.store.export_cells import cell, harmless
 from shpb.whole_file import whole_file
 
 _STRAIN_STEPS = 40  # of a flow curve
 _SAME_RATE = 1e-6  # relative
-# A cell that begins with one of these is run as a formula by spreadsheets (or becomes one after a blank).
-_FORMULA = ("=", "+", "-", "@", "\t", "\r", "\n", "|", "%")
+
+__all__ = [
+    "CURVE_COLUMNS",
+    "TABLE_COLUMNS",
+    "asked_of",
+    "export_flow_curves",
+    "export_merged_table",
+    "harmless",
+]
 
 TABLE_COLUMNS = (
     "material", "kind", "condition", "tests_by", "plastic_strain", "true_stress_MPa", "u_true_stress_MPa",
@@ -27,16 +35,6 @@ CURVE_COLUMNS = (
     "material", "kind", "law", "rate_per_s", "start_temperature_K", "path", "plastic_strain", "true_stress_MPa",
     "u_true_stress_MPa", "temperature_K", "extrapolated", "why_extrapolated",
 )  # fmt: skip
-
-
-def harmless(text: str) -> str:
-    r"""A text that no spreadsheet runs as a formula: an apostrophe before what would be one.
-
-    >>> harmless("=1+1"), harmless("Wrenmoor 3"), harmless(" @SUM(A1)")
-    ("'=1+1", 'Wrenmoor 3', "' @SUM(A1)")
-    """
-    plain = "".join(c if c.isprintable() else " " for c in text)
-    return f"'{plain}" if plain.lstrip().startswith(_FORMULA) or text.startswith(_FORMULA) else plain
 
 
 def export_merged_table(merged: Merged, path: Path | str) -> Path:
@@ -143,14 +141,5 @@ def _write(target: Path, columns: Sequence[str], rows: Iterable[Sequence[object]
         writer = csv.writer(file)
         writer.writerow(columns)
         for row in rows:
-            writer.writerow([_cell(value) for value in row])
+            writer.writerow([cell(value) for value in row])
     return target
-
-
-def _cell(value: object) -> str:
-    """A number in full, nothing for what is not known, a text that no spreadsheet runs."""
-    if value is None:
-        return ""
-    if isinstance(value, float):
-        return f"{value:.8g}" if math.isfinite(value) else ""
-    return str(value) if isinstance(value, int) else harmless(str(value))

@@ -84,7 +84,7 @@ def _from_fields(kind: Any, data: Any) -> Any:
     unknown = set(data) - names
     if unknown:
         raise StoreError(
-            f"{kind.__name__} has no {', '.join(sorted(unknown))}",
+            f"it holds {', '.join(sorted(unknown))} of {kind.__name__}, which this version does not know",
             where="stored inputs",
             mend="The file was written by a later version; update the program",
         )

@@ -340,7 +340,12 @@ def test_odd_arguments(lab: Path, capsys: pytest.CaptureFixture[str]) -> None:
 
 def test_forms_are_written_once(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     assert run("forms", tmp_path / "lab") == 0
-    assert sorted(p.name for p in (tmp_path / "lab").iterdir()) == ["rig.toml", "shot.toml", "shots.csv"]
+    assert sorted(p.name for p in (tmp_path / "lab").iterdir()) == [
+        "calibration.toml",
+        "rig.toml",
+        "shot.toml",
+        "shots.csv",
+    ]
     assert run("forms", tmp_path / "lab") == 2
     assert "there already" in capsys.readouterr().err
 

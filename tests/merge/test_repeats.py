@@ -203,7 +203,7 @@ def test_refusals() -> None:
         average_repeats([material_curve(), material_curve(material="H")])
     with pytest.raises(InputError, match="curves of different range"):
         average_repeats([material_curve(), material_curve(range=RateRange.BAR)])
-    with pytest.raises(InputError, match="no step of 0.1 lies in any valid span"):
+    with pytest.raises(InputError, match="count over less than one step of plastic strain, 0.1"):
         average_repeats([material_curve(span=(0.01, 0.05))], RepeatSettings(step=0.1))
     with pytest.raises(InputError, match="Choose a larger step"):
         average_repeats([material_curve()], RepeatSettings(step=1e-9))
