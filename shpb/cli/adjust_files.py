@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-import sys
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from shpb.cli.say import say
 from shpb.errors import InputError, ShpbError, StoreError
 
 if TYPE_CHECKING:
@@ -136,7 +136,7 @@ def store(opened: Opened, result: ShotResult, figure: str | None) -> tuple[ShotR
     except (ShpbError, OSError) as error:
         # The change is kept; that its figure is not must be said, and must not look like the opposite.
         said = printable(error.strerror or error if isinstance(error, OSError) else error)
-        print(f"shpb: the shot is stored, but not all that stands beside it: {said}", file=sys.stderr)
+        say(f"the shot is stored, but not all that stands beside it: {said}")
     return result, files
 
 

@@ -90,13 +90,15 @@ def _calibrate(options: argparse.Namespace) -> int:
     session = session_on_rig(session, rig)
     folder = session.rig_file.parent if options.into is None else options.into
     _require_folder(folder)
+    stem = session.name or f"{session.rig_file.stem}_{session.date[:10]}"
     fired = []
-    with progress(len(session.shots), "reading records") as step:
+    # The fits take about as long as reading all records.
+    with progress(2 * len(session.shots), "calibrating") as step:
         for one in fired_shots(session, rig):
             fired.append(one)
             step(len(fired))
-    stem = session.name or f"{session.rig_file.stem}_{session.date[:10]}"
-    done = calibrate(dataclasses.replace(session, name=stem), rig, fired, settings_from(rig.settings))
+        done = calibrate(dataclasses.replace(session, name=stem), rig, fired, settings_from(rig.settings))
+        step(2 * len(session.shots))
     done, file, figure = _store(done, folder, stem, options.figure)
     if options.json:
         print(json_text(calibrated_json(done, str(file), str(figure or ""))))

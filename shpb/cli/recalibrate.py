@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import argparse
-import sys
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from shpb.cli.say import say
 from shpb.errors import InputError, StoreError
 
 if TYPE_CHECKING:
@@ -230,8 +230,7 @@ def _print_text(finished: Sequence[Done], calibration: Calibration) -> None:
     print(said)
     for done in finished:
         if done.error:
-            lines = f"shpb: {done.error}".splitlines()
-            print("\n".join(printable(line) for line in lines), file=sys.stderr)
+            say(done.error)
     for folder in dict.fromkeys(done.task.target.parent for done in finished if done.compared):
         print(f"written to {printable(folder)}")
 

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import argparse
-import sys
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from shpb.cli.say import say
 from shpb.errors import InputError, StoreError
 
 if TYPE_CHECKING:
@@ -65,7 +65,7 @@ def run(options: argparse.Namespace) -> int:
         raise InputError("this is a file", where=str(options.into), mend="Give a folder for --into")
     found = plan(options.sources, options.into)
     for error in found.errors:
-        _say(str(error))
+        say(str(error))
     shots = _report_shots(found.shots, options.workers)
     by_file = {one.file.resolve(): one for one in shots}
     campaigns = [
@@ -74,7 +74,7 @@ def run(options: argparse.Namespace) -> int:
     every = [*shots, *campaigns]
     for one in every:
         if one.error:
-            _say(one.error)
+            say(one.error)
     if options.json:
         _print_json(shots, campaigns, found.errors)
     else:
@@ -230,12 +230,6 @@ def _with_addresses(row: CampaignRow, one: Reported, page: Path) -> CampaignRow:
 
 
 # --- words ---------------------------------------------------------------------------------------------
-
-
-def _say(error: str) -> None:
-    from shpb.view.text import printable
-
-    print("\n".join(printable(line) for line in f"shpb: {error}".splitlines()), file=sys.stderr)
 
 
 def _print_text(shots: Sequence[Reported], campaigns: Sequence[Reported]) -> None:

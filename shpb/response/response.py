@@ -128,7 +128,7 @@ def specimen_response(
     loading = loading_span(raw.three_wave.strain_rate_per_s, faces.time_s, faces.whole)
     if loading[1] - loading[0] < 8 or motion.force_out_n[slice(*loading)].max() <= 0:
         raise InputError(
-            "the pulses at the specimen faces load it nowhere",
+            "the pulses never load the specimen",
             where="response",
             mend="Check polarity, channels and windows in the rig file and the shot sheet",
         )

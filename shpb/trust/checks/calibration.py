@@ -42,7 +42,7 @@ def calibration_date(evidence: Evidence) -> Answer | None:
         limit=limit,
         action="Calibrate anew and state its day."
         if age > most
-        else "Check both days, and which rig file holds. A later calibration may be put in force for earlier shots: "
+        else "Check both days, and which rig file is meant. A later calibration may be put in force for earlier shots: "
         "shpb recalibrate.",
     )
 

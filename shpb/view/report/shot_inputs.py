@@ -11,6 +11,7 @@ from shpb.limits import USUAL, key_of, limit_in_words, set_by_lab
 from shpb.rig.bar import Bar
 from shpb.rig.gauge import Gauge
 from shpb.settings import Analysis, Dispersion
+from shpb.view.by_hand_words import shift_words
 from shpb.view.report.html import Column, Markup, element, pairs, paragraphs, section, table, word_for_word
 from shpb.view.report.stored import ReportedShot
 from shpb.view.text import rounded
@@ -141,6 +142,9 @@ def _by_hand(shot: ReportedShot) -> Iterator[tuple[str, str]]:
             other = "none" if automatic is None else f"{1e6 * automatic:.2f} µs"
             said += f"; foot {1e6 * foot:.2f} µs (automatic {other})"
         yield f"By hand: {name} pulse", said
+    for kept in shot.stored.by_hand:
+        moves = "; ".join(f"{move.pulse} {move.part} {shift_words(move)}" for move in kept.moves)
+        yield f"Moved by {kept.by}, {kept.at_utc[:10]}", f"{moves}. Why: {kept.why}"
 
 
 def calibration_section(shot: ReportedShot) -> Markup:

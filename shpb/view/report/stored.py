@@ -10,6 +10,7 @@ from typing import Any, NamedTuple, Protocol
 import numpy as np
 
 from shpb.arrays import FloatArray
+from shpb.pulse.by_hand import ByHand
 from shpb.record.record import Record
 from shpb.response.equilibrium import Outcome
 from shpb.response.flow import plastic_strain
@@ -46,6 +47,10 @@ class Stored(Protocol):
     @property
     def settings(self) -> Settings:
         """Choices and limits."""
+
+    @property
+    def by_hand(self) -> tuple[ByHand, ...]:
+        """What hands have moved so far."""
 
     @property
     def findings(self) -> tuple[Finding, ...]:
