@@ -75,7 +75,19 @@ ALLOWED: dict[str, set[str]] = {
     },
     "demo": {"forward", "wave", "rig", "record", "settings"},
     "docs": {"response", "trust", "rig"},
-    "cli": {"adjust", "calibrate", "demo", "view", "watch", "store", "merge", "reduction", "record", "rig", "settings"},
+    "cli": {
+        "adjust",
+        "calibrate",
+        "demo",
+        "view",
+        "watch",
+        "store",
+        "merge",
+        "reduction",
+        "record",
+        "rig",
+        "settings",
+    },
 }
 
 

@@ -12,6 +12,7 @@ import re
 from collections import Counter
 from collections.abc import Sequence
 from dataclasses import replace
+from itertools import pairwise
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -25,6 +26,7 @@ from shpb.rig.rig import RecordHints
 # Whole numbers over a wider span than this, of no stated unit, are digitiser codes, not volts.
 _CODE_SPAN = 20
 _AGREEMENT = 1e-3
+_BLOCK = 1 << 20
 
 
 class Channel(NamedTuple):
@@ -60,11 +62,23 @@ def channels_of(table: RawTable, columns: Sequence[RawColumn], where: str) -> tu
     _refuse_min_max_names([column.name for column in voltages], where)
     channels = [
         Channel(
-            name=column.name or f"CH{i}", named=bool(column.name), column=column, table=table, where=where
+            name=storable(column.name) or f"CH{i}",
+            named=bool(column.name),
+            column=column,
+            table=table,
+            where=where,
         )
         for i, column in enumerate(voltages, 1)
     ]
     return channels, remarks
+
+
+def storable(name: str) -> str:
+    """Return a name from outside as a file can hold it: no zero byte, no half of a character.
+
+    Damaged files bring such names, and folders whose names were written under another system's code.
+    """
+    return name.replace("\0", "\N{REPLACEMENT CHARACTER}").encode("utf-8", "replace").decode("utf-8")
 
 
 def _with_stated_facts(table: RawTable, columns: Sequence[RawColumn], where: str) -> list[RawColumn]:
@@ -200,6 +214,12 @@ def in_volts(channels: Sequence[Channel], hints: RecordHints) -> tuple[FloatArra
             row -= zero
             row *= scale
             row += offset
+            if finite and not _is_finite(row):
+                raise InputError(
+                    f"the samples times {scale:g} V are too large to be numbers",
+                    where=f"{channel.where}, channel {channel.name!r}",
+                    mend="Correct the volts per code, the offset or the unit",
+                )
         if not finite:
             remarks += _set_to_rails(row, channel)
     if unstated:
@@ -284,8 +304,9 @@ def _unit(channel: Channel, hints: RecordHints, where: str) -> str:
 def _all_whole(column: RawColumn, row: FloatArray) -> bool:
     if column.values.dtype.kind in "iu":
         return True
-    top = row[:256]
-    return bool(np.all(top == np.rint(top)) and np.all(row == np.rint(row)))
+    # By blocks, the first one short: most records are settled there, and a long one needs no second beside it.
+    edges = [0, 256, *range(_BLOCK, row.size, _BLOCK), row.size]
+    return all(bool(np.all(row[a:b] == np.rint(row[a:b]))) for a, b in pairwise(edges))
 
 
 def _set_to_rails(row: FloatArray, channel: Channel) -> list[str]:

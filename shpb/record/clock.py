@@ -104,15 +104,18 @@ def _stated_interval_s(
     if stated is None:
         return None
     if not (np.isfinite(stated) and stated > 0):
-        raise InputError(f"the file states a sample interval of {stated:g}", where=where, mend="Correct it")
+        raise InputError(
+            f"the file states a sample interval of {stated:g}",
+            where=where,
+            mend="Correct it in the file, or export the record again",
+        )
     if table.stated.interval_unit:
         return stated * scale_of(table.stated.interval_unit, SECONDS, where=where)
-    units = [
-        unit for unit in (table.stated.time_unit, time.unit if time else "", hints.time_unit or "") if unit
-    ]
+    named = (table.stated.time_unit, time.unit if time else "", hints.time_unit or "")
+    units = [unit for unit in named if plain_unit(unit) in SECONDS]
     guesses = [stated * SECONDS[plain_unit(unit)] for unit in ("s", *units)]
     checks = [hints.sample_interval_s] if hints.sample_interval_s else []
-    if time is not None and time.unit:
+    if time is not None and time.unit in SECONDS:
         span = float(time.values[-1] - time.values[0]) * SECONDS[time.unit]
         checks.insert(0, span / (time.values.size - 1))
     for check in checks:

@@ -184,7 +184,7 @@ def _require_one_choice(
     else:
         return
     raise InputError(
-        f"{what}, which one is the record is not clear: {_listed(series)}", where=where, mend=_MEND
+        f"{what}, and it is not clear which is the record: {_listed(series)}", where=where, mend=_MEND
     )
 
 
@@ -237,8 +237,9 @@ def _columns(array: NamedArray, label: str, names: list[str] | None) -> list[Raw
     own = facts_of(array)
     values = array.load()
     if array.fields:
-        parts = [values[name].reshape(-1) for name in array.fields]
-        names = list(array.fields)
+        # A table may have a column of text beside the numbers.
+        names = [name for name in array.fields if values.dtype[name].kind in "iufb"]
+        parts = [values[name].reshape(-1) for name in names]
     elif array.columns == 1:
         parts, names = [values.reshape(-1)], names or [array.name]
     else:

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import warnings
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
@@ -15,6 +18,7 @@ from shpb.rig.rig import RecordHints
 
 _ONE_ARRAY = b"\x93NUMPY"
 _ZIP = b"PK\x03\x04"
+_LAST_CHARACTER = 0x10FFFF  # of Unicode
 
 
 def recognises(head: bytes, path: Path) -> bool:  # noqa: ARG001
@@ -59,17 +63,38 @@ def read(path: Path, hints: RecordHints) -> RawTable:
 
 def _load(path: Path) -> dict[str, NDArray[Any]]:
     try:
-        loaded = np.load(path, allow_pickle=False)
+        with _quiet():
+            loaded = np.load(path, allow_pickle=False)
         if isinstance(loaded, np.ndarray):
             return {"": loaded}
-        with loaded:
-            return {name: loaded[name] for name in loaded.files}
+        with loaded, _quiet():
+            members = {name: loaded[name] for name in loaded.files}
+        # What is no array in the archive comes as its bytes.
+        return {
+            n: one for n, one in members.items() if isinstance(one, np.ndarray) and _is_text_or_numbers(one)
+        }
     except Exception as error:  # a damaged file makes numpy and zipfile raise almost any exception
         raise InputError(
             f"the file cannot be read: {error}",
             where=path.name,
             mend="Save plain arrays of numbers (no Python objects) again",
         ) from None
+
+
+@contextmanager
+def _quiet() -> Iterator[None]:
+    """No warnings of the parser about a damaged header: they become our error."""
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        yield
+
+
+def _is_text_or_numbers(array: NDArray[Any]) -> bool:
+    """False for text that holds what is no character: making a str of it raises, or worse."""
+    if array.dtype.kind != "U" or not array.size or not array.dtype.itemsize:
+        return True
+    codes = np.ascontiguousarray(array).view(np.dtype("u4").newbyteorder(array.dtype.byteorder))
+    return not bool(np.any((codes > _LAST_CHARACTER) | ((codes >= 0xD800) & (codes <= 0xDFFF))))
 
 
 def is_complete(path: Path) -> Completeness:
@@ -89,14 +114,19 @@ def is_complete(path: Path) -> Completeness:
 
 def _array_is_complete(file: Any, size: int) -> Completeness:
     try:
-        version = np.lib.format.read_magic(file)
-        header = {
-            (1, 0): np.lib.format.read_array_header_1_0,
-            (2, 0): np.lib.format.read_array_header_2_0,
-        }.get(version, np.lib.format.read_array_header_2_0)
-        shape, _, dtype = header(file)
+        with _quiet():
+            return _as_long_as_it_says(file, size)
     except Exception as error:  # a damaged header makes numpy's parser raise almost any exception
         return Completeness(False, f"its header cannot be read: {error}")
+
+
+def _as_long_as_it_says(file: Any, size: int) -> Completeness:
+    version = np.lib.format.read_magic(file)
+    header = {
+        (1, 0): np.lib.format.read_array_header_1_0,
+        (2, 0): np.lib.format.read_array_header_2_0,
+    }.get(version, np.lib.format.read_array_header_2_0)
+    shape, _, dtype = header(file)
     needed = file.tell() + dtype.itemsize * int(np.prod(shape, dtype=object))
     if size < needed:
         return Completeness(False, f"the file has {size} bytes, its header says {needed}")

@@ -8,8 +8,10 @@ from collections import Counter
 from collections.abc import Sequence
 from pathlib import Path
 
+import numpy as np
+
 from shpb.errors import IncompleteRecordError, InputError
-from shpb.record.channels import Channel, channels_of, in_volts, named_as_hinted
+from shpb.record.channels import Channel, channels_of, in_volts, named_as_hinted, storable
 from shpb.record.clock import Clock, read_clock
 from shpb.record.raw import Completeness
 from shpb.record.record import Record, Source
@@ -69,6 +71,12 @@ def read_record(
     files = [Path(paths)] if isinstance(paths, str | Path) else [Path(path) for path in paths]
     if not files:
         raise InputError("no file is given", where="record", mend="Give one file, or one for each channel")
+    # The numbers of a damaged file may be anything; what came of them is checked, so nothing need be said here.
+    with np.errstate(all="ignore"):
+        return _read_files(files, hints, reader)
+
+
+def _read_files(files: Sequence[Path], hints: RecordHints, reader: str | None) -> Record:
     sources, clocks, channels, remarks = [], [], [], []
     for path in files:
         source, clock, own, said = _read_one(path, hints, reader)
@@ -121,7 +129,9 @@ def _read_one(
         after = path.stat()
     except OSError as error:
         raise InputError(
-            f"the file cannot be read: {error.strerror or error}", where=str(path), mend="Check the file"
+            f"the file cannot be read: {error.strerror or error}",
+            where=str(path),
+            mend="Check the name, the permissions, and that the disk or share is there",
         ) from error
     if (before.st_size, before.st_mtime_ns) != (after.st_size, after.st_mtime_ns):
         raise IncompleteRecordError(
@@ -129,7 +139,7 @@ def _read_one(
         )
     clock, columns, clock_remarks = read_clock(table, hints, where=path.name)
     channels, channel_remarks = channels_of(table, columns, path.name)
-    source = Source(name=path.name, sha256=digest, size_bytes=after.st_size, reader=reader.name)
+    source = Source(name=storable(path.name), sha256=digest, size_bytes=after.st_size, reader=reader.name)
     return source, clock, channels, [*table.remarks, *clock_remarks, *channel_remarks]
 
 
@@ -182,6 +192,7 @@ def _named_after_files(channels: Sequence[Sequence[Channel]], files: Sequence[Pa
             if channel.named and count[channel.name] == 1:
                 joined.append(channel)
             else:
-                name = path.stem if len(own) == 1 else f"{path.stem} {channel.name}"
+                stem = storable(path.stem)
+                name = stem if len(own) == 1 else f"{stem} {channel.name}"
                 joined.append(channel._replace(name=name, named=False))
     return joined

@@ -68,7 +68,9 @@ def reader_for(path: Path, name: str | None = None) -> Reader:
         head = read_head(path)
     except OSError as error:
         raise InputError(
-            f"the file cannot be read: {error.strerror or error}", where=str(path), mend="Check the path"
+            f"the file cannot be read: {error.strerror or error}",
+            where=str(path),
+            mend="Check the name, the permissions, and that the disk or share is there",
         ) from None
     if name is not None:
         return _by_name(name, path)

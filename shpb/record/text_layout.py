@@ -150,7 +150,7 @@ def layout_of(path: Path) -> Layout:
     encoding = encoding_of(head)
     if not encoding:
         raise InputError(
-            "this is not text", where=path.name, mend="Give a text file, or name the reader for this format"
+            "this is not text", where=path.name, mend="Export the record as text, NPZ, HDF5, MATLAB or TDMS"
         )
     lines = head_lines(path, head, encoding)
     found = _dialect(lines)

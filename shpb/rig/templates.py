@@ -6,12 +6,13 @@ import textwrap
 from collections.abc import Sequence
 from pathlib import Path
 
-from shpb.errors import InputError
+from shpb.errors import InputError, StoreError
 from shpb.rig.columns import COLUMNS, RECORD_COLUMNS, Column
 from shpb.rig.docs import needed_text
 from shpb.rig.key import Key, Kind, OneOf, Table
 from shpb.rig.keys import RIG_FILE, SHEET_FILE
 from shpb.rig.session_keys import EXAMPLE_SHOTS, SESSION_FILE
+from shpb.whole_file import whole_file
 
 RIG_NAME, SHEET_NAME, LIST_NAME, SESSION_NAME = "rig.toml", "shot.toml", "shots.csv", "calibration.toml"
 _WIDTH = 100
@@ -105,10 +106,12 @@ def write_templates(folder: str | Path, *, overwrite: bool = False) -> tuple[Pat
         folder.mkdir(parents=True, exist_ok=True)
         for name, text in texts.items():
             # One byte for one byte on every system: the sheets are stored and compared as text.
-            (folder / name).write_text(text, encoding="utf-8", newline="\n")
-    except OSError as error:
+            with whole_file(folder / name) as part:
+                part.write_text(text, encoding="utf-8", newline="\n")
+    except (OSError, StoreError) as error:
+        cause = error.__cause__ if isinstance(error, StoreError) else error
         raise InputError(
-            f"the templates cannot be written: {error.strerror or error}",
+            f"the templates cannot be written: {getattr(cause, 'strerror', None) or error}",
             where=str(folder),
             mend="Choose a folder that you may write to",
         ) from None

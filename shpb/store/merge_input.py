@@ -26,7 +26,13 @@ def stored_curve(path: Path | str) -> StoredCurve:
     source = Path(path)
     stored = load(source)
     wave = _WAVE[stored.settings.analysis]
-    response = stored.attributes["response"]
+    response = stored.attributes.get("response")
+    if response is None:
+        raise StoreError(
+            "holds no group response: it is damaged",
+            where=str(source),
+            mend="Reduce the raw record again",
+        )
     time = stored["response/time"]
     span = None
     if "span_start_time" in response:

@@ -255,7 +255,9 @@ def _write_pulses(file: h5py.File, result: ShotResult) -> None:
                 group.attrs.update({name: foot.time_s, f"u_{name}": foot.u_time_s})
     if result.by_hand:
         parent["by_hand"] = json.dumps([to_plain(kept) for kept in result.by_hand])
-        parent["by_hand"].attrs["long_name"] = "Windows and feet moved by hand, times [s] on the record's clock"
+        parent["by_hand"].attrs["long_name"] = (
+            "Windows and feet moved by hand, times [s] on the record's clock"
+        )
 
 
 def _write_fields(

@@ -235,7 +235,9 @@ class _Modes:
         middle = min(max(nu, step), 0.49 - step)
         self._poisson = np.array([middle - step, middle, middle + step])
         self._stretch = np.array([-1.0, 0.0, 1.0]) * max(2 * spread[1], _LEAST_STEP)
-        self._attenuation: ComplexArray | None = None  # by one standard uncertainty, of a bar with a measured table
+        self._attenuation: ComplexArray | None = (
+            None  # by one standard uncertainty, of a bar with a measured table
+        )
         if dispersion is Dispersion.NONE:
             return
         if bar.propagation is not None:

@@ -64,12 +64,18 @@ class Worker:
             return
         self.stop()
         context = multiprocessing.get_context("spawn")
-        self._pipe, theirs = context.Pipe()
-        self._process = context.Process(
+        ours, theirs = context.Pipe()
+        process = context.Process(
             target=_serve, args=(theirs, self._work, self._prepare, self.limit_s), daemon=True
         )
-        self._process.start()
-        theirs.close()
+        try:
+            process.start()
+        except BaseException:
+            ours.close()
+            raise
+        finally:
+            theirs.close()
+        self._process, self._pipe = process, ours
 
     def ask(self, task: object) -> Any:
         """Hand a task to the child and wait for its reply.
@@ -79,7 +85,10 @@ class Worker:
         WorkerError
             If none comes; the child is gone then, and the next task starts another.
         """
-        self.start()
+        try:
+            self.start()
+        except OSError as error:  # no memory or no process left for another child
+            raise WorkerError(f"the child process does not start: {error.strerror or error}") from None
         assert self._pipe is not None
         try:
             self._pipe.send(task)

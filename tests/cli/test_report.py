@@ -317,7 +317,14 @@ def test_through_a_pipe_it_is_plain_and_loads_no_more_than_it_needs(campaign: Pa
 
 def test_who_moved_a_window_and_why_stands_in_the_page(lab: Path) -> None:
     shot = lab / "results" / "W-02.h5"
-    moved = ("--reflected-window", "370,520", "--by", "A. <b>Bird", "--why", "the tail of the pulse & a wobble")
+    moved = (
+        "--reflected-window",
+        "370,520",
+        "--by",
+        "A. <b>Bird",
+        "--why",
+        "the tail of the pulse & a wobble",
+    )
     assert run("adjust", shot, *moved, "--figure", "none") in (0, 3)
     assert run("report", shot) == 0
     text = require_sound(shot.with_suffix(".html").read_text(encoding="utf-8")).text

@@ -106,7 +106,7 @@ def test_an_archive_of_something_else(tmp_path: Path) -> None:
 
 def test_lengths_that_differ_and_no_time(tmp_path: Path) -> None:
     np.savez(tmp_path / "a.npz", a=A, b=B[:300], dt=INTERVAL_S)
-    message = "there are series of 2 lengths, which one is the record is not clear: a 500, b 300"
+    message = "there are series of 2 lengths, and it is not clear which is the record: a 500, b 300"
     with pytest.raises(InputError, match=re.escape(message)):
         read_record(tmp_path / "a.npz")
     assert read_record(tmp_path / "a.npz", RecordHints(channel_names=("b",))).samples == 300
@@ -175,7 +175,7 @@ def test_two_groups_of_the_same_names(tmp_path: Path) -> None:
         for group in ("shot1", "shot2"):
             file[f"{group}/in"], file[f"{group}/out"] = (A, B) if group == "shot2" else (B, A)
             file[group].attrs.update({"dt": INTERVAL_S, "t0": START_S})
-    message = "there are several arrays called 'in', which one is the record is not clear: shot1/in 500"
+    message = "there are several arrays called 'in', and it is not clear which is the record: shot1/in 500"
     with pytest.raises(InputError, match=re.escape(message)):
         read_record(path)
     names = ("shot2/in", "shot2/out")
