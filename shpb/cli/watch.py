@@ -14,6 +14,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, TextIO
 
 from shpb.cli.reduce import add_choices, choices_in
+from shpb.cli.status import BAD_INPUT, DONE, FAILED, REJECTED
 from shpb.errors import InputError
 
 if TYPE_CHECKING:
@@ -119,7 +120,8 @@ def run(options: argparse.Namespace) -> int:
             bench.watch_on()
     except KeyboardInterrupt:
         bench.say_ended()
-        return 0
+        # Who watches ends by Ctrl-C; with --once it cuts short what was asked for.
+        return FAILED if options.once else DONE
     finally:
         worker.stop()
         clear_left_over(results, journal.processes)
@@ -295,8 +297,6 @@ class _Bench:
 
     def status(self) -> int:
         """What --once ends with, after saying what is left."""
-        from shpb.cli.status import BAD_INPUT, DONE, FAILED, REJECTED
-
         waiting = self.watch.waiting
         for about, why, told in waiting:
             if not told:

@@ -207,6 +207,18 @@ def test_it_ends_in_order(lab: Lab, number: int) -> None:
 
 @POSIX
 @pytest.mark.slow
+def test_cut_short_a_single_pass_is_not_called_done(lab: Lab) -> None:
+    lab.shot("W-02")
+    with lab.watching("--once", ready=False) as process:
+        until((lab.results / "watch_journal.json").exists)
+        process.send_signal(signal.SIGINT)
+        _, err = process.communicate(timeout=20)
+    assert process.returncode == 1
+    assert "stopped; 0 shots stored" in " ".join(err.split())
+
+
+@POSIX
+@pytest.mark.slow
 def test_killed_at_any_moment_every_shot_is_whole_and_none_is_missed(lab: Lab) -> None:
     from tests.cli.kill_watch import kill_once, require_whole
 

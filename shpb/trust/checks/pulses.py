@@ -69,8 +69,8 @@ def window_start(evidence: Evidence) -> Answer | None:
         evidence.settings.limits.window_start + 4 * worst.u_level_at_start,
         beyond=Weight.REJECT,
         measured=f"the {worst.name} trace stands at {100 * level:.1f} % of its peak where its window begins",
-        action="Check gauge distances and wave speeds in the rig file; see the check of overlap; a window set by hand may "
-        "begin too late.",
+        action="Check gauge distances and wave speeds in the rig file, and the check of overlap; a window set by hand "
+        "may begin too late.",
     )
 
 

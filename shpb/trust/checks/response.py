@@ -71,8 +71,8 @@ def analyses_agree(evidence: Evidence) -> Answer | None:
         evidence.settings.limits.analyses,
         4 * evidence.settings.limits.analyses,
         measured=f"strain {one:.4f} by one wave, {three:.4f} by three",
-        action="Are the two bars unlike? Then switch equal_bars off in [settings]. If not: check force equilibrium, both "
-        "gauge factors, and the zero lines.",
+        action="Are the two bars unlike? Then switch equal_bars off in [settings]. If not: check force equilibrium, "
+        "both gauge factors, and the zero lines.",
     )
 
 
@@ -99,7 +99,7 @@ def work_balance(evidence: Evidence) -> Answer | None:
         evidence.settings.limits.work,
         show=lambda share: f"{100 * share:.3g} % apart",
         measured=f"{balance.work_j:.3g} J at the faces, {balance.specimen_work_j:.3g} J in the specimen",
-        action="The forces at the two faces do not fit: check force equilibrium, both gauge factors and the bar values.",
+        action="The forces at the faces do not fit: check force equilibrium, both gauge factors and the bar values.",
     )
 
 

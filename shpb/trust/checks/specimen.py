@@ -43,8 +43,8 @@ def slenderness(evidence: Evidence) -> Answer | None:
         weight=Weight.FINE if inside else Weight.NOTE,
         measured=f"length by diameter {ratio:.2f}",
         limit=f"{limits.least_slenderness:g} to {limits.greatest_slenderness:g}",
-        action="Machine the next specimens nearer to half as long as wide: in thin ones friction and inertia add to the "
-        "stress, long ones reach equilibrium late and may buckle.",
+        action="Machine the next specimens nearer to half as long as wide: in thin ones friction and inertia add to "
+        "the stress, long ones reach equilibrium late and may buckle.",
     )
 
 
