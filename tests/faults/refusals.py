@@ -18,6 +18,7 @@ import shutil
 import sys
 import tempfile
 import time
+import tomllib
 from collections import Counter
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
@@ -157,12 +158,79 @@ def of_forms(place: Path) -> Case:
     return Case(["forms", str(place / "results")], place / "results", place / "before")
 
 
+def _reduced(place: Path) -> tuple[Path, Path]:
+    """Stored results of two shots, and their rig file."""
+    records, stored = prepare(place / "lab"), place / "stored"
+    quiet = ["--results", str(stored), "--figure", "none", "--workers", "1"]
+    assert _quiet_main(["reduce", str(records), *quiet])[0] == 0
+    return stored, place / "lab" / "calibration" / "bench_1.toml"
+
+
+def of_report(place: Path) -> Case:
+    """Pages of two shots and their campaign, over pages of before."""
+    stored, _ = _reduced(place)
+    results, before = place / "results", place / "before"
+    before.mkdir()
+    return Case(["report", str(stored), "--into", str(results), "--workers", "1"], results, before)
+
+
+def of_export(place: Path) -> Case:
+    """Curves of two shots."""
+    stored, _ = _reduced(place)
+    (place / "before").mkdir()
+    return Case(
+        ["export", str(stored), "--into", str(place / "results")], place / "results", place / "before"
+    )
+
+
+def of_calibrate(place: Path) -> Case:
+    """A session whose calibration gets a name beside an earlier one."""
+    from shpb.demo import write_calibration_demo
+
+    write_calibration_demo(place / "lab")
+    session = place / "lab" / "session_bench_3_2031-03-19.toml"
+    results, before = place / "results", place / "before"
+    before.mkdir()
+    return Case(["calibrate", str(session), "--into", str(results), "--figure", "svg"], results, before)
+
+
+def of_recalibrate(place: Path) -> Case:
+    """Two shots by another calibration."""
+    from shpb.quantity import Quantity
+    from shpb.rig.calibration import Calibration, GaugeCalibration, stated_of
+    from shpb.rig.calibration_file import write_calibration
+    from shpb.rig.rig_file import read_rig
+
+    stored, rig_file = _reduced(place)
+    rig = read_rig(rig_file)
+    gauge = GaugeCalibration(gauge_factor=Quantity(3.41, 0.01), as_stated=stated_of(rig.transmitted_gauge))
+    calibration = Calibration(
+        name="new", rig=rig.name, date="2031-02-01", holds_days=365, gauges={"transmitted_gauge": gauge}
+    )
+    file = write_calibration(calibration, place / "lab" / "new.toml")
+    results, before = place / "results", place / "before"
+    before.mkdir()
+    again = ["recalibrate", str(stored), "--calibration", str(file), "--into", str(results)]
+    return Case([*again, "--workers", "1", "--figure", "none", "--csv"], results, before)
+
+
+def of_demo(place: Path) -> Case:
+    """A demo campaign, written only."""
+    (place / "before").mkdir()
+    return Case(["demo", str(place / "results"), "--write-only"], place / "results", place / "before")
+
+
 CASES: dict[str, Callable[[Path], Case]] = {
     "reduce": of_reduce,
     "reduce-figure": lambda place: of_reduce(place, "png"),
     "merge": of_merge,
     "watch": of_watch,
     "forms": of_forms,
+    "report": of_report,
+    "export": of_export,
+    "calibrate": of_calibrate,
+    "recalibrate": of_recalibrate,
+    "demo": of_demo,
 }
 
 
@@ -234,7 +302,16 @@ def whole(case: Case, expected: set[str], status: int, said: str) -> list[str]:
                     assert load(path)["response/stress_3w"].size
             except (ShpbError, AssertionError) as error:
                 found.append(f"{name}: {error!r}")
-        elif path.suffix == ".csv" and not path.read_bytes().endswith(b"\n"):
+        elif path.suffix in (".html", ".svg") and not path.read_bytes().rstrip().endswith(
+            (b"</html>", b"</svg>")
+        ):
+            found.append(f"{name} is cut short")
+        elif path.suffix == ".toml":
+            try:
+                tomllib.loads(path.read_text(encoding="utf-8"))
+            except (ValueError, UnicodeError) as error:
+                found.append(f"{name}: {error!r}")
+        elif path.suffix == ".csv" and case.arguments[0] != "demo" and not path.read_bytes().endswith(b"\n"):
             found.append(f"{name} is cut short")
     if status in (0, 3) and not expected <= there:
         found.append(f"status {status} though {sorted(expected - there)} are missing")
