@@ -7,46 +7,33 @@ from __future__ import annotations
 
 import argparse
 import contextlib
+import importlib
 import os
 import sys
 from collections.abc import Sequence
 
-from shpb.cli import (
-    adjust,
-    calibrate,
-    completion,
-    demo,
-    export,
-    forms,
-    help_topics,
-    merge,
-    recalibrate,
-    record,
-    reduce,
-    report,
-    show,
-    watch,
-)
 from shpb.cli.status import BAD_INPUT, FAILED
 from shpb.errors import InputError, ShpbError
 from shpb.version import VERSION
 
-_VERBS = (
-    reduce,
-    adjust,
-    watch,
-    show,
-    merge,
-    report,
-    export,
-    calibrate,
-    recalibrate,
-    record,
-    forms,
-    demo,
-    help_topics,
-    completion,
-)
+# By their names on the command line, in the order of --help. Only the module that is needed is imported: all of them
+# together cost as much as numpy.
+_MODULES = {
+    "reduce": "reduce",
+    "adjust": "adjust",
+    "watch": "watch",
+    "show": "show",
+    "merge": "merge",
+    "report": "report",
+    "export": "export",
+    "calibrate": "calibrate",
+    "recalibrate": "recalibrate",
+    "record": "record",
+    "forms": "forms",
+    "demo": "demo",
+    "help": "help_topics",
+    "completion": "completion",
+}
 
 _EPILOG = """\
 A verdict speaks about data, never about safety: do not go near the rig because
@@ -56,8 +43,8 @@ exit status: 0 done, 1 failed, 2 bad input or usage, 3 done, a shot is rejected
 """
 
 
-def parser() -> argparse.ArgumentParser:
-    """Return the parser of the whole command line."""
+def parser(verb: str = "") -> argparse.ArgumentParser:
+    """Return the parser of the whole command line, or with one verb alone where ``verb`` names one."""
     top = argparse.ArgumentParser(
         prog="shpb",
         description="Reduce split Hopkinson pressure bar shots: from voltage records to stress,\n"
@@ -67,16 +54,17 @@ def parser() -> argparse.ArgumentParser:
     )
     top.add_argument("--version", action="version", version=f"shpb {VERSION}")
     verbs = top.add_subparsers(title="verbs", metavar="VERB", required=True)
-    for module in _VERBS:
-        verb = verbs.add_parser(
-            module.NAME,
+    for name in [verb] if verb in _MODULES else _MODULES:
+        module = importlib.import_module(f"shpb.cli.{_MODULES[name]}")
+        added = verbs.add_parser(
+            name,
             help=module.HELP,
             description=module.DESCRIPTION,
             epilog=module.EXAMPLE,
             formatter_class=argparse.RawDescriptionHelpFormatter,
         )
-        module.add_arguments(verb)
-        verb.set_defaults(run=module.run, json=False)
+        module.add_arguments(added)
+        added.set_defaults(run=module.run, json=False)
     return top
 
 
@@ -84,7 +72,7 @@ def verb_parsers() -> dict[str, tuple[str, argparse.ArgumentParser]]:
     """What each verb does in a line, and its parser, by its name."""
     top = parser()
     held = next(one for one in top._actions if isinstance(one, argparse._SubParsersAction))
-    return {module.NAME: (module.HELP, held.choices[module.NAME]) for module in _VERBS}
+    return {one.dest: (one.help or "", held.choices[one.dest]) for one in held._choices_actions}
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -93,7 +81,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
         # A console of few characters must not stop the program over a name it cannot show.
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace")
-    options = parser().parse_args(arguments)
+    arguments = sys.argv[1:] if arguments is None else arguments
+    options = parser(arguments[0] if arguments else "").parse_args(arguments)
     try:
         return int(options.run(options))
     except ShpbError as error:
