@@ -286,10 +286,12 @@ class AdjustWindow:
             return
         # Off the axes the mouse still means the time below it.
         axes = self._panels.incident
+        # A motion that comes while one waits takes its place: to wait anew each time would never end with a fast mouse.
+        waits = self._pointed_s is not None
         self._pointed_s = float(axes.transData.inverted().transform((event.x, event.y))[0]) / _US
         if self._follow_timer is None:
             self.follow()
-        else:
+        elif not waits:
             self._follow_timer.start()
 
     def follow(self) -> None:
