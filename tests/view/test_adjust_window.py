@@ -120,6 +120,31 @@ def test_an_edge_goes_where_the_mouse_takes_it(bench: Bench) -> None:
     assert bench.desk.changed
 
 
+def test_a_fast_mouse_does_not_hold_the_curves_back(bench: Bench) -> None:
+    """Motions are gathered until the timer calls; one that comes meanwhile must not make it wait anew."""
+
+    class Clock:
+        starts = 0
+
+        def start(self) -> None:
+            self.starts += 1
+
+        def stop(self) -> None:
+            """Nothing runs."""
+
+    clock = Clock()
+    bench.window._follow_timer = clock  # type: ignore[assignment]
+    start = bench.at(END)
+    bench.mouse("button_press_event", bench.pixel(start, 0.4), button=1)
+    for step in range(1, 6):
+        bench.mouse("motion_notify_event", bench.pixel(start - step * 1e-5, 0.4))
+    assert clock.starts == 1
+    bench.window.follow()  # as the timer does
+    assert abs(bench.at(END) - (start - 5e-5)) < bench.pixel_s + bench.sample_s
+    bench.mouse("motion_notify_event", bench.pixel(start - 6e-5, 0.4))
+    assert clock.starts == 2
+
+
 def test_curves_follow_while_the_mouse_is_down(bench: Bench) -> None:
     def shown() -> np.ndarray[Any, Any]:
         lines = [line for axes in bench.figure.axes[2:] for line in axes.lines]
