@@ -11,6 +11,7 @@ from shpb.calibrate.sensitivity.reconcile import SourceLine
 from shpb.quantity import Quantity
 from shpb.rig.rig import Rig
 from shpb.version import VERSION
+from shpb.view.calibrated_pulses import pulses_json, pulses_text
 from shpb.view.digits import to_uncertainty, uncertainty
 from shpb.view.summary import SCHEMA_VERSION, Json, calibration_json
 from shpb.view.text import padded, printable, wrapped
@@ -110,6 +111,9 @@ def calibrated_text(done: Calibrated, width: int = 80) -> str:
         lines += ["", *_propagation(done, width)]
     if done.sensitivities is not None:
         lines += ["", *_sources(done, width)]
+    pulses = pulses_text(done, width)
+    if pulses:
+        lines += ["", *pulses]
     if done.bending.pulses:
         lines += ["", *_bending(done, width)]
     lines += ["", *_findings(done, width)]
@@ -282,6 +286,7 @@ def calibrated_json(done: Calibrated, file: str, figure: str) -> Json:
             _source_json(one) for one in (sensitivities.sources if sensitivities is not None else ())
         ],
         "sensitivities": {name: {"q": float(q), "u": q.u} for name, q in q_by_station.items()},
+        **pulses_json(done),
         "wave_speed_by_arrivals": [
             {
                 "shot_id": one.shot_id,

@@ -77,13 +77,31 @@ def test_the_text_keeps_its_width(steel: Calibrated, acrylic: Calibrated, width:
 
 def test_every_source_has_a_line_below_its_station(steel: Calibrated) -> None:
     text = calibrated_text(steel)
-    part = text[text.index("incident gauge  ", text.index("SENSITIVITY")) : text.index("LOOK AT")]
+    part = text[text.index("incident gauge  ", text.index("SENSITIVITY")) : text.index("PULSES AND LINES")]
     assert steel.sensitivities is not None
     assert part.count("shunt SH-") == 4
     assert part.count("striker line") == 2
     assert len([line for line in part.splitlines() if line.startswith("  ")]) == len(
         steel.sensitivities.sources
     )
+
+
+def test_lines_contacts_and_free_ends_are_told(steel: Calibrated) -> None:
+    text = on_one_line(calibrated_text(steel))
+    assert "striker line of the incident gauge: 7 shots; intercept" in text
+    assert "transmitted gauge laid on the incident gauge: 5 times" in text
+    assert "contact of the bars sends back" in text
+    assert "shunts of the transmitted gauge: 2, excitation and gain" in text
+    data = json.loads(json_text(calibrated_json(steel, "a.toml", "")))
+    assert len(data["contacts"]) == 5
+    # Bars of nearly one impedance: 0.06 % apart in wave speed, 0.03 % in diameter.
+    assert all(abs(one["reflected_share"]) < 2e-3 for one in data["contacts"])
+    # A free end turns the sign and keeps the size, but for the planted losses.
+    assert all(one["ratio"] == pytest.approx(-1, abs=4e-3) for one in data["free_ends"])
+    line = next(one for one in data["striker_lines"] if one["station"] == "incident_gauge")
+    assert line["q"] == pytest.approx(line["q_by_momentum"], rel=5e-3)
+    assert [one["shot_id"] for one in line["points"]][-1] == "BT-5"
+    assert [len(one["points"]) for one in data["shunts"]] == [2, 2]
 
 
 def test_what_several_shots_show_alike_is_said_once(steel: Calibrated) -> None:
