@@ -20,7 +20,6 @@ if TYPE_CHECKING:
     from shpb.reduction import ShotResult
     from shpb.settings import Settings
 
-NAME = "adjust"
 HELP = "move the windows and feet of one shot by hand"
 DESCRIPTION = """\
 Move pulse windows and feet of one shot by hand and see what follows. SHOT is a

@@ -12,7 +12,6 @@ from shpb.errors import InputError
 if TYPE_CHECKING:
     from shpb.calibrate.calibration import Calibrated
 
-NAME = "calibrate"
 HELP = "turn calibration shots into dated values of the rig"
 DESCRIPTION = """\
 Turn the calibration shots of one day into wave speeds, gauge positions and

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import argparse
 
-NAME = "completion"
 HELP = "print a script that completes commands in your shell"
 DESCRIPTION = """\
 Print a script for a shell, made from this version's verbs and options. It

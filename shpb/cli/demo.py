@@ -6,7 +6,6 @@ import argparse
 from collections.abc import Sequence
 from pathlib import Path
 
-NAME = "demo"
 HELP = "write a demo campaign of an invented lab and reduce it"
 DESCRIPTION = """\
 Write a complete working folder of an invented lab (rig files, records in

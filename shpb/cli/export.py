@@ -15,7 +15,6 @@ if TYPE_CHECKING:
     from shpb.store.export_flow import Asked, FlowTable
     from shpb.store.merge_read import StoredMerge
 
-NAME = "export"
 HELP = "write curves, merged tables and flow-curve tables as CSV"
 DESCRIPTION = """\
 Write stored results as CSV, units in the column names. A shot (.h5) gives its

@@ -6,7 +6,6 @@ import argparse
 from collections.abc import Sequence
 from pathlib import Path
 
-NAME = "forms"
 HELP = "write rig file, shot sheet, shot list and calibration session to fill in"
 DESCRIPTION = """\
 Write a commented rig file, shot sheet, shot list and calibration session into

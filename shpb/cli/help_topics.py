@@ -8,7 +8,6 @@ import sys
 
 from shpb.errors import InputError
 
-NAME = "help"
 HELP = "help on a topic: rig file, shot sheet, checks, methods, ..."
 DESCRIPTION = """\
 Show help on a topic (rig-file, shot-sheet, shot-list, calibration, checks,

@@ -17,7 +17,6 @@ if TYPE_CHECKING:
     from shpb.merge.settings import MergeSettings
     from shpb.store.merge_read import ChangedFile
 
-NAME = "merge"
 HELP = "merge shots with quasi-static curves: table, sensitivities, laws"
 DESCRIPTION = """\
 Merge the shots of a campaign with its quasi-static curves: means of repeats,

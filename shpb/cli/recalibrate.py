@@ -16,7 +16,6 @@ if TYPE_CHECKING:
     from shpb.rig.calibration import Calibration
     from shpb.view.recalibrated import Compared
 
-NAME = "recalibrate"
 HELP = "reduce stored shots again with another calibration"
 DESCRIPTION = """\
 Reduce stored shots again with another calibration: record, shot sheet and

@@ -5,7 +5,6 @@ from __future__ import annotations
 import argparse
 from pathlib import Path
 
-NAME = "record"
 HELP = "say what a record file holds: channels, interval, remarks"
 DESCRIPTION = """\
 Read a record (delimited text, NPZ, NPY, HDF5, MATLAB or TDMS; one file, or

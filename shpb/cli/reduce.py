@@ -20,7 +20,6 @@ if TYPE_CHECKING:
     from shpb.reduction import ShotResult
     from shpb.view.listing import ListRow
 
-NAME = "reduce"
 HELP = "reduce shots: verdict, curves, HDF5 file and figure"
 DESCRIPTION = """\
 Reduce shots: voltages to stress, strain and strain rate, with a check of

@@ -16,7 +16,6 @@ if TYPE_CHECKING:
     from shpb.store.shot_brief import ShotBrief
     from shpb.view.report.campaign_rows import CampaignRow
 
-NAME = "report"
 HELP = "write reports of shots and of a campaign as single HTML files"
 DESCRIPTION = """\
 Write reports to hand over or print: one HTML file for each shot, with its

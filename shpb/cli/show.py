@@ -17,7 +17,6 @@ if TYPE_CHECKING:
     from shpb.view.listing import ListRow
     from shpb.view.report.stored import ReportedShot
 
-NAME = "show"
 HELP = "show stored shots or a merge; compare several shots on one page"
 DESCRIPTION = """\
 Show what is stored, without writing results. One shot (.h5): the text that

@@ -22,7 +22,6 @@ if TYPE_CHECKING:
     from shpb.watch.events import Event, SheetWanted, ShotRefused, ShotShown
     from shpb.watch.loop import Watch
 
-NAME = "watch"
 HELP = "watch a folder: reduce and show each shot as its record lands"
 DESCRIPTION = """\
 Watch the folder that the scope writes into. Each record is picked up once it
