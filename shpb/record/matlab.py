@@ -10,6 +10,7 @@ import numpy as np
 
 from shpb.errors import IncompleteRecordError, InputError
 from shpb.record import hdf5
+from shpb.record.matlab_structure import DamagedError, require_sound
 from shpb.record.named_arrays import NamedArray, table_of
 from shpb.record.raw import Completeness, RawTable, Reader
 from shpb.rig.rig import RecordHints
@@ -32,8 +33,8 @@ def recognises_5(head: bytes, path: Path) -> bool:  # noqa: ARG001
 def read_5(path: Path, hints: RecordHints) -> RawTable:
     """Read the variables, those within structures too, and choose the record among them.
 
-    A damaged file can crash scipy's reader: whoever reads foreign files unattended does so in a process of
-    its own.
+    A damaged file can crash scipy's reader, so its structure is walked first; whoever reads foreign files unattended
+    does so in a process of its own all the same.
 
     Raises
     ------
@@ -47,6 +48,12 @@ def read_5(path: Path, hints: RecordHints) -> RawTable:
         raise IncompleteRecordError(
             whole.reason, where=path.name, mend="Wait until it is written, or copy it again"
         )
+    try:
+        require_sound(path)
+    except DamagedError as damage:
+        raise InputError(
+            f"the file is damaged: {damage}", where=path.name, mend="Save the record again"
+        ) from None
     from scipy.io import loadmat
 
     try:
