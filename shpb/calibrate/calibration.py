@@ -17,7 +17,7 @@ from shpb.calibrate.bars.arrival_speed import ArrivalSpeed, arrival_wave_speed
 from shpb.calibrate.bars.bar_constants import BarConstants, bar_constants
 from shpb.calibrate.determination import CalibrationFinding, Determination
 from shpb.calibrate.in_words import methods_of, remarks_of
-from shpb.calibrate.joined import SIDES, bars_of, correlations_of, gauges_of, joined
+from shpb.calibrate.joined import bars_of, correlations_of, gauges_of, joined
 from shpb.calibrate.propagation.complex_propagation import MeasuredPropagation, complex_propagation
 from shpb.calibrate.sensitivity.bending import BendingRatios, bending
 from shpb.calibrate.sensitivity.reconcile import Reconciled, reconcile
@@ -30,7 +30,7 @@ from shpb.errors import InputError
 from shpb.rig.bar import one_stock
 from shpb.rig.calibration import Calibration, CalibrationRecord
 from shpb.rig.propagation_table import PropagationTable
-from shpb.rig.rig import Rig
+from shpb.rig.rig import SIDES, Rig
 from shpb.settings import DEFAULT, Settings
 from shpb.version import VERSION
 

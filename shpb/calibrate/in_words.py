@@ -13,9 +13,7 @@ from shpb.calibrate.sensitivity.shunt import ShuntChecks
 from shpb.calibrate.sensitivity.striker_line import StrikerLines
 from shpb.calibrate.session import FiredShot, ShotKind
 from shpb.rig.propagation_table import PropagationTable
-from shpb.rig.rig import Rig, budget_name
-
-_SIDES = ("incident", "transmitted")
+from shpb.rig.rig import SIDES, Rig, budget_name
 
 
 def methods_of(
@@ -66,7 +64,7 @@ def _by_arrivals(fired: Sequence[FiredShot], arrivals: Sequence[ArrivalSpeed]) -
     """Wave speeds as one would read them off the trace, for comparison."""
     bar_of = {one.shot_id: one.shot.bar for one in fired}
     said = []
-    for side in _SIDES:
+    for side in SIDES:
         mine = [one for one in arrivals if bar_of[one.shot_id] == side]
         feet = [one.by_foot_m_s for one in mine if one.by_foot_m_s is not None]
         if mine:
@@ -89,7 +87,7 @@ def _not_measured(
 ) -> list[str]:
     said = []
     names = {name for one in (constants.determinations if constants else ()) for name in one.names}
-    for side in _SIDES:
+    for side in SIDES:
         if side not in tables and f"{side} bar: wave speed" not in names:
             said.append(
                 f"{side} bar: wave speed not measured; strike this bar alone, free at its other end (bars-apart)"

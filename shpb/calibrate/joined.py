@@ -13,9 +13,8 @@ from shpb.quantity import Quantity
 from shpb.rig.calibration import BarCalibration, GaugeCalibration, stated_of, stated_of_bar
 from shpb.rig.correlations import NAMES, Correlation
 from shpb.rig.propagation_table import PropagationTable
-from shpb.rig.rig import Rig, budget_name
+from shpb.rig.rig import SIDES, Rig, budget_name
 
-SIDES = ("incident", "transmitted")
 _SPEED, _POISSON = "wave speed", "Poisson's ratio"
 _LEAST = 0.001  # a correlation coefficient below this changes no budget
 

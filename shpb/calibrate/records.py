@@ -1,4 +1,4 @@
-"""The records of a calibration session, each read once and each the record of one shot."""
+"""The records of a calibration session, each read once."""
 
 from __future__ import annotations
 
@@ -6,7 +6,6 @@ import dataclasses
 from collections.abc import Iterator
 
 from shpb.calibrate.session import FiredShot, Session
-from shpb.calibrate.struck import require_own_records
 from shpb.errors import InputError
 from shpb.record.read import read_record
 from shpb.rig.rig import RecordHints, Rig
@@ -30,7 +29,7 @@ def fired_shots(session: Session, rig: Rig) -> Iterator[FiredShot]:
     Raises
     ------
     InputError
-        If a record cannot be read, or is that of an earlier shot byte for byte; the message names the shot.
+        If a record cannot be read; the message names the shot.
     """
     stated = {
         field.name: value
@@ -38,7 +37,6 @@ def fired_shots(session: Session, rig: Rig) -> Iterator[FiredShot]:
         if (value := getattr(session.hints, field.name)) is not None
     }
     hints = dataclasses.replace(rig.record, **stated)
-    read: list[FiredShot] = []
     for shot in session.shots:
         try:
             record = read_record(shot.record_files, hints)
@@ -46,6 +44,4 @@ def fired_shots(session: Session, rig: Rig) -> Iterator[FiredShot]:
             # The kind of error matters to nobody here; which of a dozen shots it is does.
             where = f"shot {shot.shot_id}: {error.where}" if error.where else f"shot {shot.shot_id}"
             raise InputError(error.what, where=where, mend=error.mend) from error
-        read.append(FiredShot(shot=shot, record=record))
-        require_own_records(read)
-        yield read[-1]
+        yield FiredShot(shot=shot, record=record)

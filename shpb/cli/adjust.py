@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from shpb.cli.usage import FIGURES
 from shpb.errors import InputError, ShpbError
 
 if TYPE_CHECKING:
@@ -39,7 +40,6 @@ times in microseconds on the record's clock; automatic gives one back
 exit status: 0 done, 1 failed, 2 bad input or usage, 3 done, the shot is rejected
 """
 
-_FIGURES = ("png", "pdf", "svg", "none")
 _PULSES = ("incident", "reflected", "transmitted")
 _AUTOMATIC = "automatic"
 _US = 1e-6
@@ -77,7 +77,7 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
     )
     kept.add_argument(
         "--figure",
-        choices=_FIGURES,
+        choices=FIGURES,
         help="figure to draw (default: those that stand beside the result, else png)",
     )
     verb.add_argument("--json", action="store_true", help="print JSON for other programs")
@@ -261,11 +261,10 @@ def _content(
     shot_id: str, before: _Stands, after: _Stands, moves: Sequence[Move], files: Sequence[Path]
 ) -> dict[str, Any]:
     from shpb.view.by_hand_words import moves_json
-    from shpb.view.summary import SCHEMA_VERSION
+    from shpb.view.summary import head
 
     return {
-        "schema": "shpb adjust",
-        "schema_version": SCHEMA_VERSION,
+        **head("shpb adjust"),
         "shot_id": shot_id,
         "before": {"verdict": before.verdict, "verdict_in_words": before.words},
         "after": {"verdict": after.verdict, "verdict_in_words": after.words},

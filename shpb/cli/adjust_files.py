@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from shpb.cli.say import say
+from shpb.cli.usage import require_folder
 from shpb.errors import InputError, ShpbError, StoreError
 
 if TYPE_CHECKING:
@@ -90,8 +91,7 @@ def _of_sheet(path: Path, rig_file: Path | None, results: Path | None) -> Opened
         )
     task = tasks[0]
     folder = results or (path if path.is_dir() else path.parent) / "results"
-    if folder.exists() and not folder.is_dir():
-        raise InputError("this is a file", where=str(folder), mend="Give a folder for --results")
+    require_folder(folder, "--results")
     target = folder / f"{file_stem(task.sheet.shot_id)}.h5"
     require_free(task, target, [] if target.exists() else [target.with_suffix(f".{kind}") for kind in _KINDS])
     record = read_record(task.sheet.record_files, hints_for(task.rig, task.sheet))

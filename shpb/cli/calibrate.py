@@ -7,6 +7,7 @@ import dataclasses
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from shpb.cli.usage import FIGURES, require_folder
 from shpb.errors import InputError
 
 if TYPE_CHECKING:
@@ -16,9 +17,9 @@ HELP = "turn calibration shots into dated values of the rig"
 DESCRIPTION = """\
 Turn the calibration shots of one day into wave speeds, gauge positions and
 sensitivities with uncertainties: a dated calibration file beside the rig file,
-never over an earlier one. The rig file itself is not touched: the line that puts
-the calibration in force is printed. With --trend, show every value of a rig over
-all its calibrations."""
+never over an earlier one. The rig file itself is not touched: the line that
+puts the calibration in force is printed. With --trend, show every value of a
+rig over all its calibrations."""
 EXAMPLE = """\
 examples:
   shpb calibrate session.toml
@@ -31,8 +32,6 @@ exit status: 0 done, 1 failed, 2 bad input or usage, 3 done, but a finding must
 be understood before the calibration is put in force
 """
 
-_FIGURES = ("png", "pdf", "svg", "none")
-
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
     """Declare the arguments."""
@@ -43,7 +42,7 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
         metavar="FOLDER",
         help="where the calibration goes (default: beside the rig file)",
     )
-    verb.add_argument("--figure", choices=_FIGURES, default="png", help="kind of figure (default png)")
+    verb.add_argument("--figure", choices=FIGURES, default="png", help="kind of figure (default png)")
     verb.add_argument(
         "--trend",
         type=Path,
@@ -88,7 +87,7 @@ def _calibrate(options: argparse.Namespace) -> int:
     rig = read_rig(session.rig_file, as_stated=True)
     session = session_on_rig(session, rig)
     folder = session.rig_file.parent if options.into is None else options.into
-    _require_folder(folder)
+    require_folder(folder, "--into")
     stem = session.name or f"{session.rig_file.stem}_{session.date[:10]}"
     fired = []
     # The fits take about as long as reading all records.
@@ -108,11 +107,6 @@ def _calibrate(options: argparse.Namespace) -> int:
         if figure is not None:
             print(f"Figure: {figure}")
     return REJECTED if done.grave else DONE
-
-
-def _require_folder(folder: Path) -> None:
-    if folder.exists() and not folder.is_dir():
-        raise InputError("this is a file", where=str(folder), mend="Give a folder for --into")
 
 
 def _store(done: Calibrated, folder: Path, stem: str, kind: str) -> tuple[Calibrated, Path, Path | None]:
@@ -147,7 +141,7 @@ def _trend(options: argparse.Namespace) -> int:
         from shpb.view.calibration_trend_page import save_trend_figure
 
         folder = options.into or options.trend
-        _require_folder(folder)
+        require_folder(folder, "--into")
         folder.mkdir(parents=True, exist_ok=True)
         figure = save_trend_figure(rig, trends, folder / f"history_{file_stem(rig)}.{options.figure}")
     if options.json:

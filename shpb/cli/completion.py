@@ -37,10 +37,9 @@ def run(options: argparse.Namespace) -> int:
 
     text = script(options.shell, described(verb_parsers()))
     if options.json:
-        from shpb.version import VERSION
-        from shpb.view.summary import SCHEMA_VERSION, json_text
+        from shpb.view.summary import head, json_text
 
-        said = {"schema": "shpb completion", "schema_version": SCHEMA_VERSION, "program_version": VERSION}
+        said = head("shpb completion")
         print(json_text(said | {"shell": options.shell, "script": text}))
     else:
         print(text)

@@ -106,8 +106,7 @@ def _say_stage(words: str) -> None:
 
 
 def _print_json(folder: Path, what: str, files: Sequence[Path]) -> None:
-    from shpb.version import VERSION
-    from shpb.view.summary import SCHEMA_VERSION, json_text
+    from shpb.view.summary import head, json_text
 
-    said = {"schema": "shpb demo", "schema_version": SCHEMA_VERSION, "program_version": VERSION}
+    said = head("shpb demo")
     print(json_text(said | {"folder": str(folder), what: [str(path) for path in files]}))

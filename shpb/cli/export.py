@@ -9,6 +9,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from shpb.cli.usage import LACKING, require_folder
 from shpb.errors import InputError, StoreError
 
 if TYPE_CHECKING:
@@ -32,8 +33,6 @@ examples:
 
 exit status: 0 done, 1 failed, 2 bad input or usage
 """
-
-_LACKING = (KeyError, IndexError, ValueError, TypeError, AttributeError, OverflowError)
 
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
@@ -72,8 +71,7 @@ def run(options: argparse.Namespace) -> int:
     from shpb.cli.say import say
     from shpb.cli.status import BAD_INPUT, DONE, FAILED
 
-    if options.into.exists() and not options.into.is_dir():
-        raise InputError("this is a file", where=str(options.into), mend="Give a folder for --into")
+    require_folder(options.into, "--into")
     asked = _asked(options)
     found = find_results(options.sources)
     if not found.merges:
@@ -187,7 +185,7 @@ class _Exports:
             work()
         except (InputError, StoreError) as error:
             self.errors.append(error)
-        except _LACKING as error:
+        except LACKING as error:
             what = f"something in it is missing or wrong ({type(error).__name__}: {error})"
             mend = "Reduce the raw record again, or merge again"
             self.errors.append(StoreError(what, where=str(path), mend=mend))
@@ -262,16 +260,13 @@ def _print_text(work: _Exports) -> None:
 
 
 def _print_json(work: _Exports) -> None:
-    from shpb.version import VERSION
-    from shpb.view.summary import SCHEMA_VERSION, error_json, json_text
+    from shpb.view.summary import error_json, head, json_text
 
     def paths(which: bool) -> Sequence[str]:
         return [str(path) for path, written in work.files if written is which]
 
     said = {
-        "schema": "shpb export",
-        "schema_version": SCHEMA_VERSION,
-        "program_version": VERSION,
+        **head("shpb export"),
         "files_written": paths(True),
         "files_up_to_date": paths(False),
         "not_exported": [error_json(error) for error in work.errors],

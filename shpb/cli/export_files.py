@@ -6,9 +6,9 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
+from shpb.cli.usage import RESULTS, result_files
 from shpb.errors import InputError
 
-_ENDINGS = (".h5", ".hdf5")
 _PLACES = ("", "results", "merged")  # of a campaign's folder
 
 
@@ -37,13 +37,14 @@ def find_results(sources: Sequence[Path]) -> Results:
     for source in sources:
         if not source.exists():
             raise InputError("there is no such file or folder", where=str(source), mend="Check the name")
-        inside = _in_folder(source) if source.is_dir() else [source]
+        folders = [source / place for place in _PLACES] if source.is_dir() else []
+        inside = [path for folder in folders for path in result_files(folder)] if folders else [source]
         kept = 0
         for path in inside:
             held = peek(path).holds
             if held is Holds.OTHER and source.is_dir():
                 continue
-            if held is Holds.OTHER or (held is Holds.DAMAGED and path.suffix.lower() not in _ENDINGS):
+            if held is Holds.OTHER or (held is Holds.DAMAGED and path.suffix.lower() not in RESULTS):
                 raise InputError(
                     "is not a result of this program",
                     where=str(path),
@@ -58,24 +59,3 @@ def find_results(sources: Sequence[Path]) -> Results:
                 mend="Reduce the shots first (`shpb reduce`), or name their folder",
             )
     return Results(tuple(shots.values()), tuple(merges.values()))
-
-
-def _in_folder(folder: Path) -> list[Path]:
-    found: list[Path] = []
-    for place in _PLACES:
-        try:
-            entries = sorted((folder / place).iterdir())
-        except (FileNotFoundError, NotADirectoryError):
-            continue
-        except OSError as error:
-            raise InputError(
-                f"the folder cannot be read: {error.strerror or error}",
-                where=str(folder / place),
-                mend="Check the permissions",
-            ) from None
-        found += [
-            path
-            for path in entries
-            if path.suffix.lower() in _ENDINGS and not path.name.startswith(".") and path.is_file()
-        ]
-    return found

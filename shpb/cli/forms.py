@@ -39,8 +39,7 @@ def run(options: argparse.Namespace) -> int:
 
 
 def _print_json(files: Sequence[Path]) -> None:
-    from shpb.version import VERSION
-    from shpb.view.summary import SCHEMA_VERSION, json_text
+    from shpb.view.summary import head, json_text
 
-    said = {"schema": "shpb forms", "schema_version": SCHEMA_VERSION, "program_version": VERSION}
+    said = head("shpb forms")
     print(json_text(said | {"files_written": [str(path) for path in files]}))

@@ -87,14 +87,11 @@ def _show(text: str) -> None:
 
 
 def _print_json(topic: str | None, text: str) -> None:
-    from shpb.version import VERSION
     from shpb.view.help_text import TOPICS
-    from shpb.view.summary import SCHEMA_VERSION, json_text
+    from shpb.view.summary import head, json_text
 
     said = {
-        "schema": "shpb help",
-        "schema_version": SCHEMA_VERSION,
-        "program_version": VERSION,
+        **head("shpb help"),
         "topic": topic,
         "topics": dict(TOPICS),
         "text": text,

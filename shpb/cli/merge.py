@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from shpb.cli.usage import FIGURES, require_folder
 from shpb.errors import InputError, StoreError
 
 if TYPE_CHECKING:
@@ -34,8 +35,6 @@ examples:
 exit status: 0 done, 1 failed, 2 bad input or usage
 """
 
-_FIGURES = ("png", "pdf", "svg", "none")
-
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
     """Declare the arguments."""
@@ -45,7 +44,7 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
     verb.add_argument(
         "--results", type=Path, metavar="FOLDER", help="where results go (default: merged/ in the folder)"
     )
-    verb.add_argument("--figure", choices=_FIGURES, default="png", help="kind of figures (default png)")
+    verb.add_argument("--figure", choices=FIGURES, default="png", help="kind of figures (default png)")
     verb.add_argument("--csv", action="store_true", help="write merged table and flow curves as CSV too")
     verb.add_argument("--full", action="store_true", help="show every curve, strain and law")
     verb.add_argument("--json", action="store_true", help="print JSON for other programs")
@@ -83,8 +82,7 @@ def run(options: argparse.Namespace) -> int:
 
     root = _existing(options.sources)
     folder = options.results or root / "merged"
-    if folder.exists() and not folder.is_dir():
-        raise InputError("this is a file", where=str(folder), mend="Give a folder for --results")
+    require_folder(folder, "--results")
     settings = _settings(options)
     outputs = Outputs(folder, options.figure, csv=options.csv)
     outputs.require_free()

@@ -11,6 +11,7 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from shpb.cli.usage import entries_of
 from shpb.errors import FileMistakes, InputError, ShpbError
 
 if TYPE_CHECKING:
@@ -122,14 +123,7 @@ def _named(path: Path) -> Found:
 
 
 def _in_folder(folder: Path, skip: Path) -> Iterator[Path]:
-    try:
-        below = sorted(path for path in folder.iterdir() if path.is_dir() and not path.name.startswith("."))
-    except OSError as error:
-        raise InputError(
-            f"the folder cannot be read: {error.strerror or error}",
-            where=str(folder),
-            mend="Check the permissions",
-        ) from None
+    below = [path for path in entries_of(folder) if path.is_dir() and not path.name.startswith(".")]
     first = [folder / name for name in _FIRST if name == "" or (folder / name) in below]
     for place in dict.fromkeys([*first, *below]):
         if place.resolve() != skip.resolve() or place == folder:

@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from shpb.cli.say import say
+from shpb.cli.usage import FIGURES, require_folder, require_workers
 from shpb.errors import InputError, StoreError
 
 if TYPE_CHECKING:
@@ -30,8 +31,6 @@ examples:
 exit status: 0 done, 1 failed, 2 bad input or usage, 3 done, a shot is rejected
 """
 
-_FIGURES = ("png", "pdf", "svg", "none")
-
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
     """Declare the arguments."""
@@ -48,7 +47,7 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
         help="where the new results go (default: beside the folder of the earlier ones, under its name and that of "
         "the calibration)",
     )
-    verb.add_argument("--figure", choices=_FIGURES, default="png", help="kind of figure (default png)")
+    verb.add_argument("--figure", choices=FIGURES, default="png", help="kind of figure (default png)")
     verb.add_argument("--csv", action="store_true", help="write the curves as CSV too")
     verb.add_argument("--json", action="store_true", help="print JSON for other programs")
     verb.add_argument("--workers", type=int, metavar="N", help="processes (default: one a core)")
@@ -60,8 +59,7 @@ def run(options: argparse.Namespace) -> int:
     from shpb.cli.progress import progress
     from shpb.rig.calibration_file import read_calibration
 
-    if options.workers is not None and options.workers < 1:
-        raise InputError(f"found {options.workers}", where="--workers", mend="Give 1 or more")
+    require_workers(options.workers)
     calibration = read_calibration(options.calibration)
     tasks = find(options.results, options.into, calibration.name)
     work = _Work(calibration, options.figure, options.csv)
@@ -129,8 +127,8 @@ def find(sources: Sequence[Path], into: Path | None, calibration: str) -> list[T
     if not files:
         named = ", ".join(map(str, sources))
         raise InputError("there is no shot file", where=named, mend="Name a folder that shpb reduce wrote to")
-    if into is not None and into.exists() and not into.is_dir():
-        raise InputError("this is a file", where=str(into), mend="Give a folder for --into")
+    if into is not None:
+        require_folder(into, "--into")
     tasks: list[Task] = []
     taken: dict[Path, Path] = {}
     for whole, path in files.items():

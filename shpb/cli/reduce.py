@@ -10,6 +10,7 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from shpb.cli.usage import FIGURES, require_folder, require_workers
 from shpb.errors import InputError, StoreError
 
 if TYPE_CHECKING:
@@ -35,7 +36,6 @@ examples:
 exit status: 0 done, 1 failed, 2 bad input or usage, 3 done, a shot is rejected
 """
 
-_FIGURES = ("png", "pdf", "svg", "none")
 # Fewer say nothing about where a 95 % interval ends; more take an hour.
 _LEAST_DRAWS, _MOST_DRAWS = 200, 10_000_000
 
@@ -52,7 +52,7 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
         metavar="FOLDER",
         help="where results go (default: results/ beside the sheet or list)",
     )
-    verb.add_argument("--figure", choices=_FIGURES, default="png", help="kind of figure (default png)")
+    verb.add_argument("--figure", choices=FIGURES, default="png", help="kind of figure (default png)")
     verb.add_argument("--csv", action="store_true", help="write the curves as CSV too")
     verb.add_argument(
         "--full", action="store_true", help="show every check, not only those that say something"
@@ -98,12 +98,10 @@ def run(options: argparse.Namespace) -> int:
     from shpb.cli.batch import gather, usual_workers
     from shpb.cli.status import BAD_INPUT
 
-    if options.workers is not None and options.workers < 1:
-        raise InputError(f"found {options.workers}", where="--workers", mend="Give 1 or more")
+    require_workers(options.workers)
     tasks, errors = gather(options.shots, options.rig)
     folder = options.results or (_folder_of(options.shots[0]) / "results")
-    if folder.exists() and not folder.is_dir():
-        raise InputError("this is a file", where=str(folder), mend="Give a folder for --results")
+    require_folder(folder, "--results")
     drawing = _drawing(options)
     outputs = Outputs(
         folder=folder,
@@ -425,13 +423,12 @@ def _say(error: str) -> None:
 
 
 def _print_json(finished: Sequence[Done]) -> None:
-    from shpb.version import VERSION
     from shpb.view.repeats import repeats_json
-    from shpb.view.summary import SCHEMA_VERSION, json_text
+    from shpb.view.summary import head, json_text
 
     shots = [{**done.json, "files": list(done.files)} for done in finished]
     repeats = repeats_json(done.row.repeat for done in finished if done.row.repeat is not None)
-    said = {"schema": "shpb shots", "schema_version": SCHEMA_VERSION, "program_version": VERSION}
+    said = head("shpb shots")
     print(json_text(said | {"shots": shots, "repeats": repeats}))
 
 

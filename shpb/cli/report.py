@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from shpb.cli.say import say
+from shpb.cli.usage import LACKING, require_folder, require_workers
 from shpb.errors import InputError, StoreError
 
 if TYPE_CHECKING:
@@ -35,8 +36,6 @@ exit status: 0 done, 1 failed, 2 bad input or usage
 """
 
 _MOST_NAMED = 8
-# What a file that says it is a shot, but lacks something, runs into.
-_LACKING = (KeyError, IndexError, ValueError, TypeError, AttributeError, OverflowError)
 
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
@@ -58,10 +57,9 @@ def run(options: argparse.Namespace) -> int:
     from shpb.cli.report_files import plan
     from shpb.cli.status import BAD_INPUT, DONE, FAILED
 
-    if options.workers is not None and options.workers < 1:
-        raise InputError(f"found {options.workers}", where="--workers", mend="Give 1 or more")
-    if options.into is not None and options.into.exists() and not options.into.is_dir():
-        raise InputError("this is a file", where=str(options.into), mend="Give a folder for --into")
+    require_workers(options.workers)
+    if options.into is not None:
+        require_folder(options.into, "--into")
     found = plan(options.sources, options.into)
     for error in found.errors:
         say(str(error))
@@ -128,14 +126,14 @@ def report_shot(task: ShotTask) -> Reported:
         row, brief = campaign_row(shot), read_brief(task.file)
     except StoreError as error:
         return replace(failed, error=str(error), bad_input=True)
-    except (InputError, *_LACKING) as error:  # a record or a rig in it that cannot be
+    except (InputError, *LACKING) as error:  # a record or a rig in it that cannot be
         return replace(failed, error=_lacks(task.file, error), bad_input=True)
     known = replace(failed, shot_id=shot.shot_id, row=row, brief=brief)
     try:
         return replace(known, state=_write_shot(task, shot))
     except StoreError as error:
         return replace(known, error=str(error))
-    except (InputError, *_LACKING) as error:
+    except (InputError, *LACKING) as error:
         return replace(known, error=_lacks(task.file, error), bad_input=True)
 
 
@@ -203,7 +201,7 @@ def _report_campaign(campaign: Campaign, shots: Sequence[Reported]) -> Reported:
         return replace(failed, state=_write(campaign.page, page))
     except StoreError as error:
         return replace(failed, error=str(error))
-    except _LACKING as error:
+    except LACKING as error:
         return replace(failed, error=_lacks(campaign.merge or campaign.page, error), bad_input=True)
 
 
@@ -255,8 +253,7 @@ def _state(one: Reported) -> str:
 def _print_json(
     shots: Iterable[Reported], campaigns: Iterable[Reported], errors: Iterable[InputError]
 ) -> None:
-    from shpb.version import VERSION
-    from shpb.view.summary import SCHEMA_VERSION, error_json, json_text
+    from shpb.view.summary import error_json, head, json_text
 
     def said(one: Reported, more: Mapping[str, Any]) -> dict[str, Any]:
         report = None if one.state == "failed" else str(one.page)
@@ -269,9 +266,7 @@ def _print_json(
         }
 
     content = {
-        "schema": "shpb report",
-        "schema_version": SCHEMA_VERSION,
-        "program_version": VERSION,
+        **head("shpb report"),
         "shots": [
             said(one, {"shot_id": one.shot_id or None, "verdict": one.row.verdict if one.row else None})
             for one in shots

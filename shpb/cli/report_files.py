@@ -8,10 +8,10 @@ from dataclasses import dataclass
 from pathlib import Path
 from urllib.parse import quote
 
+from shpb.cli.usage import RESULTS, result_files
 from shpb.errors import InputError, StoreError
 
 CAMPAIGN_PAGE = "campaign.html"
-_ENDINGS = (".h5", ".hdf5")
 _HEAD_BYTES = 16_384
 
 
@@ -110,7 +110,7 @@ def _campaign_of_folder(folder: Path, into: Path | None) -> Campaign:
     shots: list[Path] = []
     merge: Path | None = None
     for place in (folder, folder / "results", folder / "merged"):
-        for path in _result_files(place):
+        for path in result_files(place):
             held = peek(path).holds
             if held is Holds.MERGE:
                 merge = merge or path
@@ -125,23 +125,6 @@ def _campaign_of_folder(folder: Path, into: Path | None) -> Campaign:
     return Campaign(folder.resolve().name, (into or folder) / CAMPAIGN_PAGE, tuple(shots), merge)
 
 
-def _result_files(folder: Path) -> list[Path]:
-    try:
-        return sorted(
-            path
-            for path in folder.iterdir()
-            if path.suffix.lower() in _ENDINGS and not path.name.startswith(".") and path.is_file()
-        )
-    except FileNotFoundError:
-        return []
-    except OSError as error:
-        raise InputError(
-            f"the folder cannot be read: {error.strerror or error}",
-            where=str(folder),
-            mend="Check the permissions",
-        ) from None
-
-
 def _campaign_of_merge(source: Path, into: Path | None) -> Campaign:
     """A merge, with those of its shot files that are still where they lay."""
     from shpb.store.merge_read import load_merge
@@ -151,7 +134,7 @@ def _campaign_of_merge(source: Path, into: Path | None) -> Campaign:
     except StoreError as error:
         raise InputError(error.what, where=error.where, mend=error.mend) from None
     root = merged_root(source, [one.place for one in merge.used])
-    places = [one.place for one in merge.used if Path(one.place).suffix.lower() in _ENDINGS]
+    places = [one.place for one in merge.used if Path(one.place).suffix.lower() in RESULTS]
     shots = [] if root is None else [root / place for place in places if (root / place).is_file()]
     name = (source.resolve().parent if root is None else root.resolve()).name
     return Campaign(name, (into or source.parent) / CAMPAIGN_PAGE, tuple(shots), source)

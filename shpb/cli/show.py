@@ -9,6 +9,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from shpb.cli.usage import LACKING
 from shpb.errors import InputError, StoreError
 
 if TYPE_CHECKING:
@@ -34,8 +35,6 @@ examples:
 exit status: 0 done, 1 failed, 2 bad input or usage
 """
 
-# What a file that says it is a shot, but lacks something, runs into.
-_LACKING = (KeyError, IndexError, ValueError, TypeError, AttributeError, OverflowError)
 _FIGURES = (".png", ".pdf", ".svg")
 
 
@@ -180,7 +179,7 @@ def _show_shots(paths: Sequence[Path], options: argparse.Namespace, shown: _Show
             except StoreError as error:
                 shown.errors.append(error)
                 rows.append(list_row_of_error(path.stem, error))
-            except _LACKING as error:
+            except LACKING as error:
                 problem = StoreError(
                     f"something in it is missing or wrong ({type(error).__name__}: {error})",
                     where=str(path),
@@ -210,7 +209,7 @@ def _show_merge(path: Path, options: argparse.Namespace, shown: _Shown) -> None:
         shown.json.setdefault("merges", []).append(stored_merge_json(merge, str(path)))
     except StoreError as error:
         shown.errors.append(error)
-    except _LACKING as error:
+    except LACKING as error:
         shown.errors.append(
             StoreError(
                 f"something in it is missing or wrong ({type(error).__name__}: {error})",
@@ -224,15 +223,13 @@ def _finish(shown: _Shown, *, as_json: bool) -> int:
     from shpb.cli.status import BAD_INPUT, DONE
 
     if as_json:
-        from shpb.version import VERSION
-        from shpb.view.summary import SCHEMA_VERSION, error_json, json_text
+        from shpb.view.summary import error_json, head, json_text
 
-        head = {"schema": "shpb show", "schema_version": SCHEMA_VERSION, "program_version": VERSION}
         tail = {
             "not_shown": [error_json(error) for error in shown.errors],
             "files_written": [str(path) for path in shown.files],
         }
-        print(json_text(head | shown.json | tail))
+        print(json_text(head("shpb show") | shown.json | tail))
     else:
         print("\n\n".join(text for text in shown.texts if text))
         _print_written(shown.files)

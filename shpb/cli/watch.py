@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, TextIO
 
 from shpb.cli.reduce import add_choices, choices_in
 from shpb.cli.status import BAD_INPUT, DONE, FAILED, REJECTED
+from shpb.cli.usage import FIGURES, require_folder
 from shpb.errors import InputError
 
 if TYPE_CHECKING:
@@ -44,8 +45,6 @@ exit status: 0 done, 1 failed, 2 bad input or usage, 3 with --once: done, a
 shot is rejected
 """
 
-_FIGURES = ("png", "pdf", "svg", "none")
-
 
 def add_arguments(verb: argparse.ArgumentParser) -> None:
     """Declare the arguments."""
@@ -58,7 +57,7 @@ def add_arguments(verb: argparse.ArgumentParser) -> None:
     verb.add_argument(
         "--results", type=Path, metavar="FOLDER", help="where results go (default: results/ in the folder)"
     )
-    verb.add_argument("--figure", choices=_FIGURES, default="png", help="kind of figure (default png)")
+    verb.add_argument("--figure", choices=FIGURES, default="png", help="kind of figure (default png)")
     verb.add_argument("--csv", action="store_true", help="write the curves as CSV too")
     verb.add_argument(
         "--rate", type=float, metavar="PER_S", help="strain rate wanted: a striker speed is proposed for it"
@@ -139,8 +138,7 @@ def _checked(options: argparse.Namespace) -> Path:
         what = "this is a file" if folder.exists() else "there is no such folder"
         raise InputError(what, where=str(folder), mend="Name the folder that the scope writes into")
     results: Path = options.results or folder / "results"
-    if results.exists() and not results.is_dir():
-        raise InputError("this is a file", where=str(results), mend="Give a folder for --results")
+    require_folder(results, "--results")
     if results.resolve() == folder.resolve():
         raise InputError(
             "results in the watched folder itself would be taken for records",

@@ -155,7 +155,7 @@ class Cutter:
         begin = values[: max(int(_START_RADII * trace.bar.radius_time_s / interval), 4)]
         peak = max(float(np.abs(values).max()), 1e-12)
         level, u_level = float(begin.mean()) / peak, trace.noise / float(np.sqrt(begin.size)) / peak
-        values *= _taper(values.size, int(TAPER_RADII * trace.bar.radius_time_s / interval))
+        values *= soft_ends(values.size, int(TAPER_RADII * trace.bar.radius_time_s / interval))
         return Pulse(
             name=name,
             strain=frozen(values),
@@ -171,7 +171,7 @@ class Cutter:
         )
 
 
-def _taper(samples: int, length: int) -> FloatArray:
+def soft_ends(samples: int, length: int) -> FloatArray:
     """One, with raised-cosine ends of ``length`` samples, so that a cut makes no step."""
     length = max(min(length, samples // 4), 1)
     taper = np.ones(samples)

@@ -11,6 +11,8 @@ from shpb.rig.calibration import Calibration, Departure, calibrated_bar, calibra
 from shpb.rig.correlations import Correlation, correlations_after
 from shpb.rig.gauge import Gauge
 
+SIDES = ("incident", "transmitted")
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class RecordHints:
@@ -88,7 +90,7 @@ class Rig:
     def gauges(self) -> dict[str, Gauge]:
         """Every station by the name of its table in the rig file: ``incident_gauge``, ``incident_gauge_2``."""
         named: dict[str, Gauge] = {}
-        for side in ("incident", "transmitted"):
+        for side in SIDES:
             stations = (getattr(self, f"{side}_gauge"), *getattr(self, f"more_{side}_gauges"))
             named |= {station_name(side, n): gauge for n, gauge in enumerate(stations, 1)}
         return named

@@ -16,7 +16,7 @@ from shpb.errors import StoreError
 from shpb.merge.from_shot import LeftOut
 from shpb.merge.settings import MergeSettings
 from shpb.store import merge_layout as layout
-from shpb.store.gate import require_format
+from shpb.store.gate import opened
 from shpb.store.plain import from_plain
 
 if TYPE_CHECKING:
@@ -90,19 +90,17 @@ def load_merge(path: Path | str) -> StoredMerge:
     StoreError
         If it is no merge, is damaged, or was written by a later version of the format.
     """
-    import h5py
-
     source = Path(path)
-    try:
-        with h5py.File(source, "r", locking="best-effort") as file:
-            _require_readable(file, source)
-            return _read(file, source)
-    except FileNotFoundError:
-        raise StoreError("there is no such file", where=str(source), mend="Check the name") from None
-    except (OSError, KeyError, ValueError, TypeError, RuntimeError) as error:
-        raise StoreError(
-            f"cannot be read as a merge ({error})", where=str(source), mend="It may be damaged: merge again"
-        ) from error
+    with opened(
+        source,
+        name=layout.FORMAT,
+        version=layout.FORMAT_VERSION,
+        what="a merge",
+        read_as="a merge",
+        verb="merge",
+        again="merge again",
+    ) as file:
+        return _read(file, source)
 
 
 def changed_since(path: Path | str, folder: Path | str) -> list[ChangedFile]:
@@ -133,12 +131,6 @@ def changed_since(path: Path | str, folder: Path | str) -> list[ChangedFile]:
         if sha256 != used.sha256:
             found.append(ChangedFile(place=used.place, gone=False))
     return found
-
-
-def _require_readable(file: h5py.File, path: Path) -> None:
-    require_format(
-        file, path, name=layout.FORMAT, version=layout.FORMAT_VERSION, what="a merge", verb="merge"
-    )
 
 
 def _read(file: h5py.File, path: Path) -> StoredMerge:

@@ -9,14 +9,12 @@ from typing import TYPE_CHECKING, Any, NamedTuple, cast
 
 import numpy as np
 
-from shpb.errors import StoreError
 from shpb.response.flow import FlowStress
 from shpb.rig.rig import Rig
 from shpb.rig.sheet import ShotSheet
 from shpb.settings import Settings
-from shpb.store import layout
-from shpb.store.gate import require_format
 from shpb.store.plain import from_plain
+from shpb.store.shot_file import open_shot
 from shpb.trust.budget import ALL_OUTPUTS
 from shpb.trust.finding import Verdict
 from shpb.trust.repeats import Reduced, RepeatShot, repeat_shot
@@ -51,21 +49,8 @@ def read_brief(path: Path | str) -> ShotBrief:
     StoreError
         If it is no shot file, is damaged, or was written by a later version of the format.
     """
-    import h5py
-
-    source = Path(path)
-    try:
-        with h5py.File(source, "r", locking="best-effort") as file:
-            require_format(
-                file, source, name=layout.FORMAT, version=layout.FORMAT_VERSION, what="a shot", verb="reduce"
-            )
-            return _brief(file)
-    except (OSError, KeyError, ValueError, TypeError, RuntimeError) as error:
-        raise StoreError(
-            f"cannot be read as a shot file ({error})",
-            where=str(source),
-            mend="It may be damaged: reduce the raw record again",
-        ) from error
+    with open_shot(Path(path)) as file:
+        return _brief(file)
 
 
 def _brief(file: h5py.File) -> ShotBrief:

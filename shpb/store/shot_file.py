@@ -10,6 +10,7 @@ import datetime
 import io
 import json
 from collections.abc import Iterable, Mapping
+from contextlib import AbstractContextManager
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -26,7 +27,7 @@ from shpb.rig.sheet import ShotSheet
 from shpb.settings import Settings
 from shpb.store import layout
 from shpb.store.forward_run import write_closure, write_corrections
-from shpb.store.gate import require_format
+from shpb.store.gate import opened
 from shpb.store.plain import from_plain, to_plain
 from shpb.trust.finding import Finding
 from shpb.version import VERSION
@@ -309,26 +310,21 @@ def load(path: Path | str) -> StoredShot:
     'Pa'
     >>> again = stored.reduce_again()  # the same arrays, bit for bit
     """
-    import h5py
-
     source = Path(path)
-    try:
-        with h5py.File(source, "r", locking="best-effort") as file:
-            _require_readable(file, source)
-            return _read(file, source)
-    except FileNotFoundError:
-        raise StoreError("there is no such file", where=str(source), mend="Check the name") from None
-    except (OSError, KeyError, ValueError, TypeError, RuntimeError) as error:
-        raise StoreError(
-            f"cannot be read as a shot file ({error})",
-            where=str(source),
-            mend="It may be damaged: reduce the raw record again",
-        ) from error
+    with open_shot(source) as file:
+        return _read(file, source)
 
 
-def _require_readable(file: h5py.File, path: Path) -> None:
-    require_format(
-        file, path, name=layout.FORMAT, version=layout.FORMAT_VERSION, what="a shot", verb="reduce"
+def open_shot(path: Path) -> AbstractContextManager[h5py.File]:
+    """Open a stored shot to read from it; errors as :func:`load` has them."""
+    return opened(
+        path,
+        name=layout.FORMAT,
+        version=layout.FORMAT_VERSION,
+        what="a shot",
+        read_as="a shot file",
+        verb="reduce",
+        again="reduce the raw record again",
     )
 
 

@@ -138,10 +138,15 @@ def laid_on_feet(evidence: Evidence) -> tuple[bool, bool]:
 # --- the rig ---------------------------------------------------------------------------------------
 
 
+def relative_u(value: float, name: str, shares: Mapping[str, float] = ASSUMED) -> float:
+    """Relative standard uncertainty of a quantity, assumed by its name where nobody has stated it."""
+    u = getattr(value, "u", None)
+    return shares[name] if u is None else float(u / abs(value)) if value else 0.0
+
+
 def _relative(value: float, name: str) -> tuple[float, bool]:
     """Relative standard uncertainty of a quantity, and whether it had to be assumed."""
-    u = getattr(value, "u", None)
-    return (ASSUMED[name], True) if u is None else (u / abs(value) if value else 0.0, False)
+    return relative_u(value, name), getattr(value, "u", None) is None
 
 
 def _rig_sources(evidence: Evidence) -> Iterator[Source]:

@@ -8,12 +8,11 @@ from dataclasses import dataclass
 
 from shpb.calibrate.calibration import Calibrated
 from shpb.calibrate.sensitivity.reconcile import SourceLine
-from shpb.quantity import Quantity
+from shpb.quantity import Quantity, as_quantity
 from shpb.rig.rig import Rig
-from shpb.version import VERSION
 from shpb.view.calibrated_pulses import pulses_json, pulses_text
 from shpb.view.digits import to_uncertainty, uncertainty
-from shpb.view.summary import SCHEMA_VERSION, Json, calibration_json
+from shpb.view.summary import Json, calibration_json, head
 from shpb.view.text import padded, printable, wrapped
 
 _NAME = 21
@@ -56,7 +55,7 @@ def value_lines(done: Calibrated) -> tuple[ValueLine, ...]:
         ):
             measured = getattr(bar, name)
             if measured is not None:
-                found.append(ValueLine(table, what, unit, 1.0, _quantity(getattr(stated, name)), measured))
+                found.append(ValueLine(table, what, unit, 1.0, as_quantity(getattr(stated, name)), measured))
         if bar.wave_speed_m_s is not None:
             before, after = _modulus(done.rig, table), _modulus(done.measured, table)
             found.append(ValueLine(table, "modulus", "GPa", 1e-9, before, after))
@@ -66,13 +65,11 @@ def value_lines(done: Calibrated) -> tuple[ValueLine, ...]:
             found.append(ValueLine(table, "factor", "", 1.0, _chain(done.rig, table), gauge.gauge_factor))
         if gauge.to_specimen_m is not None:
             found.append(
-                ValueLine(table, "distance", "mm", 1e3, _quantity(station.to_specimen_m), gauge.to_specimen_m)
+                ValueLine(
+                    table, "distance", "mm", 1e3, as_quantity(station.to_specimen_m), gauge.to_specimen_m
+                )
             )
     return tuple(found)
-
-
-def _quantity(value: float) -> Quantity:
-    return value if isinstance(value, Quantity) else Quantity(float(value))
 
 
 def _chain(rig: Rig, station: str) -> Quantity:
@@ -258,9 +255,7 @@ def calibrated_json(done: Calibrated, file: str, figure: str) -> Json:
     sensitivities = done.sensitivities
     q_by_station = sensitivities.q if sensitivities is not None else {}
     return {
-        "schema": "shpb calibration",
-        "schema_version": SCHEMA_VERSION,
-        "program_version": VERSION,
+        **head("shpb calibration"),
         "calibration": calibration_json(done.calibration),
         "file": file,
         "figure": figure or None,

@@ -50,7 +50,7 @@ def line_panel(page: Page, line: StrikerLine, place: Place) -> None:
     if line.momentum is not None:
         said += f"; by momentum {line.momentum.value:.4f}, u {100 * line.u_momentum:.2f} %"
     if tests.intercept is not None and tests.u_intercept is not None:
-        said += f"; intercept {1e6 * tests.intercept:+.1f} ue, u {1e6 * tests.u_intercept:.1f}"
+        said += f"; intercept {1e6 * tests.intercept:+.1f} microstrain, u {1e6 * tests.u_intercept:.1f}"
     x, y, width, height = _titled(page, place, f"Striker line, {name}", said)
     low = 0.36 * height
     above = page.axes(x, y + low + 0.12, width, height - low - 0.12)
@@ -58,14 +58,20 @@ def line_panel(page: Page, line: StrikerLine, place: Place) -> None:
     expected = np.array([point.expected for point in line.points]) * 1e6
     stated = np.array([point.stated for point in line.points]) * 1e6
     across = scale(0.0, float(expected.max()) * 1.08, 6)
-    frame(above, across, scale(0.0, float(stated.max()) * 1.1, 5), "", "by the gauge as stated, ue")
+    frame(above, across, scale(0.0, float(stated.max()) * 1.1, 5), "", "by gauge, microstrain")
     above.plot(across.low + (across.high - across.low) * np.array([0, 1]), np.array([across.low, across.high]) / line.q,
                color=DARK, linewidth=1.0)  # fmt: skip
     above.plot(expected, stated, linestyle="none", marker="o", markersize=4, color=DARK)
     left = 100 * np.asarray(tests.residuals)
     u = 100 * _K * np.array([point.u_stated / point.expected for point in line.points])
     reach = 1.2 * float((np.abs(left) + u).max())
-    frame(below, across, scale(-reach, reach, 4), "expected from the striker's speed, ue", "off the line, %")
+    frame(
+        below,
+        across,
+        scale(-reach, reach, 4),
+        "expected from the striker's speed, microstrain",
+        "off the line, %",
+    )
     below.axhline(0.0, color=FAINT, linewidth=0.6)
     below.errorbar(expected, left, yerr=u, fmt="o", color=DARK, markersize=3.5, elinewidth=0.9, capsize=2.5)
 
@@ -144,7 +150,7 @@ def speed_panel(page: Page, one: BarFit, place: Place) -> None:
         f"nu {to_uncertainty(nu, nu.u)}, u {uncertainty(nu.u)}; " if nu is not None else "nu not determined; "
     )
     said += f"{one.passages} passages, {one.band_hz[0] / 1e3:.3g} to {one.band_hz[1] / 1e3:.3g} kHz; "
-    said += "dots: each frequency, u by noise; line: first mode (Pochhammer, Chree); dashed: c0"
+    said += "dots: by frequency; line: first mode; dashed: c0"
     x, y, width, height = _titled(page, place, f"Phase speed, {one.bar} bar", said)
     axes = page.axes(x, y, width, height)
     f, speed = np.asarray(one.frequency_hz) / 1e3, np.asarray(one.phase_speed_m_s)

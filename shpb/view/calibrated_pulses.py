@@ -38,7 +38,7 @@ def _of_lines(done: Calibrated) -> Iterator[str]:
 def _straight(tests: LineTests) -> str:
     said = ""
     if tests.intercept is not None and tests.u_intercept is not None:
-        said += f"; intercept {1e6 * tests.intercept:+.1f} um/m, u {1e6 * tests.u_intercept:.1f}"
+        said += f"; intercept {1e6 * tests.intercept:+.1f} microstrain, u {1e6 * tests.u_intercept:.1f}"
     if tests.curvature is not None and tests.u_curvature is not None:
         said += f"; curvature {100 * tests.curvature:+.2f} %, u {100 * tests.u_curvature:.2f}"
     return said

@@ -8,9 +8,8 @@ from typing import Any
 from shpb.calibrate.history import Drift, Trend
 from shpb.quantity import Quantity
 from shpb.rig.calibration import Calibration
-from shpb.version import VERSION
 from shpb.view.digits import to_uncertainty, uncertainty
-from shpb.view.summary import SCHEMA_VERSION
+from shpb.view.summary import head
 from shpb.view.text import printable, wrapped
 
 DRIFTED = 2.5  # a step beyond so many joint standard uncertainties is worth a line of its own
@@ -73,9 +72,7 @@ def _closing(trends: Sequence[Trend]) -> str:
 def trend_json(rig: str, calibrations: Sequence[Calibration], trends: Sequence[Trend]) -> dict[str, Any]:
     """The same for other programs, in SI."""
     return {
-        "schema": "shpb calibration history",
-        "schema_version": SCHEMA_VERSION,
-        "program_version": VERSION,
+        **head("shpb calibration history"),
         "rig": rig,
         "calibrations": [{"name": one.name, "date": one.date, "sha256": one.sha256} for one in calibrations],
         "values": [

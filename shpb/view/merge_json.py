@@ -14,9 +14,8 @@ from shpb.merge.peak_shift import PeakShift
 from shpb.merge.repeats import Repeats
 from shpb.merge.sensitivity import RateSensitivity
 from shpb.merge.temperature import Extreme
-from shpb.version import VERSION
 from shpb.view.merge_words import why_not_fitted
-from shpb.view.summary import SCHEMA_VERSION
+from shpb.view.summary import head
 
 Json = dict[str, Any]
 
@@ -25,9 +24,7 @@ def merge_json(merged: Merged) -> Json:
     """Return a merge, fit for :func:`shpb.view.summary.json_text`."""
     settings = merged.settings
     return {
-        "schema": "shpb merge",
-        "schema_version": SCHEMA_VERSION,
-        "program_version": VERSION,
+        **head("shpb merge"),
         "settings": {
             "plastic_strains": list(settings.strains),
             "indentation_out": settings.indentation_out,

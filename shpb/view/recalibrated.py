@@ -7,8 +7,7 @@ from dataclasses import asdict
 
 from shpb.rig.calibration import Calibration
 from shpb.trust.compared import Compared, Numbers
-from shpb.version import VERSION
-from shpb.view.summary import SCHEMA_VERSION, Json, calibration_json
+from shpb.view.summary import Json, calibration_json, head
 from shpb.view.text import padded, printable, wrapped
 
 _WIDEST_NAME, _LEAST_WIDTH = 16, 76
@@ -133,9 +132,7 @@ def _numbers_json(numbers: Numbers) -> Json:
 def recalibrated_json(shots: Sequence[Json], calibration: Calibration) -> Json:
     """All shots for other programs, with the calibration that was used."""
     return {
-        "schema": "shpb recalibrated",
-        "schema_version": SCHEMA_VERSION,
-        "program_version": VERSION,
+        **head("shpb recalibrated"),
         "calibration": calibration_json(calibration),
         "shots": list(shots),
     }

@@ -29,6 +29,12 @@ if TYPE_CHECKING:
 
 SCHEMA_VERSION = 1
 
+
+def head(schema: str) -> Json:
+    """What every JSON of the program begins with."""
+    return {"schema": schema, "schema_version": SCHEMA_VERSION, "program_version": VERSION}
+
+
 Json = dict[str, Any]
 
 
@@ -38,9 +44,7 @@ def shot_json(result: ShotResult) -> Json:
     specimen = sheet.specimen
     counted = slice(*(response.span or response.loading))
     summary = {
-        "schema": "shpb shot",
-        "schema_version": SCHEMA_VERSION,
-        "program_version": VERSION,
+        **head("shpb shot"),
         "shot_id": sheet.shot_id,
         "verdict": result.verdict.value,
         "verdict_in_words": verdict_sentence(result),
@@ -131,9 +135,7 @@ def record_json(record: Record) -> Json:
     """Return what a record holds: files, clock, channels and their extremes, remarks."""
     return _plain(  # type: ignore[no-any-return]
         {
-            "schema": "shpb record",
-            "schema_version": SCHEMA_VERSION,
-            "program_version": VERSION,
+            **head("shpb record"),
             "records": [_source(source) for source in record.sources],
             "samples": record.samples,
             "sample_interval_s": record.sample_interval_s,
@@ -161,7 +163,7 @@ def error_json(error: BaseException) -> Json:
             for m in error.mistakes
         ]
     return _plain(  # type: ignore[no-any-return]
-        {"schema": "shpb error", "schema_version": SCHEMA_VERSION, "program_version": VERSION, "error": said}
+        {**head("shpb error"), "error": said}
     )
 
 

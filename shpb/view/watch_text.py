@@ -8,7 +8,7 @@ from typing import Any, NamedTuple
 
 from shpb.trust.finding import Finding, Weight
 from shpb.view.repeats import agreement_words
-from shpb.view.summary import SCHEMA_VERSION, json_text
+from shpb.view.summary import head, json_text
 from shpb.view.text import fitted, padded, printable, rounded, wrapped
 from shpb.view.wording import short_limit, strain_text, telling
 from shpb.watch.compare import Compared, Comparison, SpeedStep
@@ -246,8 +246,7 @@ def _comparison_record(comparison: Comparison) -> dict[str, Any]:
 def refused_record(event: ShotRefused) -> dict[str, Any]:
     """A shot that could not be reduced, as an error object."""
     said = event.json or {
-        "schema": "shpb error",
-        "schema_version": SCHEMA_VERSION,
+        **head("shpb error"),
         "error": {"kind": "WorkerError", "message": event.text},
     }
     verdict = "reject" if event.unusable else "failed"

@@ -104,10 +104,6 @@ class Journal:
         self.entries[entry.names] = entry
         self.changed = True
 
-    def of_file(self, name: str) -> Entry | None:
-        """The entry that a file belongs to."""
-        return next((entry for entry in self.entries.values() if name in entry.names), None)
-
     def of_content(self, content: tuple[str, ...]) -> Entry | None:
         """The entry of the shot that has this content; copies do not count."""
         return next(

@@ -217,11 +217,35 @@ def test_cut_short_a_single_pass_is_not_called_done(lab: Lab) -> None:
     assert "stopped; 0 shots stored" in " ".join(err.split())
 
 
+def kill_once(command: list[str], after_s: float) -> None:
+    """Start a command, kill it and the processes it started with SIGKILL after a while."""
+    process = subprocess.Popen(
+        command, stdin=subprocess.DEVNULL, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL,
+        start_new_session=True,
+    )  # fmt: skip
+    time.sleep(after_s)
+    with contextlib.suppress(ProcessLookupError):
+        os.killpg(process.pid, signal.SIGKILL)  # the group that was started here, and nothing else
+    process.wait()
+
+
+def require_whole(results: Path) -> list[str]:
+    """Load every shot of a folder and its journal; return the names of the shots."""
+    names = []
+    for path in sorted(results.glob("*.h5")):
+        shot = shpb.load(path)
+        assert shot.sheet.shot_id == path.stem, path
+        assert all(array.size for array in shot.arrays.values()), path
+        names.append(path.name)
+    journal = results / "watch_journal.json"
+    if journal.exists():
+        assert json.loads(journal.read_bytes())["format"] == "shpb-watch-journal"
+    return names
+
+
 @POSIX
 @pytest.mark.slow
 def test_killed_at_any_moment_every_shot_is_whole_and_none_is_missed(lab: Lab) -> None:
-    from tests.cli.kill_watch import kill_once, require_whole
-
     moments = random.Random(11)
     lab.shot("W-02", "W-04")
     for _ in range(2):

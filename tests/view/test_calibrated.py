@@ -159,7 +159,7 @@ def test_the_page_shows_bars_lines_and_sources(steel: Calibrated) -> None:
     figure = calibrated_figure(steel)
     labels = [axes.get_ylabel() for axes in figure.axes]
     assert labels.count("phase speed, m/s") == 2
-    assert labels.count("by the gauge as stated, ue") == 2
+    assert labels.count("by gauge, microstrain") == 2
     assert labels.count("off the line, %") == 2
     points = next(line for line in figure.axes[2].lines if line.get_marker() == "o")
     assert steel.lines is not None

@@ -33,12 +33,12 @@ from shpb.calibrate.bars.constants_words import (
 )
 from shpb.calibrate.bars.phase_fit import Fitted
 from shpb.calibrate.bars.phase_speeds import PhaseSpeeds, phase_speeds
-from shpb.calibrate.bars.ways import SIDES, bar_of
+from shpb.calibrate.bars.ways import bar_of
 from shpb.calibrate.determination import CalibrationFinding, Determination
 from shpb.calibrate.session import FiredShot
 from shpb.calibrate.struck import require_own_records
 from shpb.quantity import Quantity
-from shpb.rig.rig import Rig, budget_name
+from shpb.rig.rig import SIDES, Rig, budget_name
 from shpb.trust.sources import ASSUMED
 
 TIME_BASE = 2e-5  # relative, of a scope (common practice)

@@ -15,8 +15,8 @@ import numpy as np
 from shpb.arrays import ComplexArray, FloatArray
 from shpb.calibrate.bars.mode_table import mode_at
 from shpb.calibrate.bars.passages import MARGIN_RADII, ShotPassages
-from shpb.calibrate.bars.ways import SIDES, bar_of, lengths_of
-from shpb.rig.rig import Rig
+from shpb.calibrate.bars.ways import bar_of, lengths_of
+from shpb.rig.rig import SIDES, Rig
 from shpb.wave.propagation import fast_length
 from shpb.wave.recording_chain import chain_delay_s
 

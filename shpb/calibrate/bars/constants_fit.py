@@ -12,13 +12,13 @@ from shpb.calibrate.bars.carried import Problem, Shot
 from shpb.calibrate.bars.constants_words import position_finding, stock_finding
 from shpb.calibrate.bars.passages import ShotPassages, passages_of
 from shpb.calibrate.bars.phase_fit import Fitted, fit
-from shpb.calibrate.bars.ways import SIDES, bar_of
+from shpb.calibrate.bars.ways import bar_of
 from shpb.calibrate.determination import CalibrationFinding
 from shpb.calibrate.session import FiredShot, ShotKind, of_kind
 from shpb.errors import InputError
 from shpb.quantity import Quantity
 from shpb.rig.bar import one_stock
-from shpb.rig.rig import Rig
+from shpb.rig.rig import SIDES, Rig
 
 APART = 2.5  # joint standard uncertainties: beyond that two values are two values
 ASSUMED_LENGTH = (

@@ -7,11 +7,11 @@ from collections.abc import Iterable
 import numpy as np
 
 from shpb.calibrate.bars.passages import ShotPassages
-from shpb.calibrate.bars.ways import SIDES, bar_of
+from shpb.calibrate.bars.ways import bar_of
 from shpb.calibrate.determination import CalibrationFinding
 from shpb.quantity import Quantity
 from shpb.rig.bar import Bar
-from shpb.rig.rig import Rig
+from shpb.rig.rig import SIDES, Rig
 
 FAR_OFF = (
     0.03  # relative: a handbook's modulus is uncertain by 1 to 3 %, c0 by half of that (common practice)

@@ -13,14 +13,14 @@ from dataclasses import dataclass
 import numpy as np
 
 from shpb.arrays import FloatArray, frozen
-from shpb.calibrate.bars.ways import SIDES, Passage, Way, bar_of, lengths_of, ways_of
+from shpb.calibrate.bars.ways import Passage, Way, bar_of, lengths_of, ways_of
 from shpb.calibrate.session import FiredShot, ShotKind
 from shpb.calibrate.struck import refuse, strain_of, struck_station
 from shpb.errors import InputError
 from shpb.pulse.front import Front, first_front, moving_mean
 from shpb.pulse.zero_line import quiet_before_front
 from shpb.rig.bar import Bar
-from shpb.rig.rig import Rig
+from shpb.rig.rig import SIDES, Rig
 
 MARGIN_RADII = 10.0  # soft ends of a window, and what stays flat before and behind the pulse, in a/c0
 _SMOOTHING_RADII = 1.0

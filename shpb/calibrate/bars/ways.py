@@ -16,7 +16,6 @@ from shpb.calibrate.session import BarEnd, CalibrationShot, ShotKind
 from shpb.rig.bar import Bar
 from shpb.rig.rig import Rig
 
-SIDES = ("incident", "transmitted")
 MOST_PASSAGES = 12  # of one station: further ones have lost more than they tell
 
 

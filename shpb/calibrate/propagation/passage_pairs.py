@@ -20,7 +20,7 @@ from shpb.pulse.front import first_front, moving_mean
 from shpb.pulse.zero_line import QuietWindow, quiet_before_front, quiet_gap, zero_line
 from shpb.rig.bar import Bar
 from shpb.rig.rig import Rig
-from shpb.trust.sources import ASSUMED
+from shpb.trust.sources import relative_u
 
 _LEAD_RADII = 12.0  # a window begins so long before the tenth of the peak, in a/c0: precursor and foot
 _LEAST_QUIET = 16  # samples before that, for the zero line
@@ -190,7 +190,7 @@ def _from_one_to_other(
     interval = fired.record.sample_interval_s
     gauges = rig.gauges[near.name], rig.gauges[far.name]
     u_path = float(np.hypot(_u_m(gauges[0].to_specimen_m), _u_m(gauges[1].to_specimen_m)))
-    u_gain = float(np.sqrt(sum(_relative(gauge.gauge_factor) ** 2 for gauge in gauges)))
+    u_gain = float(np.sqrt(sum(relative_u(gauge.gauge_factor, "gauge factor") ** 2 for gauge in gauges)))
     path = far.from_struck_m - near.from_struck_m
     passages = Passages((near.name, far.name), fired.shot.struck_end, path, u_path, False, u_gain, interval)
     lag = _lag(near, far.trace, near.front, path, 1.0, bar, interval)
@@ -289,8 +289,3 @@ def _left_at_end(passage: FloatArray, width: int) -> float:
 def _u_m(value: float) -> float:
     u = getattr(value, "u", None)
     return ASSUMED_U_M if u is None else float(u)
-
-
-def _relative(value: float) -> float:
-    u = getattr(value, "u", None)
-    return ASSUMED["gauge factor"] if u is None else float(u) / abs(float(value))

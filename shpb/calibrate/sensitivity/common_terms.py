@@ -15,7 +15,7 @@ import numpy as np
 from shpb.fitting.weighted_line import fitted
 from shpb.rig.bar import one_stock
 from shpb.rig.rig import Rig
-from shpb.trust.sources import ASSUMED
+from shpb.trust.sources import relative_u
 
 Terms = dict[str, float]
 
@@ -26,12 +26,6 @@ REPEATABILITY = 0.001
 # Common practice: what bars of metal may lose in their supports and their own damping, of the amplitude [1/m].
 LOSS_PER_M = 0.0002
 _DENSITY, _DIAMETER, _SPEED = "density", "diameter", "wave speed"
-
-
-def relative_u(value: float, name: str, shares: Mapping[str, float] = ASSUMED) -> float:
-    """Relative standard uncertainty of a quantity, assumed where nobody has stated it."""
-    u = getattr(value, "u", None)
-    return shares[name] if u is None else float(u / abs(value))
 
 
 def bar_term(rig: Rig, side: str, what: str) -> str:

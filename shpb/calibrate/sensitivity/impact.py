@@ -4,12 +4,13 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from shpb.calibrate.sensitivity.common_terms import Terms, added, bar_term, bar_terms, relative_u
+from shpb.calibrate.sensitivity.common_terms import Terms, added, bar_term, bar_terms
 from shpb.calibrate.session import FiredShot
 from shpb.calibrate.struck import refuse
 from shpb.quantity import Quantity
 from shpb.rig.bar import Bar, Striker
 from shpb.rig.rig import Rig
+from shpb.trust.sources import relative_u
 
 _ASSUMED_LENGTH = {"length": 0.0005}  # of a striker; common practice
 

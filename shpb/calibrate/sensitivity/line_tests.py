@@ -140,8 +140,8 @@ def findings_of_line(station: str, tests: LineTests, mean: Mean) -> list[Calibra
         found.append(
             CalibrationFinding(
                 check="intercept of the calibration line",
-                measured=f"the line of the {words} misses the origin by {intercept * 1e6:.1f} um/m, "
-                f"u = {tests.u_intercept * 1e6:.1f} um/m",
+                measured=f"the line of the {words} misses the origin by {intercept * 1e6:.1f} microstrain, "
+                f"u = {tests.u_intercept * 1e6:.1f}",
                 limit=f"{_DOUBT:g} u",
                 action="Look for a speed reading with a constant error, or a zero that moves with the shot.",
             )

@@ -12,6 +12,7 @@ from shpb.calibrate.sensitivity.pulse_order import first_front_s, require_order,
 from shpb.calibrate.session import FiredShot
 from shpb.calibrate.struck import early_s, passages_s, refuse, strain_of, struck_station
 from shpb.pulse.incident_front import LEAD_RADII
+from shpb.pulse.pulses import TAPER_RADII, soft_ends
 from shpb.pulse.zero_line import QuietWindow, ZeroLine, quiet_before_front, quiet_gap, zero_line
 from shpb.rig.bar import Bar
 from shpb.rig.rig import Rig
@@ -20,7 +21,7 @@ from shpb.wave.propagation import CarriedPulse, Grid, LowPass, carry_pulse
 
 # A pulse that still stands at this share of its peak where the next one comes has not passed.
 _NOT_PASSED = 0.25
-_TAPER_RADII = 4.0  # soft end of a window, in a/c0
+
 _LEAST_SAMPLES = 32
 
 
@@ -167,7 +168,7 @@ class _Cutter:
         end = values[-max(int(lead / interval), 4) :]
         tail = abs(float(end.mean())) / max(peak, 1e-12)
         self._require_passed(tail, front, following, peak, noise)
-        values *= _taper(values.size, int(_TAPER_RADII * bar.radius_time_s / interval))
+        values *= soft_ends(values.size, int(TAPER_RADII * bar.radius_time_s / interval))
         return CutPulse(
             station=self.station,
             passage=number,
@@ -228,13 +229,3 @@ class _Cutter:
             f"{(following - arrival) * 1e6:.0f} us later: it still stands at {100 * tail:.0f} % of its peak",
             "Take a shorter striker, or a station farther from that end of the bar; is the bar shorter than stated?",
         )
-
-
-def _taper(samples: int, length: int) -> FloatArray:
-    """One, with raised-cosine ends of ``length`` samples, so that a cut makes no step."""
-    length = max(min(length, samples // 4), 1)
-    taper = np.ones(samples)
-    ramp = 0.5 * (1 - np.cos(np.pi * (np.arange(length) + 0.5) / length))
-    taper[:length] = ramp
-    taper[samples - length :] = ramp[::-1]
-    return taper

@@ -12,12 +12,13 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from shpb.calibrate.sensitivity.common_terms import Terms, relative_u, size_of
+from shpb.calibrate.sensitivity.common_terms import Terms, size_of
 from shpb.calibrate.sensitivity.sensitivity_ratio import SensitivityRatio
 from shpb.calibrate.sensitivity.shunt import ShuntCheck, ShuntPoint
 from shpb.calibrate.sensitivity.striker_line import StrikerLine
 from shpb.rig.gauge import Gauge
 from shpb.rig.rig import Rig
+from shpb.trust.sources import relative_u
 
 Unknown = tuple[str, str]  # station, "factor" or "electrical"
 

@@ -19,7 +19,7 @@ import numpy as np
 
 from shpb.arrays import FloatArray, frozen, require_finite
 from shpb.calibrate.determination import CalibrationFinding
-from shpb.calibrate.sensitivity.common_terms import Mean, Terms, mean_of, relative_u
+from shpb.calibrate.sensitivity.common_terms import Mean, Terms, mean_of
 from shpb.calibrate.sensitivity.line_tests import LineTests, line_tests
 from shpb.calibrate.sensitivity.step import Step, step_in
 from shpb.calibrate.session import FiredShot, ShotKind, of_kind
@@ -28,6 +28,7 @@ from shpb.errors import InputError
 from shpb.pulse.bridge import shunt_strain
 from shpb.rig.gauge import Gauge
 from shpb.rig.rig import Rig
+from shpb.trust.sources import relative_u
 
 # Common practice, relative, where nobody has stated them: a foil gauge as packed, a resistor of the shop.
 _ASSUMED = {"resistance": 0.002, "shunt": 0.001, "leads": 0.1}

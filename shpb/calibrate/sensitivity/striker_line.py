@@ -43,7 +43,6 @@ from shpb.calibrate.sensitivity.common_terms import (
     Terms,
     added,
     mean_of,
-    relative_u,
     size_of,
 )
 from shpb.calibrate.sensitivity.impact import Impact, impact_of
@@ -55,6 +54,7 @@ from shpb.calibrate.struck import from_struck_end_m
 from shpb.errors import InputError
 from shpb.rig.rig import Rig
 from shpb.settings import DEFAULT, Settings
+from shpb.trust.sources import relative_u
 from shpb.wave.faces import low_pass_of
 
 MOMENTUM_MODEL = 0.005  # what a real striker keeps of its momentum: 0.5 % on the simulation

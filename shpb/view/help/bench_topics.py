@@ -14,10 +14,9 @@ def files(fields: Sequence[Field]) -> str:
     """The files that are written, the HDF5 layout among them."""
     page = HelpPage("files", "The files that are written: HDF5, CSV, figures, reports.")
     page.paragraph(
-        "Every file is written beside its place, synced and then renamed: it is whole or not there. "
-        "The results of "
-        "another shot and files that this program did not write are never written over; raw records "
-        "are never touched."
+        "Every file is written beside its place, synced and then renamed: it is whole or not there. The "
+        "results of another shot and files that this program did not write are never written over; raw "
+        "records are never touched."
     )
     page.heading("WHERE THEY GO")
     for name, words in (
@@ -67,36 +66,31 @@ def watch() -> str:
     """Watching a folder."""
     page = HelpPage("watch", "Watching: each record that lands in a folder is reduced and shown.")
     page.paragraph(
-        "`shpb watch FOLDER --rig FILE` looks at the folder the scope writes into, a local disk or "
-        "a share. A record is "
-        "taken up when its size has stood still and its reader says that it is whole; temporary, "
-        "hidden and empty files are "
-        "left alone, and files of one shot, one for each channel, are taken together."
+        "`shpb watch FOLDER --rig FILE` looks at the folder the scope writes into, a local disk or a "
+        "share. A record is taken up when its size has stood still and its reader says that it is whole; "
+        "temporary, hidden and empty files are left alone, and files of one shot, one for each channel, "
+        "are taken together."
     )
     page.heading("WHICH SHOT IT IS")
     page.paragraph(
-        "A record belongs to the shot sheet or the row of a shot list that names it; sheets are "
-        "looked for in the watched "
-        "folder, and where --sheets says. A record that nobody names is asked about at the "
-        "terminal: the few numbers that "
-        "are missing. The answers become a shot sheet, and are never asked for again."
+        "A record belongs to the shot sheet or the row of a shot list that names it; sheets are looked for "
+        "in the watched folder, and where --sheets says. A record that nobody names is asked about at the "
+        "terminal: the few numbers that are missing. The answers become a shot sheet, and are never asked "
+        "for again."
     )
     page.heading("WHAT IS SHOWN")
     page.paragraph(
-        "Verdict, what to look at, how the shot compares with earlier ones at this condition, and "
-        "what to change for the "
-        "next. A striker speed that is proposed is arithmetic, no leave to fire: what bars, gun and "
-        "catcher stand, and the "
-        "rules of the laboratory, come first. A verdict is about data: do not go near the rig "
-        "because it has appeared."
+        "Verdict, what to look at, how the shot compares with earlier ones at this condition, and what to "
+        "change for the next. A striker speed that is proposed is arithmetic, no leave to fire: what bars, "
+        "gun and catcher stand, and the rules of the laboratory, come first. A verdict is about data: do "
+        "not go near the rig because it has appeared."
     )
     page.heading("WHEN SOMETHING GOES WRONG")
     page.paragraph(
         "Bad files, damaged HDF5, a full disk or a share that is gone are said and tried again; the "
-        "watching goes on. Each "
-        "shot is reduced in a child process with a time limit. Ctrl-C ends, and everything stored "
-        "is whole; what "
-        "lands meanwhile is found at the next start. A sheet that is corrected has its shot reduced again."
+        "watching goes on. Each shot is reduced in a child process with a time limit. Ctrl-C ends, and "
+        "everything stored is whole; what lands meanwhile is found at the next start. A sheet that is "
+        "corrected has its shot reduced again."
     )
     see_also(page, ("shot-sheet", "checks", "exit-status"))
     return page.text
@@ -117,11 +111,10 @@ def exit_status() -> str:
     )  # fmt: skip
     page.heading("STREAMS")
     page.paragraph(
-        "Results go to standard output, messages and progress to standard error. On a terminal "
-        "messages are wrapped at 80 "
-        "columns and progress is a bar; through a pipe each message stays on its line and progress "
-        "is a line now and then. "
-        "Words carry the meaning: with NO_COLOR set, or through a pipe, nothing is lost."
+        "Results go to standard output, messages and progress to standard error. On a terminal messages "
+        "are wrapped at 80 columns and progress is a bar; through a pipe each message stays on its line "
+        "and progress is a line now and then. Words carry the meaning: with NO_COLOR set, or through a "
+        "pipe, nothing is lost."
     )
     see_also(page, ("json",))
     return page.text

@@ -15,16 +15,14 @@ def checks() -> str:
     """All checks."""
     page = HelpPage("checks", "The checks: what is looked at on every shot, and what its verdict comes from.")
     page.paragraph(
-        "Each check says fine, NOTE, RESTRICT or REJECT, what it measured, its limit, where the "
-        "limit comes from, and what to "
-        "do at the bench. A shot is rejected if any check rejects it, and restricted to a range of "
-        "strain if any restricts "
-        "it. `shpb reduce --full` prints every check. A verdict is about data, never about safety."
+        "Each check says fine, NOTE, RESTRICT or REJECT, what it measured, its limit, where the limit "
+        "comes from, and what to do at the bench. A shot is rejected if any check rejects it, and "
+        "restricted to a range of strain if any restricts it. `shpb reduce --full` prints every check. A "
+        "verdict is about data, never about safety."
     )
     page.paragraph(
-        "A lab sets a limit by its key in [limits] of the rig file, or of a shot sheet for that "
-        "shot alone; every report then "
-        "says so."
+        "A lab sets a limit by its key in [limits] of the rig file, or of a shot sheet for that shot "
+        "alone; every report then says so."
     )
     page.heading("CHECKS, CAUSES BEFORE WHAT FOLLOWS FROM THEM")
     for check in all_checks():
@@ -43,10 +41,9 @@ def corrections() -> str:
         "corrections", "The corrections: worked out for every shot, applied where the settings say so."
     )
     page.paragraph(
-        "Each is shown with its size, whether it was applied, and why it does not hold where it "
-        "does not. Which are applied "
-        "stands in `corrections` of [settings], in the rig file or a shot sheet. They stand in the "
-        "order in which they act."
+        "Each is shown with its size, whether it was applied, and why it does not hold where it does not. "
+        "Which are applied stands in `corrections` of [settings], in the rig file or a shot sheet. They "
+        "stand in the order in which they act."
     )
     page.heading("CORRECTIONS")
     for which, fact in FACTS.items():
@@ -92,10 +89,9 @@ def methods() -> str:
         "methods", "The methods: from voltages to true stress and strain, step by step, with their sources."
     )
     page.paragraph(
-        "SI inside. Loading is positive in compression and in tension. Time zero is when the "
-        "loading front reaches the "
-        "incident face. Stress before equilibrium is drawn grey and enters no number; the first "
-        "slope is no modulus."
+        "SI inside. Loading is positive in compression and in tension. Time zero is when the loading front "
+        "reaches the incident face. Stress before equilibrium is drawn grey and enters no number; the "
+        "first slope is no modulus."
     )
     page.heading("STEPS")
     for name, words, source in _STEPS:
@@ -110,19 +106,16 @@ def merge() -> str:
         "merge", "Merging: shots and quasi-static tests to curves over strain rate and temperature."
     )
     page.paragraph(
-        "`shpb merge FOLDER` takes the shots that count from FOLDER and FOLDER/results and "
-        "quasi-static tables from "
-        "FOLDER/quasistatic. Rejected shots stay out, restricted ones enter inside their span; "
-        "every file that stays out is "
-        "named with the reason. Repeats of one condition are averaged; one that stands out is "
-        "named, not dropped."
+        "`shpb merge FOLDER` takes the shots that count from FOLDER and FOLDER/results and quasi-static "
+        "tables from FOLDER/quasistatic. Rejected shots stay out, restricted ones enter inside their span; "
+        "every file that stays out is named with the reason. Repeats of one condition are averaged; one "
+        "that stands out is named, not dropped."
     )
     page.paragraph(
-        "For each material: conditions, flow stress at chosen plastic strains, rate sensitivity "
-        "with intervals, a test for an "
-        "upturn at high rates, stress over temperature, and laws. The result is merged.h5 with "
-        "figures; --csv writes "
-        "tables, `shpb export` flow-curve tables for a solver. Constants from a merge are no design allowables."
+        "For each material: conditions, flow stress at chosen plastic strains, rate sensitivity with "
+        "intervals, a test for an upturn at high rates, stress over temperature, and laws. The result is "
+        "merged.h5 with figures; --csv writes tables, `shpb export` flow-curve tables for a solver. "
+        "Constants from a merge are no design allowables."
     )
     page.heading("LAWS, BY THE NAME FOR --laws AND --law")
     for model in all_models():

@@ -35,15 +35,13 @@ def rig_file() -> str:
             _table(page, table)
     page.heading("[incident_gauge_2] to [incident_gauge_4], [transmitted_gauge_2] to [.._4]")
     page.paragraph(
-        "Further stations on either bar, with the keys of [incident_gauge]: for calibration, and "
-        "for pulses that overlap "
-        "at every station."
+        "Further stations on either bar, with the keys of [incident_gauge]: for calibration, and for "
+        "pulses that overlap at every station."
     )
     page.heading("[correlations] (may be left out)")
     page.paragraph(
-        "Correlation coefficients between lines of the uncertainty budget, whose names `--full` "
-        "prints, with | between "
-        "two of them:"
+        "Correlation coefficients between lines of the uncertainty budget, whose names `--full` prints, "
+        "with | between two of them:"
     )
     page.lines('"incident gauge factor | transmitted gauge factor" = 0.8')
     _see(page, "calibration", "shot-sheet", "checks")
@@ -71,13 +69,10 @@ def shot_list() -> str:
     """The shot list."""
     page = HelpPage("shot-list", "The shot list says what was tested in one table: a row for each shot.")
     page.paragraph(
-        "A CSV file with a line of column names; separated by commas, semicolons or tabs, with "
-        "decimal points, or decimal "
-        "commas between semicolons. The columns are the keys of the shot sheet; empty cells are not "
-        "stated. A column "
-        "whose name begins with note_ is the lab's own and is kept with the shot. u_ before a "
-        "column is its standard "
-        "uncertainty, origin_ where it comes from."
+        "A CSV file with a line of column names; separated by commas, semicolons or tabs, with decimal "
+        "points, or decimal commas between semicolons. The columns are the keys of the shot sheet; empty "
+        "cells are not stated. A column whose name begins with note_ is the lab's own and is kept with the "
+        "shot. u_ before a column is its standard uncertainty, origin_ where it comes from."
     )
     page.heading("COLUMNS")
     for column in COLUMNS.values():
@@ -96,24 +91,20 @@ def calibration() -> str:
     """Calibration sessions and files."""
     page = HelpPage("calibration", "Calibration: from the shots of one day to dated values of the rig.")
     page.paragraph(
-        "Fire one bar alone and free at its other end (bars-apart), both bars together without "
-        "specimen (bars-together), "
-        "with the striker's speed measured, and put shunt resistors on the bridges (shunt). List "
-        "them in a session file "
-        "and run `shpb calibrate SESSION`. The result is a new dated file beside the rig file, with "
-        "uncertainties, "
-        "correlations and the hashes of the records; nothing is written over."
+        "Fire one bar alone and free at its other end (bars-apart), both bars together without specimen "
+        "(bars-together), with the striker's speed measured, and put shunt resistors on the bridges "
+        "(shunt). List them in a session file and run `shpb calibrate SESSION`. The result is a new dated "
+        "file beside the rig file, with uncertainties, correlations and the hashes of the records; nothing "
+        "is written over."
     )
     page.paragraph("The rig file puts it in force:")
     page.lines('[rig]\ncalibration = "small-bench_2031-02-03.toml"')
     page.paragraph(
-        "Measured values then stand in place of those in the rig file. Every shot names the "
-        "calibration; a shot outside its "
-        "dates gets a note, and one with a gauge or bar that is no longer the same is rejected "
-        "until the rig is calibrated "
-        "anew. `shpb calibrate --trend FOLDER` shows every value over time; `shpb recalibrate "
-        "RESULTS --calibration FILE` "
-        "reduces stored shots again, beside the earlier results."
+        "Measured values then stand in place of those in the rig file. Every shot names the calibration; a "
+        "shot outside its dates gets a note, and one with a gauge or bar that is no longer the same is "
+        "rejected until the rig is calibrated anew. `shpb calibrate --trend FOLDER` shows every value over "
+        "time; `shpb recalibrate RESULTS --calibration FILE` reduces stored shots again, beside the "
+        "earlier results."
     )
     page.heading("THE SESSION FILE")
     page.paragraph("A text file in TOML; `shpb forms FOLDER` writes one to fill in.")
@@ -125,11 +116,10 @@ def calibration() -> str:
             _table(page, table)
     page.heading("WHAT NO CALIBRATION CAN SEE")
     page.paragraph(
-        "The spacing of the light gates and the length of the bars are in every result of the day "
-        "alike. Density and "
-        "diameter turn strain into force, and no strain gauge sees them: weigh and measure. A "
-        "resistor that is not what it "
-        "states, bending on a station of one channel, and bars at another temperature remain too."
+        "The spacing of the light gates and the length of the bars are in every result of the day alike. "
+        "Density and diameter turn strain into force, and no strain gauge sees them: weigh and measure. A "
+        "resistor that is not what it states, bending on a station of one channel, and bars at another "
+        "temperature remain too."
     )
     _see(page, "rig-file", "methods")
     return page.text

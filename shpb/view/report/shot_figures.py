@@ -30,6 +30,7 @@ from shpb.view.report.html import Markup
 from shpb.view.report.stored import ReportedShot
 from shpb.view.report.svg import LETTERS, POINTS, Sketch, figure
 from shpb.view.text import rounded
+from shpb.view.time_panels import FORCE_LINES, PULSE_LINES
 from shpb.view.wording import strain_text
 
 if TYPE_CHECKING:
@@ -37,12 +38,6 @@ if TYPE_CHECKING:
 
 _US = 1e6
 _TIME = "time since the front reached the specimen (µs)"
-_FORCES = (Line("F_in", DARK), Line("F_out", MIDDLE, DASHES))
-_PULSES = (
-    Line("incident", DARK),
-    Line("reflected", MIDDLE, DASHES),
-    Line("transmitted", LIGHT, DASH_DOT, 1.3),
-)
 _FORWARD = Line("forward run", INK, DOTS, 1.0)
 _SIDES = (Line("", DARK, (), 0.8), Line("", MIDDLE, DASHES, 0.8))
 
@@ -233,10 +228,10 @@ def _forces(shot: ReportedShot) -> Markup:
     forces = [1e-3 * shot[f"response/force_{end}"] for end in ("in", "out")]
 
     def draw() -> Sketch:
-        sketch = Sketch(2.2, _FORCES)
+        sketch = Sketch(2.2, FORCE_LINES)
         axes = sketch.panel()
         _shade(axes, shot)
-        for look, force in zip(_FORCES, forces, strict=True):
+        for look, force in zip(FORCE_LINES, forces, strict=True):
             _plot(axes, time, force[part], look)
         low, high = (float(end(end(f[part]) for f in forces)) for end in (min, max))
         room = max(high - low, 1e-9)
@@ -256,10 +251,10 @@ def _pulses(shot: ReportedShot) -> Markup:
     closed = shot.has("trust/closure/time")
 
     def draw() -> Sketch:
-        sketch = Sketch(2.6, (*_PULSES, _FORWARD) if closed else _PULSES)
+        sketch = Sketch(2.6, (*PULSE_LINES, _FORWARD) if closed else PULSE_LINES)
         axes = sketch.panel()
         _shade(axes, shot)
-        for look, strain in zip(_PULSES, micro, strict=True):
+        for look, strain in zip(PULSE_LINES, micro, strict=True):
             _plot(axes, time, strain[part], look)
         if closed:
             for name in names[1:]:
